@@ -1,0 +1,1 @@
+//! Settings, read from flags and environment in one place and passed down.

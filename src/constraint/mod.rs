@@ -1,0 +1,1 @@
+//! The accounting identity of the balance of payments, its published forms, and intervals for them.

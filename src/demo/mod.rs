@@ -1,0 +1,1 @@
+//! The demonstration: invented areas whose raw files travel through the HTTP API.

@@ -1,0 +1,1 @@
+//! Probability distributions: p-values and quantiles. Hides the library behind it.

@@ -1,0 +1,1 @@
+//! Estimators: plain vectors and matrices in, structs out.

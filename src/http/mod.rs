@@ -1,0 +1,1 @@
+//! Routes by resource, extractors, problem details, authorisation, the OpenAPI document.

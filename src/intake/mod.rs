@@ -1,0 +1,1 @@
+//! Intake: bytes of a raw file to typed fragments and findings.

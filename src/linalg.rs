@@ -1,0 +1,1 @@
+//! Linear algebra for estimation: least squares and decompositions. Hides the library behind it.

@@ -1,0 +1,3 @@
+//! The `realterms` program.
+
+fn main() {}

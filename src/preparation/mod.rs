@@ -1,0 +1,1 @@
+//! Preparations: a document of steps, checked and evaluated on series.

@@ -1,0 +1,1 @@
+//! Everything that touches Postgres; the only user of sqlx.

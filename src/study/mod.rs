@@ -1,0 +1,1 @@
+//! Studies: a document and prepared series in, estimates and constrained growth out.
