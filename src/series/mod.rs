@@ -7,8 +7,11 @@
 mod currency;
 mod fragment;
 mod key;
+pub mod provenance;
+pub mod screening;
 mod status;
 mod unit;
+pub mod vintage;
 
 pub use currency::{CurrencyCode, CurrencyError, is_iso_4217};
 pub use fragment::{Duplicate, Fragment, Piece, same};
