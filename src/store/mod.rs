@@ -1,1 +1,33 @@
 //! Everything that touches Postgres; the only user of sqlx.
+//!
+//! Functions take a connection; `service` owns the transactions. One file an aggregate. Static SQL is
+//! checked at compile time against the migrations.
+
+pub mod change;
+mod copy;
+pub mod currency;
+pub mod document;
+mod error;
+pub mod series;
+pub mod token;
+pub mod upload;
+pub mod vintage;
+
+pub use error::Error;
+use chrono::{Datelike, NaiveDate};
+use sqlx::AssertSqlSafe;
+
+use crate::time::Date;
+
+/// The database's form of a date.
+fn day(date: Date) -> NaiveDate {
+    NaiveDate::from_num_days_from_ce_opt(date.days()).unwrap_or(NaiveDate::MIN)
+}
+
+/// Our form of the database's date.
+///
+/// # Errors
+/// [`Error::Corrupt`] outside the years 1 to 9999.
+pub fn date(day: NaiveDate) -> Result<Date, Error> {
+    Date::from_days(day.num_days_from_ce()).ok_or_else(|| Error::corrupt("date", day))
+}
