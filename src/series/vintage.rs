@@ -136,6 +136,36 @@ pub fn merge(base: Option<&State>, statement: &Statement) -> (State, Changes) {
     (state, changes)
 }
 
+/// How a state differs from the one that it replaces.
+#[must_use]
+pub fn difference(old: &State, new: &State) -> Changes {
+    let at = |state: &State, ordinal: i32| {
+        usize::try_from(ordinal - state.start.ordinal())
+            .ok()
+            .filter(|i| *i < state.values.len())
+            .map_or((f64::NAN, Status::Absent), |i| (state.values[i], state.status[i]))
+    };
+    let end = |state: &State| state.start.ordinal() + i32::try_from(state.values.len()).unwrap_or(0);
+    let low = old.start.ordinal().min(new.start.ordinal());
+    let high = end(old).max(end(new));
+    let mut changes = Changes::default();
+    for ordinal in low..high {
+        let ((before, old_status), (after, new_status)) = (at(old, ordinal), at(new, ordinal));
+        if old_status == Status::Absent && new_status == Status::Absent {
+            continue;
+        } else if old_status == Status::Absent {
+            changes.new += 1;
+        } else if same(before, after) && old_status == new_status {
+            changes.unchanged += 1;
+        } else if after.is_nan() && !before.is_nan() {
+            changes.emptied += 1;
+        } else {
+            changes.revised += 1;
+        }
+    }
+    changes
+}
+
 /// Merges statements in their order, from nothing.
 #[must_use]
 pub fn replay<'a>(statements: impl IntoIterator<Item = &'a Statement>) -> Option<State> {
@@ -145,6 +175,17 @@ pub fn replay<'a>(statements: impl IntoIterator<Item = &'a Statement>) -> Option
 }
 
 impl State {
+    /// No observations.
+    #[must_use]
+    pub fn empty(start: Period) -> Self {
+        Self {
+            start,
+            values: Vec::new(),
+            status: Vec::new(),
+            origins: Vec::new(),
+        }
+    }
+
     /// Whether values, status and origins are the same (NaN equals NaN).
     #[must_use]
     pub fn agrees_with(&self, other: &Self) -> bool {

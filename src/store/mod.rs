@@ -9,6 +9,7 @@ pub mod currency;
 pub mod document;
 mod error;
 pub mod series;
+pub mod staging;
 pub mod token;
 pub mod upload;
 pub mod vintage;

@@ -1,5 +1,7 @@
 //! Series and segments.
 
+use std::collections::HashSet;
+
 use sqlx::PgConnection;
 use sqlx::types::Json;
 
@@ -123,11 +125,47 @@ pub async fn lock_segments(connection: &mut PgConnection, segments: &[i64]) -> R
     Ok(())
 }
 
+/// Segments that have observations, among all segments of the series that these belong to.
+#[derive(Debug, Default)]
+pub struct Populated {
+    /// Segments with observations.
+    pub segments: HashSet<i64>,
+    /// Series with observations in any segment.
+    pub series: HashSet<i64>,
+}
+
+/// Which segments of the series of these segments have observations in their newest vintage.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn populated_segments(
+    connection: &mut PgConnection,
+    segments: &[i64],
+) -> Result<Populated, Error> {
+    let rows = sqlx::query!(
+        r#"SELECT g.id, g.series_id FROM segment g
+           JOIN LATERAL (
+               SELECT w.observation_count FROM vintage w WHERE w.segment_id = g.id
+               ORDER BY w.released DESC, w.revision DESC LIMIT 1
+           ) v ON v.observation_count > 0
+           WHERE g.series_id IN (SELECT series_id FROM segment WHERE id = ANY($1))"#,
+        segments
+    )
+    .fetch_all(connection)
+    .await?;
+    Ok(Populated {
+        segments: rows.iter().map(|r| r.id).collect(),
+        series: rows.iter().map(|r| r.series_id).collect(),
+    })
+}
+
 /// A stored segment with what it belongs to.
 #[derive(Clone, Debug)]
 pub struct StoredSegment {
     /// Its number in the store.
     pub id: i64,
+    /// The series' number in the store.
+    pub series_id: i64,
     /// Its number within the series.
     pub number: i32,
     /// The series.
@@ -145,7 +183,7 @@ pub async fn segments_by_id(
     ids: &[i64],
 ) -> Result<Vec<StoredSegment>, Error> {
     let rows = sqlx::query!(
-        r#"SELECT g.id, g.number, g.unit AS "unit: Json<Unit>", s.frequency, s.area, s.measure,
+        r#"SELECT g.id, g.series_id, g.number, g.unit AS "unit: Json<Unit>", s.frequency, s.area, s.measure,
              s.partner, s.product, s.currency, s.source, s.adjustment
            FROM segment g JOIN series s ON s.id = g.series_id
            WHERE g.id = ANY($1) ORDER BY g.id"#,
@@ -166,6 +204,7 @@ pub async fn segments_by_id(
             ];
             Ok(StoredSegment {
                 id: r.id,
+                series_id: r.series_id,
                 number: r.number,
                 key: key_of(&r.frequency, places.map(String::as_str))?,
                 unit: r.unit.0,

@@ -136,7 +136,8 @@ pub async fn landed_statements(
     segments: &[i64],
     date: Date,
 ) -> Result<Vec<StatementRow>, Error> {
-    let rows = sqlx::query!(
+    let rows = sqlx::query_as!(
+        FragmentRow,
         r#"SELECT f.segment_id, f.upload_id, f.start_period, f."values", f.status, f.lines, u.released,
              s.frequency, u.parameters->>'scope' AS scope
            FROM fragment f JOIN upload u ON u.id = f.upload_id
@@ -148,92 +149,89 @@ pub async fn landed_statements(
     )
     .fetch_all(connection)
     .await?;
-    rows.into_iter()
-        .map(|r| {
-            let what = format!("fragment of upload {}", r.upload_id);
-            Ok(StatementRow {
-                segment_id: r.segment_id,
-                upload_id: r.upload_id,
-                released: super::date(r.released)?,
-                statement: statement(
-                    &what,
-                    &r.frequency,
-                    r.start_period,
-                    r.values,
-                    &r.status,
-                    &r.lines,
-                    r.scope.as_deref(),
-                )?,
-            })
-        })
-        .collect()
+    rows.into_iter().map(StatementRow::try_from).collect()
 }
 
-/// All statements of one upload, by segment.
+/// Segments that an upload speaks of, in ascending order.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn segments_of_upload(
+    connection: &mut PgConnection,
+    upload: i64,
+) -> Result<Vec<i64>, Error> {
+    let rows = sqlx::query_scalar!(
+        "SELECT segment_id FROM fragment WHERE upload_id = $1 ORDER BY segment_id",
+        upload
+    )
+    .fetch_all(connection)
+    .await?;
+    Ok(rows)
+}
+
+/// What one upload says about these segments, by segment.
 ///
 /// # Errors
 /// [`Error`].
 pub async fn statements_of_upload(
     connection: &mut PgConnection,
     upload: i64,
+    segments: &[i64],
 ) -> Result<Vec<StatementRow>, Error> {
-    let rows = sqlx::query!(
-        r#"SELECT f.segment_id, f.start_period, f."values", f.status, f.lines, u.released, s.frequency,
-             u.parameters->>'scope' AS scope
+    let rows = sqlx::query_as!(
+        FragmentRow,
+        r#"SELECT f.segment_id, f.upload_id, f.start_period, f."values", f.status, f.lines, u.released,
+             s.frequency, u.parameters->>'scope' AS scope
            FROM fragment f JOIN upload u ON u.id = f.upload_id
            JOIN segment g ON g.id = f.segment_id JOIN series s ON s.id = g.series_id
-           WHERE f.upload_id = $1 ORDER BY f.segment_id"#,
-        upload
+           WHERE f.upload_id = $1 AND f.segment_id = ANY($2) ORDER BY f.segment_id"#,
+        upload,
+        segments
     )
     .fetch_all(connection)
     .await?;
-    rows.into_iter()
-        .map(|r| {
-            let what = format!("fragment of upload {upload}");
-            Ok(StatementRow {
-                segment_id: r.segment_id,
-                upload_id: upload,
-                released: super::date(r.released)?,
-                statement: statement(
-                    &what,
-                    &r.frequency,
-                    r.start_period,
-                    r.values,
-                    &r.status,
-                    &r.lines,
-                    r.scope.as_deref(),
-                )?,
-            })
-        })
-        .collect()
+    rows.into_iter().map(StatementRow::try_from).collect()
 }
 
-fn statement(
-    what: &str,
-    frequency: &str,
-    start: i32,
+struct FragmentRow {
+    segment_id: i64,
+    upload_id: i64,
+    start_period: i32,
     values: Vec<f64>,
-    status: &[u8],
-    lines: &[u8],
-    scope: Option<&str>,
-) -> Result<Statement, Error> {
-    let frequency =
-        Frequency::from_code(frequency).ok_or_else(|| Error::corrupt(what, "frequency"))?;
-    let origins = provenance::decode(lines)
-        .map(|runs| provenance::expand(&runs))
-        .filter(|origins| origins.len() == values.len())
-        .ok_or_else(|| Error::corrupt(what, "lines"))?;
-    Ok(Statement {
-        start: first_period(what, frequency, start)?,
-        values,
-        status: statuses(what, status)?,
-        origins,
-        scope: if scope == Some("replace") {
-            Scope::Replace
-        } else {
-            Scope::Merge
-        },
-    })
+    status: Vec<u8>,
+    lines: Vec<u8>,
+    released: NaiveDate,
+    frequency: String,
+    scope: Option<String>,
+}
+
+impl TryFrom<FragmentRow> for StatementRow {
+    type Error = Error;
+
+    fn try_from(r: FragmentRow) -> Result<Self, Error> {
+        let what = format!("fragment of upload {}", r.upload_id);
+        let frequency = Frequency::from_code(&r.frequency)
+            .ok_or_else(|| Error::corrupt(&what, "frequency"))?;
+        let origins = provenance::decode(&r.lines)
+            .map(|runs| provenance::expand(&runs))
+            .filter(|origins| origins.len() == r.values.len())
+            .ok_or_else(|| Error::corrupt(&what, "lines"))?;
+        Ok(Self {
+            segment_id: r.segment_id,
+            upload_id: r.upload_id,
+            released: super::date(r.released)?,
+            statement: Statement {
+                start: first_period(&what, frequency, r.start_period)?,
+                values: r.values,
+                status: statuses(&what, &r.status)?,
+                origins,
+                scope: match r.scope.as_deref() {
+                    Some("replace") => Scope::Replace,
+                    _ => Scope::Merge,
+                },
+            },
+        })
+    }
 }
 
 fn status_bytes(status: &[Status]) -> Vec<u8> {
@@ -395,7 +393,7 @@ pub async fn read(
         source,
         adjustment,
         as_of.segment,
-        as_of.released.map_or(NaiveDate::MAX.min(FAR), day),
+        as_of.released.map_or(FAR, day),
         as_of.revision.unwrap_or(i64::MAX)
     )
     .fetch_optional(connection)

@@ -1,0 +1,93 @@
+//! What can go wrong in a use case, without any notion of HTTP.
+
+use super::views::UploadView;
+use crate::finding::Finding;
+use crate::store;
+
+/// A use case that did not succeed. Unless it says otherwise, nothing was changed.
+#[derive(Debug)]
+pub enum Fault {
+    /// The request cannot be understood.
+    BadRequest {
+        /// What is wrong, in a sentence.
+        detail: String,
+        /// Where, and what was expected.
+        errors: Vec<Finding>,
+    },
+    /// The request is understood and its content is wrong.
+    Invalid {
+        /// Stable code.
+        code: &'static str,
+        /// What is wrong, in a sentence.
+        detail: String,
+        /// Where, and what was expected.
+        errors: Vec<Finding>,
+    },
+    /// An upload was refused for its rejects; it is kept with its report, and no series changed.
+    Refused {
+        /// What is wrong, in a sentence.
+        detail: String,
+        /// The first rejects.
+        errors: Vec<Finding>,
+        /// The upload, as stored.
+        upload: Box<UploadView>,
+    },
+    /// What the request names does not exist.
+    NotFound {
+        /// Kind and name of the thing.
+        what: String,
+    },
+    /// The request contradicts the present state.
+    Conflict {
+        /// Stable code.
+        code: &'static str,
+        /// What stands against it, and what to do.
+        detail: String,
+    },
+    /// The condition that the client set does not hold.
+    PreconditionFailed {
+        /// Which, and what holds instead.
+        detail: String,
+    },
+    /// The body is larger than a limit.
+    TooLarge {
+        /// Which limit.
+        detail: String,
+    },
+    /// The body came too slowly.
+    TooSlow {
+        /// Which rate was expected.
+        detail: String,
+    },
+    /// The database failed.
+    Store(store::Error),
+    /// A fault of the program.
+    Internal(String),
+}
+
+impl From<store::Error> for Fault {
+    fn from(error: store::Error) -> Self {
+        Self::Store(error)
+    }
+}
+
+impl Fault {
+    /// Something that does not exist.
+    pub(super) fn not_found(what: impl Into<String>) -> Self {
+        Self::NotFound { what: what.into() }
+    }
+
+    /// Findings in a document or a file that make it unusable.
+    pub(super) fn invalid(code: &'static str, errors: Vec<Finding>) -> Self {
+        let detail = match errors.as_slice() {
+            [] => "the content is wrong".to_owned(),
+            [only] => only.message.clone(),
+            [first, rest @ ..] => format!("{} (and {} more)", first.message, rest.len()),
+        };
+        Self::Invalid {
+            code,
+            detail,
+            errors,
+        }
+    }
+}
