@@ -1,5 +1,7 @@
 //! Real exchange rates, bilateral and effective, and weighted foreign income.
 
+use serde::Deserialize;
+
 use super::index::rebase;
 use super::{AlgebraError, Span, all_positive, map_together, overlap, same_frequency};
 use crate::series::{
@@ -16,14 +18,31 @@ pub struct Reference {
     pub value: f64,
 }
 
-/// Years before the current one whose weights count.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+/// Years before the current one whose weights count; 1 or 3 in documents.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Deserialize)]
+#[serde(try_from = "u8")]
 pub enum WeightYears {
     /// The year before.
     #[default]
     One,
     /// Mean of the three years before, all of which must be held.
     Three,
+}
+
+impl TryFrom<u8> for WeightYears {
+    type Error = AlgebraError;
+
+    fn try_from(years: u8) -> Result<Self, Self::Error> {
+        match years {
+            1 => Ok(Self::One),
+            3 => Ok(Self::Three),
+            _ => Err(AlgebraError::Argument {
+                name: "weight_years",
+                found: years.to_string(),
+                expected: "1 or 3".to_owned(),
+            }),
+        }
+    }
 }
 
 /// A partner in a weighted aggregate.
@@ -158,9 +177,10 @@ fn relative_price(
     }))
 }
 
-/// Real effective exchange rate: `Δln = Σ w_{k,t−1} Δln RER_k` over the partners present in both
-/// periods, weights renormalised, cumulated and brought to the reference. **A rise is a real
-/// appreciation of the home area.** Weights are those of the year before (or the mean of three).
+/// Real effective exchange rate: **a rise is a real appreciation of the home area.**
+///
+/// `Δln = Σ w_{k,t−1} Δln RER_k` over the partners present in both periods, weights renormalised,
+/// cumulated and brought to the reference; weights, run and coverage as in [`foreign_income`].
 ///
 /// # Errors
 /// As [`real_exchange_rate`] and [`foreign_income`].
@@ -194,9 +214,10 @@ pub fn real_effective_exchange_rate(
     )
 }
 
-/// Weighted foreign income: `Δln Z = Σ w_{k,t−1} Δln Y_k`, Y in the partners' own constant prices,
-/// over the partners present in both periods, weights renormalised, cumulated and brought to the
-/// reference.
+/// Weighted foreign income: `Δln Z = Σ w_{k,t−1} Δln Y_k`, Y in the partners' own constant prices.
+///
+/// The sum runs over the partners present in both periods, weights renormalised; it is cumulated and
+/// brought to the reference.
 ///
 /// Weights are annual (lagged export weights: ratios, or money in one currency) and those of the
 /// year before the period, or the mean of the three years before. Growth is cumulated only through
