@@ -9,6 +9,7 @@ mod fault;
 mod landing;
 pub mod lineage;
 pub mod preparations;
+mod preview;
 pub mod receiving;
 pub mod series;
 pub mod studies;

@@ -293,19 +293,21 @@ pub async fn list_runs(
     Ok(rows)
 }
 
-/// Number of runs of a document so far.
+/// Number of runs of a document up to and with this one.
 ///
 /// # Errors
 /// [`Error::Database`].
-pub async fn count_runs(
+pub async fn count_runs_until(
     connection: &mut PgConnection,
     kind: &str,
     name: &str,
+    id: i64,
 ) -> Result<i64, Error> {
     let row = sqlx::query!(
-        r#"SELECT count(*) AS "count!" FROM run WHERE kind = $1 AND name = $2"#,
+        r#"SELECT count(*) AS "count!" FROM run WHERE kind = $1 AND name = $2 AND id <= $3"#,
         kind,
-        name
+        name,
+        id
     )
     .fetch_one(connection)
     .await?;

@@ -354,3 +354,20 @@ impl TryFrom<SearchRow> for ListedSeries {
         })
     }
 }
+
+/// Series and segment numbers of all segments of these series.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn segments_of_series(
+    connection: &mut PgConnection,
+    series: &[i64],
+) -> Result<Vec<(i64, i64)>, Error> {
+    let rows = sqlx::query!(
+        "SELECT series_id, id FROM segment WHERE series_id = ANY($1) ORDER BY series_id, number",
+        series
+    )
+    .fetch_all(connection)
+    .await?;
+    Ok(rows.into_iter().map(|r| (r.series_id, r.id)).collect())
+}

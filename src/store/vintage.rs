@@ -316,7 +316,7 @@ pub async fn insert(
 }
 
 /// Which state of a series to read.
-#[derive(Clone, Copy, Debug)]
+#[derive(Clone, Copy, Debug, Default)]
 pub struct AsOf {
     /// Newest release date to consider.
     pub released: Option<Date>,
@@ -505,6 +505,64 @@ pub async fn fed_by_uploads(
     let rows = sqlx::query_scalar!(
         r#"SELECT DISTINCT g.series_id FROM fragment f JOIN segment g ON g.id = f.segment_id
            JOIN upload u ON u.id = f.upload_id AND u.state IN ('landed', 'held')
+           WHERE g.series_id = ANY($1)"#,
+        series
+    )
+    .fetch_all(connection)
+    .await?;
+    Ok(rows)
+}
+
+/// Segment and revision of the state that [`read`] would answer, without its observations.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn version(
+    connection: &mut PgConnection,
+    key: &SeriesKey,
+    as_of: AsOf,
+) -> Result<Option<(i32, i64)>, Error> {
+    let [area, measure, partner, product, currency, source, adjustment] = key.places();
+    let row = sqlx::query!(
+        r#"SELECT g.number, v.revision
+           FROM series s
+           JOIN segment g ON g.series_id = s.id AND ($9::integer IS NULL OR g.number = $9)
+           JOIN LATERAL (
+               SELECT w.released, w.revision, w.observation_count FROM vintage w
+               WHERE w.segment_id = g.id AND w.released <= $10 AND w.revision <= $11
+               ORDER BY w.released DESC, w.revision DESC LIMIT 1
+           ) v ON $9::integer IS NOT NULL OR v.observation_count > 0
+           WHERE s.area = $1 AND s.measure = $2 AND s.frequency = $3 AND s.partner = $4
+             AND s.product = $5 AND s.currency = $6 AND s.source = $7 AND s.adjustment = $8
+           ORDER BY v.released DESC, g.number DESC LIMIT 1"#,
+        area,
+        measure,
+        key.frequency().code(),
+        partner,
+        product,
+        currency,
+        source,
+        adjustment,
+        as_of.segment,
+        as_of.released.map_or(FAR, day),
+        as_of.revision.unwrap_or(i64::MAX)
+    )
+    .fetch_optional(connection)
+    .await?;
+    Ok(row.map(|r| (r.number, r.revision)))
+}
+
+/// Which of these series are outputs of preparations.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn fed_by_runs(
+    connection: &mut PgConnection,
+    series: &[i64],
+) -> Result<Vec<i64>, Error> {
+    let rows = sqlx::query_scalar!(
+        r#"SELECT DISTINCT g.series_id FROM segment g JOIN vintage v ON v.segment_id = g.id
+           JOIN change c ON c.revision = v.revision AND c.action = 'run'
            WHERE g.series_id = ANY($1)"#,
         series
     )

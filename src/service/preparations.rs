@@ -1,0 +1,357 @@
+//! Preparations: put, plan, run; outputs become series with lineage.
+
+use std::collections::{BTreeMap, BTreeSet};
+
+use serde::{Deserialize, Serialize};
+use utoipa::ToSchema;
+
+use super::documents::{self, DocumentKind, Precondition, timestamp};
+use super::lineage::OriginView;
+use super::series::Moment;
+use super::views::{DocumentView, Pin};
+use super::{Fault, blocking, preview};
+use crate::finding::Finding;
+use crate::preparation::{self, Document, InputInfo, InputRef, Output, Plan};
+use crate::series::provenance::Origin;
+use crate::series::vintage::{Scope, State, Statement, merge};
+use crate::series::{Series, SeriesKey, Status, Unit};
+use crate::store::change::{self, Action};
+use crate::store::document::RunRow;
+use crate::store::vintage::{NewVintage, ReadVintage};
+use crate::store::{self, Connection, Database};
+use crate::time::Date;
+
+/// A run of a preparation.
+#[derive(Clone, Debug, Serialize, ToSchema)]
+pub struct PreparationRun {
+    /// Number.
+    pub id: i64,
+    /// Name of the preparation.
+    pub preparation: String,
+    /// Version of its document.
+    pub version: i32,
+    /// Version of the method.
+    pub method_version: String,
+    /// Who started it.
+    pub author: String,
+    /// When.
+    pub recorded: String,
+    /// Revision that wrote the outputs; null where nothing changed.
+    pub revision: Option<i64>,
+    /// The vintages that it read.
+    pub pins: Vec<Pin>,
+    /// What it made.
+    pub outputs: Vec<OutputView>,
+}
+
+/// An output of a run.
+#[derive(Clone, Debug, Serialize, Deserialize, ToSchema)]
+pub struct OutputView {
+    /// Key of the series.
+    pub series: String,
+    /// Unit in words.
+    pub unit_text: String,
+    /// First period; null where the result is empty.
+    pub first: Option<String>,
+    /// Last period.
+    pub last: Option<String>,
+    /// Periods from first to last.
+    pub observations: usize,
+    /// Whether a new vintage was written; false where the result is what was there.
+    pub changed: bool,
+    /// The steps in words.
+    pub steps: Vec<String>,
+    /// Series that the steps name.
+    pub inputs: Vec<String>,
+    /// Coverage, link factors, periods left off.
+    pub notes: Vec<Finding>,
+}
+
+#[derive(Serialize, Deserialize)]
+struct StoredResult {
+    revision: Option<i64>,
+    outputs: Vec<OutputView>,
+}
+
+const KIND: DocumentKind = DocumentKind::Preparation;
+
+fn parse(body: &str) -> Result<Document, Fault> {
+    Document::parse(body).map_err(|errors| Fault::invalid("bad_preparation", errors))
+}
+
+/// Stores a preparation after checking it. Where its inputs are stored already, units are checked too.
+///
+/// # Errors
+/// [`Fault::Invalid`] with JSON pointers; [`Fault::PreconditionFailed`]; [`Fault::Store`].
+pub async fn put(
+    database: &Database,
+    name: &str,
+    body: &str,
+    precondition: &Precondition,
+    author: &str,
+) -> Result<(DocumentView, bool), Fault> {
+    let document = parse(body)?;
+    check_plan(database, document).await?;
+    documents::put(database, KIND, name, body, precondition, author).await
+}
+
+/// What a preparation would do with the series stored now.
+///
+/// # Errors
+/// [`Fault::NotFound`]; [`Fault::Invalid`] with JSON pointers; [`Fault::Store`].
+pub async fn plan(database: &Database, name: &str) -> Result<Plan, Fault> {
+    let row = documents::row(database, KIND, name, None).await?;
+    check_plan(database, parse(&row.body)?).await
+}
+
+async fn check_plan(database: &Database, document: Document) -> Result<Plan, Fault> {
+    let mut infos = BTreeMap::new();
+    for (input, vintage) in read_inputs(database, &document.inputs(), &Moment::default()).await? {
+        let series = preview::series(vintage);
+        let last = series.len().checked_sub(1).and_then(|i| series.period(i));
+        if let Some(last) = last {
+            infos.insert(input, InputInfo { unit: series.unit, first: series.start, last });
+        }
+    }
+    blocking(move || preparation::plan(&document, &infos))
+        .await?
+        .map_err(|errors| Fault::invalid("bad_preparation", errors))
+}
+
+/// Reads the inputs that exist.
+async fn read_inputs(
+    database: &Database,
+    inputs: &[InputRef],
+    moment: &Moment,
+) -> Result<Vec<(InputRef, ReadVintage)>, Fault> {
+    let mut connection = database.connection().await?;
+    let mut found = Vec::new();
+    for input in inputs {
+        let moment = Moment {
+            segment: input.segment.map(i64::from),
+            ..moment.clone()
+        };
+        let as_of = moment.resolve(&mut connection).await?;
+        if let Some(vintage) = store::vintage::read(&mut connection, &input.key, as_of).await? {
+            found.push((input.clone(), vintage));
+        }
+    }
+    Ok(found)
+}
+
+pub(super) fn pin(key: &SeriesKey, vintage: &ReadVintage) -> Pin {
+    Pin {
+        series: key.to_string(),
+        segment: vintage.segment,
+        released: vintage.released.to_string(),
+        revision: vintage.revision,
+    }
+}
+
+/// Runs a preparation and stores its outputs.
+///
+/// # Errors
+/// [`Fault::NotFound`]; [`Fault::Invalid`] where an input is missing or a step has no result;
+/// [`Fault::Conflict`] where an output is fed by uploads; [`Fault::Store`].
+pub async fn run(
+    database: &Database,
+    name: &str,
+    moment: &Moment,
+    author: &str,
+) -> Result<PreparationRun, Fault> {
+    let row = documents::row(database, KIND, name, None).await?;
+    let document = parse(&row.body)?;
+    let found = read_inputs(database, &document.inputs(), moment).await?;
+    let pins: Vec<Pin> = found.iter().map(|(input, v)| pin(&input.key, v)).collect();
+    let released = found.iter().map(|(_, v)| v.released).max();
+    let inputs: BTreeMap<InputRef, Series> =
+        found.into_iter().map(|(input, v)| (input, preview::series(v))).collect();
+    let outputs = blocking(move || preparation::evaluate(&document, &inputs))
+        .await?
+        .map_err(|errors| Fault::invalid("preparation_failed", errors))?;
+    let released = released
+        .ok_or_else(|| Fault::Internal("a preparation without inputs has outputs".to_owned()))?;
+
+    let mut transaction = database.begin().await?;
+    let pins_json = serde_json::json!(pins);
+    let id = store::document::insert_run(
+        &mut transaction,
+        KIND.as_str(),
+        name,
+        row.version,
+        preparation::METHOD_VERSION,
+        author,
+        &pins_json,
+        &serde_json::Value::Null,
+    )
+    .await?;
+    let (revision, changed) = write(&mut transaction, id, released, &outputs, author).await?;
+    let result = StoredResult {
+        revision,
+        outputs: outputs.iter().map(|o| output_view(o, changed.contains(&o.key))).collect(),
+    };
+    store::document::set_run_result(&mut transaction, id, &serde_json::json!(result)).await?;
+    store::commit(transaction).await?;
+    get_run(database, name, id).await
+}
+
+/// Writes outputs whose values or status differ from what is visible as of their release date.
+async fn write(
+    connection: &mut Connection,
+    run: i64,
+    released: Date,
+    outputs: &[Output],
+    author: &str,
+) -> Result<(Option<i64>, BTreeSet<SeriesKey>), Fault> {
+    let wanted: Vec<(&SeriesKey, &Unit)> =
+        outputs.iter().map(|o| (&o.key, &o.series.unit)).collect();
+    let segments = store::series::ensure_segments(connection, &wanted).await?;
+    let ids: Vec<i64> = segments.iter().map(|s| s.series_id).collect();
+    let fed = store::vintage::fed_by_uploads(connection, &ids).await?;
+    if let Some(i) = ids.iter().position(|id| fed.contains(id)) {
+        return Err(Fault::Conflict {
+            code: "series_of_uploads",
+            detail: format!(
+                "{} is fed by uploads and cannot be an output; name the output otherwise, for example \
+                 by a source of your own",
+                outputs[i].key
+            ),
+        });
+    }
+    let day_after = Date::from_days(released.days() + 1).unwrap_or(released);
+    let siblings = store::series::segments_of_series(connection, &ids).await?;
+    let all: Vec<i64> = siblings.iter().map(|(_, segment)| *segment).collect();
+    let mut visible: BTreeMap<i64, store::vintage::VintageRow> =
+        store::vintage::visible_before(connection, &all, day_after)
+            .await?
+            .into_iter()
+            .map(|row| (row.segment_id, row))
+            .collect();
+    let mut vintages = Vec::new();
+    let mut changed = BTreeSet::new();
+    for (output, segment) in outputs.iter().zip(&segments) {
+        let before = visible
+            .remove(&segment.id)
+            .map(|row| row.state(output.key.frequency()))
+            .transpose()?;
+        let (state, changes) = merge(before.as_ref(), &statement(run, &output.series));
+        if changes.any() {
+            changed.insert(output.key.clone());
+            vintages.push(NewVintage { segment_id: segment.id, released, state, changes });
+        }
+        // A run gives the whole series: what stood under another unit is over.
+        for (series, sibling) in &siblings {
+            if *series == segment.series_id
+                && *sibling != segment.id
+                && let Some(row) = visible.remove(sibling)
+                && !row.values.is_empty()
+            {
+                let old = row.state(output.key.frequency())?;
+                let state = State::empty(old.start);
+                let changes = crate::series::vintage::difference(&old, &state);
+                vintages.push(NewVintage { segment_id: *sibling, released, state, changes });
+            }
+        }
+    }
+    if vintages.is_empty() {
+        return Ok((None, changed));
+    }
+    let revision = change::draw(connection, Action::Run, None, Some(run), author).await?;
+    store::vintage::insert(connection, revision.number, &vintages).await?;
+    Ok((Some(revision.number), changed))
+}
+
+fn statement(run: i64, series: &Series) -> Statement {
+    Statement {
+        start: series.start,
+        values: series.values.clone(),
+        status: series.status.clone(),
+        origins: series
+            .status
+            .iter()
+            .map(|s| match s {
+                Status::Absent => Origin::Absent,
+                _ => Origin::Run { id: run },
+            })
+            .collect(),
+        scope: Scope::Replace,
+    }
+}
+
+fn output_view(output: &Output, changed: bool) -> OutputView {
+    let series = &output.series;
+    let last = series.len().checked_sub(1).and_then(|i| series.period(i));
+    OutputView {
+        series: output.key.to_string(),
+        unit_text: series.unit.to_string(),
+        first: last.map(|_| series.start.to_string()),
+        last: last.map(|p| p.to_string()),
+        observations: series.len(),
+        changed,
+        steps: output.steps.clone(),
+        inputs: output.inputs.iter().map(|i| i.key.to_string()).collect(),
+        notes: output.notes.clone(),
+    }
+}
+
+/// One run.
+///
+/// # Errors
+/// [`Fault::NotFound`]; [`Fault::Store`].
+pub async fn get_run(database: &Database, name: &str, id: i64) -> Result<PreparationRun, Fault> {
+    let mut connection = database.connection().await?;
+    let row = store::document::run(&mut connection, KIND.as_str(), name, id)
+        .await?
+        .ok_or_else(|| Fault::not_found(format!("run {id} of preparation '{name}'")))?;
+    run_view(row)
+}
+
+fn run_view(row: RunRow) -> Result<PreparationRun, Fault> {
+    let unreadable = |e: serde_json::Error| Fault::Internal(format!("run {} cannot be read: {e}", row.id));
+    let result: StoredResult = serde_json::from_value(row.result.0).map_err(unreadable)?;
+    Ok(PreparationRun {
+        id: row.id,
+        preparation: row.name,
+        version: row.version,
+        method_version: row.method_version,
+        author: row.author,
+        recorded: timestamp(row.recorded),
+        revision: result.revision,
+        pins: serde_json::from_value(row.pins.0).map_err(unreadable)?,
+        outputs: result.outputs,
+    })
+}
+
+/// Origin of an output's observations: its steps, and the stored vintages that they rest on, through
+/// other outputs of the same run too.
+pub(super) async fn origin(
+    database: &Database,
+    run: i64,
+    key: &SeriesKey,
+) -> Result<OriginView, Fault> {
+    let mut connection = database.connection().await?;
+    let row = store::document::run_by_id(&mut connection, run)
+        .await?
+        .ok_or_else(|| Fault::Internal(format!("run {run} of a stored observation is gone")))?;
+    let run = run_view(row)?;
+    let by_key: BTreeMap<&str, &OutputView> =
+        run.outputs.iter().map(|o| (o.series.as_str(), o)).collect();
+    let text = key.to_string();
+    let mut open = vec![text.as_str()];
+    let mut seen = BTreeSet::new();
+    while let Some(series) = open.pop() {
+        if seen.insert(series)
+            && let Some(output) = by_key.get(series)
+        {
+            open.extend(output.inputs.iter().map(String::as_str));
+        }
+    }
+    Ok(OriginView::Run {
+        run: run.id,
+        steps: by_key.get(text.as_str()).map_or_else(Vec::new, |o| o.steps.clone()),
+        inputs: run.pins.iter().filter(|p| seen.contains(p.series.as_str())).cloned().collect(),
+        preparation: run.preparation.clone(),
+        version: run.version,
+        method_version: run.method_version.clone(),
+    })
+}

@@ -1,0 +1,149 @@
+//! Studies: put, run, read; a run pins what it read and gives the same digits again.
+
+use std::collections::BTreeMap;
+
+use serde::Serialize;
+use utoipa::ToSchema;
+
+use super::documents::{self, DocumentKind, Precondition, timestamp};
+use super::preparations::pin;
+use super::series::Moment;
+use super::views::{DocumentView, Pin};
+use super::{Fault, blocking, preview};
+use crate::store::document::RunRow;
+use crate::store::{self, Database};
+use crate::study::{self, Document, Outcome};
+
+/// A run of a study.
+#[derive(Clone, Debug, Serialize, ToSchema)]
+pub struct StudyRun {
+    /// Number.
+    pub id: i64,
+    /// Name of the study.
+    pub study: String,
+    /// Version of its document.
+    pub version: i32,
+    /// Version of the method.
+    pub method_version: String,
+    /// Who started it.
+    pub author: String,
+    /// When.
+    pub recorded: String,
+    /// Runs of this study up to and with this one: how many times somebody looked.
+    pub runs_so_far: i64,
+    /// The vintages that it read.
+    pub pins: Vec<Pin>,
+    /// What came out.
+    pub result: Outcome,
+}
+
+const KIND: DocumentKind = DocumentKind::Study;
+
+fn parse(body: &str) -> Result<Document, Fault> {
+    Document::parse(body).map_err(|errors| Fault::invalid("bad_study", errors))
+}
+
+/// Stores a study after checking it.
+///
+/// # Errors
+/// [`Fault::Invalid`] with JSON pointers; [`Fault::PreconditionFailed`]; [`Fault::Store`].
+pub async fn put(
+    database: &Database,
+    name: &str,
+    body: &str,
+    precondition: &Precondition,
+    author: &str,
+) -> Result<(DocumentView, bool), Fault> {
+    parse(body)?;
+    documents::put(database, KIND, name, body, precondition, author).await
+}
+
+/// Runs a study on the series as of some moment and stores what comes out.
+///
+/// # Errors
+/// [`Fault::NotFound`]; [`Fault::Invalid`] where series are missing or cannot answer;
+/// [`Fault::Store`].
+pub async fn run(
+    database: &Database,
+    name: &str,
+    moment: &Moment,
+    author: &str,
+) -> Result<StudyRun, Fault> {
+    let row = documents::row(database, KIND, name, None).await?;
+    let document = parse(&row.body)?;
+    let mut pins = Vec::new();
+    let mut inputs = BTreeMap::new();
+    let mut connection = database.connection().await?;
+    let as_of = moment.resolve(&mut connection).await?;
+    for key in document.inputs() {
+        if let Some(vintage) = store::vintage::read(&mut connection, &key, as_of).await? {
+            pins.push(pin(&key, &vintage));
+            inputs.insert(key, preview::series(vintage));
+        }
+    }
+    drop(connection);
+    let outcome = blocking(move || study::run(&document, &inputs))
+        .await?
+        .map_err(|errors| Fault::invalid("study_failed", errors))?;
+    let mut connection = database.connection().await?;
+    let id = store::document::insert_run(
+        &mut connection,
+        KIND.as_str(),
+        name,
+        row.version,
+        study::METHOD_VERSION,
+        author,
+        &serde_json::json!(pins),
+        &serde_json::json!(outcome),
+    )
+    .await?;
+    drop(connection);
+    get_run(database, name, id).await
+}
+
+/// One run.
+///
+/// # Errors
+/// [`Fault::NotFound`]; [`Fault::Store`].
+pub async fn get_run(database: &Database, name: &str, id: i64) -> Result<StudyRun, Fault> {
+    let mut connection = database.connection().await?;
+    let row = store::document::run(&mut connection, KIND.as_str(), name, id)
+        .await?
+        .ok_or_else(|| Fault::not_found(format!("run {id} of study '{name}'")))?;
+    let runs_so_far =
+        store::document::count_runs_until(&mut connection, KIND.as_str(), name, id).await?;
+    view(row, runs_so_far)
+}
+
+fn view(row: RunRow, runs_so_far: i64) -> Result<StudyRun, Fault> {
+    let unreadable = |e: serde_json::Error| Fault::Internal(format!("run {} cannot be read: {e}", row.id));
+    Ok(StudyRun {
+        id: row.id,
+        study: row.name,
+        version: row.version,
+        method_version: row.method_version,
+        author: row.author,
+        recorded: timestamp(row.recorded),
+        runs_so_far,
+        pins: serde_json::from_value(row.pins.0).map_err(unreadable)?,
+        result: serde_json::from_value(row.result.0).map_err(unreadable)?,
+    })
+}
+
+/// The run as a text for a person.
+#[must_use]
+pub fn text(run: &StudyRun, with_unreliable: bool) -> String {
+    let newest = run.pins.iter().map(|p| p.released.as_str()).max().unwrap_or("-");
+    let header = [
+        format!(
+            "Study {} version {}, run {} (its {}. run; {}, by {})",
+            run.study, run.version, run.id, run.runs_so_far, run.recorded, run.author
+        ),
+        format!(
+            "{} series as released until {newest}, methods {}",
+            run.pins.len(),
+            run.method_version
+        ),
+    ];
+    study::text::render(&run.result, &header, with_unreliable)
+}
