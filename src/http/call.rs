@@ -23,7 +23,7 @@ const DOCUMENT_BYTES: usize = 1 << 20;
 pub(super) struct Call {
     pub(super) shared: Arc<Shared>,
     pub(super) request: HttpRequest,
-    pub(super) payload: Payload,
+    pub(super) payload: Option<Payload>,
     pub(super) principal: Principal,
     parameters: BTreeMap<String, String>,
 }
@@ -78,7 +78,7 @@ impl Call {
         Ok(Self {
             shared,
             request,
-            payload,
+            payload: Some(payload),
             principal,
             parameters,
         })
@@ -148,7 +148,10 @@ impl Call {
     /// Reads a document body whole.
     pub(super) async fn document(&mut self) -> Result<String, Problem> {
         let mut bytes = Vec::new();
-        while let Some(chunk) = self.payload.next().await {
+        let Some(mut payload) = self.payload.take() else {
+            return Ok(String::new());
+        };
+        while let Some(chunk) = payload.next().await {
             let chunk = chunk.map_err(|e| {
                 Problem::bad_request(format!("the body could not be read: {e}"), vec![])
             })?;

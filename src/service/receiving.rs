@@ -17,7 +17,7 @@ use super::uploads::{self, ReportParts};
 use super::views::UploadView;
 use super::{Fault, currencies, landing, preview};
 use crate::finding::Finding;
-use crate::intake::{self, Fatal, Intake, Reader, Reject};
+use crate::intake::{self, Fatal, Intake, Reader};
 use crate::series::provenance::Origin;
 use crate::series::vintage::{Scope, Statement};
 use crate::series::{Fragment, Piece, SeriesKey, Unit};
@@ -114,9 +114,9 @@ pub async fn receive<E: std::fmt::Display>(
     let mut transaction = database.begin_upload().await?;
     let context = currencies::context(&mut transaction).await?;
     let reader = Reader::new(request.settings.clone(), context, limits.intake, request.gzip_declared)
-        .map_err(|errors| Fault::BadRequest {
-            detail: "a parameter cannot stand for its column".to_owned(),
-            errors,
+        .map_err(|fatal| Fault::BadRequest {
+            detail: fatal.to_string(),
+            errors: fatal.findings().to_vec(),
         })?;
     let new = NewUpload {
         kind: request.settings.kind(),
@@ -206,7 +206,7 @@ pub async fn receive<E: std::fmt::Display>(
         let detail = format!(
             "{} rows were rejected, so nothing of the file counts; mend them, or send it with \
              on_reject=skip",
-            report.rejects_by_code.values().sum::<u64>()
+            report.understood.rows_rejected
         );
         return Err(Fault::Refused { detail, errors, upload: Box::new(view) });
     }
@@ -336,7 +336,7 @@ impl Receiver<'_> {
         let mut pace = Pace::new(self.limits);
         let mut received: u64 = 0;
         loop {
-            let sender = to_worker.as_ref();
+            let sender = to_worker.clone();
             tokio::select! {
                 biased;
                 event = from_worker.recv() => match event {
@@ -352,9 +352,8 @@ impl Receiver<'_> {
                         return Err(Fault::Internal(format!("the reading thread ended: {reason}")));
                     }
                 },
-                permit = async { sender.map(mpsc::Sender::reserve).expect("guarded").await },
-                    if pending.is_some() && sender.is_some() => {
-                    if let (Ok(permit), Some(chunk)) = (permit, pending.take()) {
+                permit = room(sender.as_ref()), if pending.is_some() => {
+                    if let (Some(permit), Some(chunk)) = (permit, pending.take()) {
                         permit.send(chunk);
                     }
                     pace.excuse(pending_since.elapsed());
@@ -414,6 +413,11 @@ impl Receiver<'_> {
         }
         Ok(Source::Memory(grouped))
     }
+}
+
+/// Waits for room in the channel; `None` where it is closed.
+async fn room(sender: Option<&mpsc::Sender<Bytes>>) -> Option<mpsc::Permit<'_, Bytes>> {
+    sender?.reserve().await.ok()
 }
 
 /// The answer to a body above the limit.

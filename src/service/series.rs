@@ -238,7 +238,7 @@ pub async fn observations(
     let mut series = series(vintage);
     if let Some((kind, over, annualised)) = growth_name.and_then(growth_of) {
         series = growth(&series, kind, over, annualised)
-            .map_err(|e| Fault::invalid(e.code(), vec![Finding::from(&e).at_series(key)]))?;
+            .map_err(|e| Fault::invalid(e.code(), vec![Finding::from(e).at_series(key)]))?;
     }
     let observations = (0..series.len())
         .filter_map(|i| {

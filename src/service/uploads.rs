@@ -49,7 +49,6 @@ pub(super) fn stored_settings_text(row: &UploadRow) -> String {
 /// The report of an upload while it is put together.
 pub(super) struct ReportParts {
     understood: Understood,
-    rejects_by_code: BTreeMap<String, u64>,
     pub(super) rejects: Vec<Reject>,
     pub(super) findings: Vec<Finding>,
     duplicates: Vec<Reject>,
@@ -62,7 +61,6 @@ impl ReportParts {
     pub(super) fn new(intake: &Intake) -> Self {
         Self {
             understood: intake.understood.clone(),
-            rejects_by_code: intake.rejects_by_code.clone(),
             rejects: intake.rejects.clone(),
             findings: intake.findings.clone(),
             duplicates: Vec::new(),
@@ -94,7 +92,7 @@ impl ReportParts {
     }
 
     pub(super) fn rejected(&self) -> bool {
-        !self.rejects_by_code.is_empty() || self.duplicate_count > 0
+        self.understood.rows_rejected > 0 || self.duplicate_count > 0
     }
 
     pub(super) fn holds(&self) -> bool {
@@ -107,7 +105,7 @@ impl ReportParts {
         self.rejects.append(&mut self.duplicates);
         self.rejects.sort_by_key(|r| r.finding.place.line);
         if self.duplicate_count > 0 {
-            *self.rejects_by_code.entry("duplicate_key".to_owned()).or_default() +=
+            *self.understood.rejects_by_code.entry("duplicate_key".to_owned()).or_default() +=
                 self.duplicate_count;
             self.understood.rows_rejected += self.duplicate_count;
             self.understood.rows_accepted -= self.duplicate_count;
@@ -116,7 +114,6 @@ impl ReportParts {
         findings.extend(self.landing_findings.iter().cloned());
         UploadReport {
             understood: self.understood.clone(),
-            rejects_by_code: self.rejects_by_code.clone(),
             rejects: self.rejects.iter().take(SHOWN_REJECTS).cloned().collect(),
             findings,
             observations: landing.map_or_else(ObservationCounts::default, |l| l.observations),

@@ -89,9 +89,7 @@ pub struct UploadView {
 pub struct UploadReport {
     /// How the file was read.
     pub understood: Understood,
-    /// Rows that could not be taken, by code.
-    pub rejects_by_code: BTreeMap<String, u64>,
-    /// The first hundred of them; all are under `/rejects`.
+    /// The first hundred rows that could not be taken; more are under `/rejects`.
     pub rejects: Vec<Reject>,
     /// What else was seen; severity `error` holds the upload.
     pub findings: Vec<Finding>,

@@ -4,17 +4,22 @@
 //! checked at compile time against the migrations.
 
 pub mod change;
+pub mod cluster;
+mod connection;
 mod copy;
 pub mod currency;
 pub mod document;
 mod error;
+mod pool;
 pub mod series;
 pub mod staging;
 pub mod token;
 pub mod upload;
 pub mod vintage;
 
+pub use connection::{Borrowed, Connection, Savepoint, Transaction, commit, rollback, rollback_to, savepoint};
 pub use error::Error;
+pub use pool::{Database, DatabaseOptions, OpenError, Place, migrations_digest};
 use chrono::{Datelike, NaiveDate};
 use sqlx::AssertSqlSafe;
 

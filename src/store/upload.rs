@@ -4,9 +4,9 @@ use futures_util::StreamExt;
 use futures_util::stream::BoxStream;
 use sqlx::types::Json;
 use sqlx::types::chrono::{DateTime, NaiveDate, Utc};
-use sqlx::{PgConnection, PgPool};
+use sqlx::PgConnection;
 
-use super::{Error, day};
+use super::{Database, Error, day};
 use crate::time::Date;
 
 /// What is known of an upload before its body.
@@ -312,8 +312,8 @@ pub async fn same_bytes(
 
 /// The raw bytes in order, each part still compressed.
 #[must_use]
-pub fn parts(pool: &PgPool, upload: i64) -> BoxStream<'static, Result<Vec<u8>, Error>> {
-    let pool = pool.clone();
+pub fn parts(database: &Database, upload: i64) -> BoxStream<'static, Result<Vec<u8>, Error>> {
+    let pool = database.pool().clone();
     futures_util::stream::try_unfold(0_i32, move |number| {
         let pool = pool.clone();
         async move {

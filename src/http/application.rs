@@ -1,0 +1,312 @@
+//! The server: binds, dispatches, logs and stops.
+
+use std::collections::BTreeMap;
+use std::net::{SocketAddr, TcpListener};
+use std::sync::Arc;
+use std::time::{Duration, Instant};
+
+use actix_web::dev::{Server, ServerHandle};
+use actix_web::http::StatusCode;
+use actix_web::http::header::{HeaderName, HeaderValue};
+use actix_web::web::{self, Payload};
+use actix_web::{App, HttpRequest, HttpResponse, HttpServer, guard};
+use anyhow::Context as _;
+use tracing::Instrument as _;
+
+use super::call::Call;
+use super::problem::Problem;
+use super::route::{Method, Route};
+use super::state::Shared;
+use crate::config::Settings;
+use crate::service::receiving::Limits;
+use crate::service::tokens::{self, Admission, Gate, Principal, Role};
+use crate::service::uploads;
+use crate::store::Database;
+use crate::{clock, intake};
+
+const REQUEST_ID: HeaderName = HeaderName::from_static("x-request-id");
+
+/// How long requests under way may take to end when the server stops.
+const GRACE_SECONDS: u64 = 20;
+
+/// How often old refused uploads are looked for.
+const SWEEP: Duration = Duration::from_secs(3600);
+
+/// A bound server, not yet running.
+pub struct Application {
+    server: Server,
+    shared: Arc<Shared>,
+    address: SocketAddr,
+    refused_days: u32,
+}
+
+impl Application {
+    /// Binds the address and prepares the server on an open database.
+    ///
+    /// # Errors
+    /// The address is taken; or it is not a loopback address and no token exists.
+    pub async fn build(settings: &Settings, database: Database) -> anyhow::Result<Self> {
+        let open = {
+            let mut connection = database.connection().await?;
+            !tokens::any(&mut connection)
+                .await
+                .map_err(|fault| anyhow::anyhow!("the tokens cannot be read: {fault:?}"))?
+        };
+        let loopback = settings.listen.ip().is_loopback();
+        if open && !loopback {
+            anyhow::bail!(
+                "{} can be reached from other machines and no token exists; make one first: realterms \
+                 token create --name NAME --role administer",
+                settings.listen
+            );
+        }
+        let listener = TcpListener::bind(settings.listen)
+            .with_context(|| format!("cannot listen on {} (setting REALTERMS_LISTEN)", settings.listen))?;
+        let address = listener.local_addr()?;
+        if open {
+            tracing::warn!(address = %address, "no token exists: everybody on this machine may do everything");
+        }
+        let shared = Arc::new(Shared {
+            database,
+            gate: Gate::default(),
+            limits: limits(settings),
+        });
+        let routes: &'static [Route] = Box::leak(super::routes().into_boxed_slice());
+        let for_workers = Arc::clone(&shared);
+        let server = HttpServer::new(move || {
+            let shared = Arc::clone(&for_workers);
+            App::new()
+                .app_data(web::Data::from(Arc::clone(&shared)))
+                .configure(|config| mount(config, routes))
+                .default_service(web::route().to(no_such_path))
+        })
+        .workers(settings.workers.map_or_else(default_workers, usize::from))
+        .shutdown_timeout(GRACE_SECONDS)
+        .disable_signals()
+        .listen(listener)?
+        .run();
+        Ok(Self {
+            server,
+            shared,
+            address,
+            refused_days: settings.refused_days,
+        })
+    }
+
+    /// The address it listens on.
+    #[must_use]
+    pub fn address(&self) -> SocketAddr {
+        self.address
+    }
+
+    /// A handle that stops it.
+    #[must_use]
+    pub fn handle(&self) -> ServerHandle {
+        self.server.handle()
+    }
+
+    /// Serves until it is stopped; requests under way end first.
+    ///
+    /// # Errors
+    /// The server failed.
+    pub async fn run_until_stopped(self) -> anyhow::Result<()> {
+        let shared = Arc::clone(&self.shared);
+        let days = chrono::Days::new(u64::from(self.refused_days));
+        let sweeper = tokio::spawn(async move {
+            let mut ticks = tokio::time::interval(SWEEP);
+            loop {
+                ticks.tick().await;
+                let Some(before) = clock::now().checked_sub_days(days) else {
+                    continue;
+                };
+                match uploads::sweep_refused(&shared.database, before).await {
+                    Ok(0) => {}
+                    Ok(count) => tracing::info!(uploads = count, "erased old refused uploads"),
+                    Err(fault) => tracing::warn!(error = ?fault, "old refused uploads stay for now"),
+                }
+            }
+        });
+        let outcome = self.server.await;
+        sweeper.abort();
+        let _ = sweeper.await;
+        if let Ok(shared) = Arc::try_unwrap(self.shared) {
+            shared.database.close().await;
+        }
+        Ok(outcome?)
+    }
+}
+
+fn default_workers() -> usize {
+    std::thread::available_parallelism().map_or(1, usize::from)
+}
+
+fn limits(settings: &Settings) -> Limits {
+    Limits {
+        max_bytes: settings.max_upload_bytes.0,
+        memory_budget: usize::try_from(settings.upload_memory.0).unwrap_or(usize::MAX),
+        min_rate: settings.min_body_rate.0,
+        patience: Duration::from_secs(settings.body_patience),
+        intake: intake::Limits::default(),
+    }
+}
+
+/// Mounts one resource a path, with an answer to methods that it does not have.
+fn mount(config: &mut web::ServiceConfig, routes: &'static [Route]) {
+    let mut by_path: BTreeMap<&str, Vec<&'static Route>> = BTreeMap::new();
+    for route in routes {
+        by_path.entry(route.path).or_default().push(route);
+    }
+    for (path, routes) in by_path {
+        let mut resource = web::resource(path);
+        let mut allowed = Vec::new();
+        for route in routes {
+            allowed.push(route.method.as_str());
+            let guard = match route.method {
+                Method::Get => {
+                    allowed.push("HEAD");
+                    guard::Any(guard::Get()).or(guard::Head())
+                }
+                Method::Post => guard::Any(guard::Post()),
+                Method::Put => guard::Any(guard::Put()),
+                Method::Delete => guard::Any(guard::Delete()),
+            };
+            resource = resource.route(web::route().guard(guard).to(
+                move |request: HttpRequest, payload: Payload, shared: web::Data<Shared>| {
+                    dispatch(route, request, payload, shared.into_inner())
+                },
+            ));
+        }
+        let allow = allowed.join(", ");
+        config.service(resource.default_service(web::route().to(move |request: HttpRequest| {
+            let allow = allow.clone();
+            async move {
+                let problem = Problem::new(
+                    StatusCode::METHOD_NOT_ALLOWED,
+                    "method_not_allowed",
+                    format!("{} is not for {}; allowed: {allow}", request.method(), request.path()),
+                )
+                .with_header("Allow", allow);
+                finish(&request, Instant::now(), Err(problem))
+            }
+        })));
+    }
+}
+
+async fn no_such_path(request: HttpRequest) -> HttpResponse {
+    let problem = Problem::new(
+        StatusCode::NOT_FOUND,
+        "not_found",
+        format!("there is nothing at {}; /openapi.json lists what there is", request.path()),
+    );
+    finish(&request, Instant::now(), Err(problem))
+}
+
+/// Runs one operation: who calls, may they, are the parameters known, then the handler.
+async fn dispatch(
+    route: &'static Route,
+    request: HttpRequest,
+    payload: Payload,
+    shared: Arc<Shared>,
+) -> HttpResponse {
+    let started = Instant::now();
+    let span = tracing::info_span!("request", operation = route.name);
+    let outcome = async {
+        let principal = admit(route, &request, &shared).await?;
+        let call = Call::new(shared, route, request.clone(), payload, principal)?;
+        (route.handler)(call).await
+    }
+    .instrument(span)
+    .await;
+    finish(&request, started, outcome)
+}
+
+async fn admit(
+    route: &Route,
+    request: &HttpRequest,
+    shared: &Shared,
+) -> Result<Principal, Problem> {
+    let Some(role) = route.role else {
+        return Ok(Principal {
+            name: "anybody".to_owned(),
+            role: Role::Read,
+        });
+    };
+    let bearer = request
+        .headers()
+        .get("Authorization")
+        .and_then(|v| v.to_str().ok())
+        .and_then(|v| v.strip_prefix("Bearer ").or_else(|| v.strip_prefix("bearer ")))
+        .map(str::trim);
+    let unauthorised = |code: &str, detail: &str| {
+        Err(Problem::new(StatusCode::UNAUTHORIZED, code, detail)
+            .with_header("WWW-Authenticate", "Bearer realm=\"realterms\""))
+    };
+    match shared.gate.admit(&shared.database, bearer).await? {
+        Admission::Admitted(principal) if principal.role >= role => Ok(principal),
+        Admission::Admitted(principal) => Err(Problem::new(
+            StatusCode::FORBIDDEN,
+            "role_too_low",
+            format!(
+                "this needs the role {}, and the token '{}' has {}",
+                role.as_str(),
+                principal.name,
+                principal.role.as_str()
+            ),
+        )),
+        Admission::TokenMissing => unauthorised(
+            "token_missing",
+            "a token is needed: send the header Authorization: Bearer TOKEN",
+        ),
+        Admission::TokenUnknown => {
+            unauthorised("token_unknown", "the token is not known or was revoked")
+        }
+    }
+}
+
+/// Numbers, logs and completes an answer.
+fn finish(
+    request: &HttpRequest,
+    started: Instant,
+    outcome: Result<HttpResponse, Problem>,
+) -> HttpResponse {
+    let request_id = request_id(request);
+    let duration_ms = started.elapsed().as_secs_f64() * 1000.0;
+    let (method, path) = (request.method().as_str(), request.path());
+    let mut response = match outcome {
+        Ok(response) => {
+            let status = response.status().as_u16();
+            tracing::info!(request.id = %request_id, method, path, status, duration_ms, "answered");
+            response
+        }
+        Err(problem) => {
+            let (status, code) = (problem.status, problem.code.as_str());
+            match &problem.internal {
+                Some(reason) => tracing::error!(
+                    request.id = %request_id, method, path, status, code, duration_ms, reason, "failed"
+                ),
+                None => tracing::info!(
+                    request.id = %request_id, method, path, status, code, duration_ms,
+                    detail = problem.detail, "refused"
+                ),
+            }
+            problem.answer(&request_id)
+        }
+    };
+    if let Ok(value) = HeaderValue::from_str(&request_id) {
+        response.headers_mut().insert(REQUEST_ID, value);
+    }
+    response
+}
+
+/// The client's number for the request if it is a sane one, else a new one.
+fn request_id(request: &HttpRequest) -> String {
+    request
+        .headers()
+        .get(&REQUEST_ID)
+        .and_then(|v| v.to_str().ok())
+        .filter(|id| {
+            (1..=64).contains(&id.len())
+                && id.bytes().all(|b| b.is_ascii_alphanumeric() || b == b'-' || b == b'_')
+        })
+        .map_or_else(|| uuid::Uuid::now_v7().to_string(), str::to_owned)
+}

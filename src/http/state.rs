@@ -1,0 +1,12 @@
+//! What all requests share.
+
+use crate::service::receiving::Limits;
+use crate::service::tokens::Gate;
+use crate::store::Database;
+
+/// What all requests share.
+pub(super) struct Shared {
+    pub(super) database: Database,
+    pub(super) gate: Gate,
+    pub(super) limits: Limits,
+}

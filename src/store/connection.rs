@@ -1,0 +1,91 @@
+//! Connections and transactions, as `service` holds them.
+
+use sqlx::{Executor, PgConnection, Postgres};
+
+use super::{Database, Error};
+
+/// A connection that a function works on.
+pub type Connection = PgConnection;
+
+/// A connection on loan from a pool.
+pub type Borrowed = sqlx::pool::PoolConnection<Postgres>;
+
+/// A transaction; dropped, it rolls back.
+pub type Transaction = sqlx::Transaction<'static, Postgres>;
+
+impl Database {
+    /// A connection for reading, or for a single statement.
+    ///
+    /// # Errors
+    /// [`Error::Database`].
+    pub async fn connection(&self) -> Result<Borrowed, Error> {
+        Ok(self.pool().acquire().await?)
+    }
+
+    /// A transaction.
+    ///
+    /// # Errors
+    /// [`Error::Database`].
+    pub async fn begin(&self) -> Result<Transaction, Error> {
+        Ok(self.pool().begin().await?)
+    }
+
+    /// A transaction from the pool of uploads, so that slow clients take nothing from readers.
+    ///
+    /// # Errors
+    /// [`Error::Database`].
+    pub async fn begin_upload(&self) -> Result<Transaction, Error> {
+        Ok(self.upload_pool().begin().await?)
+    }
+}
+
+/// Commits.
+///
+/// # Errors
+/// [`Error::Database`]; nothing was changed then.
+pub async fn commit(transaction: Transaction) -> Result<(), Error> {
+    Ok(transaction.commit().await?)
+}
+
+/// Rolls back.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn rollback(transaction: Transaction) -> Result<(), Error> {
+    Ok(transaction.rollback().await?)
+}
+
+/// Points to which an upload's transaction may return.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Savepoint {
+    /// Before anything of its rows is stored.
+    Upload,
+    /// Before it becomes current.
+    Landing,
+}
+
+/// Sets a savepoint.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn savepoint(connection: &mut Connection, point: Savepoint) -> Result<(), Error> {
+    let statement = match point {
+        Savepoint::Upload => "SAVEPOINT upload",
+        Savepoint::Landing => "SAVEPOINT landing",
+    };
+    connection.execute(statement).await?;
+    Ok(())
+}
+
+/// Returns to a savepoint.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn rollback_to(connection: &mut Connection, point: Savepoint) -> Result<(), Error> {
+    let statement = match point {
+        Savepoint::Upload => "ROLLBACK TO SAVEPOINT upload",
+        Savepoint::Landing => "ROLLBACK TO SAVEPOINT landing",
+    };
+    connection.execute(statement).await?;
+    Ok(())
+}
