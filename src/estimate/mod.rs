@@ -1,1 +1,51 @@
 //! Estimators: plain vectors and matrices in, structs out.
+//!
+//! Start reading at [`Ols::fit`]; [`covariance`] gives standard errors, within one equation and
+//! across equations that share a sample.
+
+mod covariance;
+mod ols;
+
+#[cfg(test)]
+mod reference_tests;
+
+pub use covariance::{CovarianceKind, covariance, rule_of_thumb_lags};
+pub use ols::{Ols, Regressor};
+
+/// Why an equation cannot be estimated.
+#[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
+pub enum EstimateError {
+    /// No degree of freedom is left, or lengths differ.
+    #[error("{observations} observations cannot estimate {coefficients} coefficients")]
+    TooFewObservations {
+        /// Number of observations.
+        observations: usize,
+        /// Number of coefficients.
+        coefficients: usize,
+    },
+    /// A missing or infinite value among the data.
+    #[error("a value is missing or infinite")]
+    NotFinite,
+    /// Regressors are linear combinations of each other.
+    #[error("the regressors {} are linearly dependent", names.join(", "))]
+    Collinear {
+        /// Names of the regressors that take part in the dependence.
+        names: Vec<String>,
+    },
+    /// Equations without a common sample have no joint covariance.
+    #[error("equations with {first} and {second} observations have no common sample")]
+    SampleDiffers {
+        /// Observations of the first equation.
+        first: usize,
+        /// Observations of the other one.
+        second: usize,
+    },
+    /// As many lags as observations, or more.
+    #[error("{lags} lags need more than {observations} observations")]
+    TooManyLags {
+        /// Number of lags.
+        lags: usize,
+        /// Number of observations.
+        observations: usize,
+    },
+}
