@@ -1,1 +1,81 @@
 //! The commands of the program.
+
+mod database;
+
+use crate::config::{Settings, check_environment};
+use crate::store::cluster;
+use crate::telemetry;
+use clap::{CommandFactory, Parser, Subcommand};
+use std::process::ExitCode;
+
+/// Raw trade, price and income files in; the growth rate that the balance of payments allows out.
+#[derive(Debug, Parser)]
+#[command(name = "realterms", version, disable_help_subcommand = true)]
+struct Cli {
+    #[command(subcommand)]
+    command: Command,
+    #[command(flatten)]
+    settings: Settings,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    /// The database: where it is, start, stop, migrate, dump, restore
+    #[command(subcommand)]
+    Database(database::DatabaseCommand),
+    /// Holds a private cluster for the process that started it
+    #[command(hide = true)]
+    KeepCluster {
+        /// What to hold
+        order: String,
+    },
+}
+
+/// Runs the command that the arguments name; errors go to standard error.
+#[must_use]
+pub fn main() -> ExitCode {
+    let cli = Cli::parse();
+    if let Command::KeepCluster { order } = &cli.command {
+        let kept = cluster::keep(order);
+        return if kept {
+            ExitCode::SUCCESS
+        } else {
+            ExitCode::FAILURE
+        };
+    }
+    match run(cli) {
+        Ok(()) => ExitCode::SUCCESS,
+        Err(error) => {
+            complain(&error);
+            ExitCode::FAILURE
+        }
+    }
+}
+
+fn run(cli: Cli) -> anyhow::Result<()> {
+    check_environment(&Cli::command())?;
+    telemetry::start(&cli.settings.log, cli.settings.log_format)?;
+    let runtime = tokio::runtime::Builder::new_multi_thread()
+        .enable_all()
+        .build()?;
+    runtime.block_on(async {
+        match cli.command {
+            Command::Database(command) => command.run(&cli.settings).await,
+            Command::KeepCluster { .. } => unreachable!("the keeper runs without a runtime"),
+        }
+    })
+}
+
+#[expect(
+    clippy::print_stderr,
+    reason = "the last word of a command that failed"
+)]
+fn complain(error: &anyhow::Error) {
+    eprintln!("realterms: {error:#}");
+}
+
+/// Prints a line of a command's answer.
+#[expect(clippy::print_stdout, reason = "what the command is asked for")]
+fn say(line: impl std::fmt::Display) {
+    println!("{line}");
+}

@@ -1,0 +1,104 @@
+//! `realterms database`: the private cluster by hand, migrations, dump and restore.
+
+use super::say;
+use crate::config::Settings;
+use crate::store::Database;
+use crate::store::cluster::{self, Address, Stopped};
+use anyhow::Context;
+use clap::Subcommand;
+use tokio::signal::unix::{SignalKind, signal};
+
+#[derive(Debug, Subcommand)]
+pub(super) enum DatabaseCommand {
+    /// Say where the database is, who holds it and how to connect
+    Where,
+    /// Start the private cluster, migrate, and hold it in the foreground until interrupted
+    Start,
+    /// Stop the private cluster, whoever holds it
+    Stop,
+    /// Apply the migrations that are missing
+    Migrate,
+}
+
+impl DatabaseCommand {
+    pub(super) async fn run(self, settings: &Settings) -> anyhow::Result<()> {
+        match self {
+            Self::Where => locate(settings),
+            Self::Start => start(settings).await,
+            Self::Stop => stop(settings),
+            Self::Migrate => {
+                let options = settings.database("realterms database migrate", true)?;
+                Database::open(&options).await?.close().await;
+                say("the database is up to date");
+                Ok(())
+            }
+        }
+    }
+}
+
+fn locate(settings: &Settings) -> anyhow::Result<()> {
+    if settings.database_url.is_some() {
+        say(
+            "--database-url (REALTERMS_DATABASE_URL) names the database; no private cluster is used",
+        );
+        return Ok(());
+    }
+    let whereabouts = cluster::whereabouts(&settings.cluster("realterms database where")?)?;
+    say(format!("folder    {}", whereabouts.folder.display()));
+    say(format!("programs  {}", whereabouts.binaries));
+    match whereabouts.holder {
+        Some((pid, what)) => say(format!("held by   process {pid} ({what})")),
+        None => say("held by   nobody"),
+    }
+    match whereabouts.address {
+        Some(address) => say(format!("connect   {}", connection_string(&address))),
+        None => say("server    not running"),
+    }
+    Ok(())
+}
+
+async fn start(settings: &Settings) -> anyhow::Result<()> {
+    only_private(settings)?;
+    let mut interrupt = signal(SignalKind::interrupt())?;
+    let mut terminate = signal(SignalKind::terminate())?;
+    let options = settings.database("realterms database start", false)?;
+    let database = Database::open(&options).await?;
+    let address = database.address().context("the cluster is private")?;
+    say(format!("connect   {}", connection_string(address)));
+    say("running until interrupted");
+    tokio::select! {
+        _ = interrupt.recv() => {}
+        _ = terminate.recv() => {}
+    }
+    database.close().await;
+    say("stopped");
+    Ok(())
+}
+
+fn stop(settings: &Settings) -> anyhow::Result<()> {
+    only_private(settings)?;
+    let folder = settings.cluster("realterms database stop")?.folder;
+    match cluster::stop(&folder)? {
+        Stopped::Holder(pid) => say(format!("stopped with process {pid}, which held it")),
+        Stopped::Leftover => say("stopped a server that nobody held"),
+        Stopped::Nothing => say("nothing was running"),
+    }
+    Ok(())
+}
+
+fn only_private(settings: &Settings) -> anyhow::Result<()> {
+    anyhow::ensure!(
+        settings.database_url.is_none(),
+        "--database-url (REALTERMS_DATABASE_URL) names a server that is not ours to start or stop"
+    );
+    Ok(())
+}
+
+fn connection_string(address: &Address) -> String {
+    format!(
+        "host={} port={} user={user} dbname={user}",
+        address.sockets.display(),
+        address.port,
+        user = cluster::SUPERUSER
+    )
+}
