@@ -1,8 +1,6 @@
 //! The one clock: everything else takes the time as a value.
 
-use chrono::{DateTime, Datelike, Utc};
-
-use crate::time::Date;
+use chrono::{DateTime, Utc};
 
 /// The present instant in UTC.
 #[must_use]
@@ -12,11 +10,4 @@ use crate::time::Date;
 )]
 pub fn now() -> DateTime<Utc> {
     Utc::now()
-}
-
-/// Today in UTC.
-#[must_use]
-pub fn today() -> Date {
-    let now = now();
-    Date::new(now.year(), now.month(), now.day()).expect("the clock shows a year between 1 and 9999")
 }

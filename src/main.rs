@@ -1,3 +1,7 @@
 //! The `realterms` program.
 
-fn main() {}
+use std::process::ExitCode;
+
+fn main() -> ExitCode {
+    realterms::cli::main()
+}

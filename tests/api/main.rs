@@ -1,3 +1,3 @@
 //! Tests through the real HTTP interface on a real Postgres.
 
-fn main() {}
+mod support;
