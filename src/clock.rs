@@ -1,6 +1,8 @@
 //! The one clock: everything else takes the time as a value.
 
-use chrono::{DateTime, Utc};
+use chrono::{DateTime, Datelike, Utc};
+
+use crate::time::Date;
 
 /// The present instant in UTC.
 #[must_use]
@@ -10,4 +12,12 @@ use chrono::{DateTime, Utc};
 )]
 pub fn now() -> DateTime<Utc> {
     Utc::now()
+}
+
+/// Today in UTC.
+#[must_use]
+pub fn today() -> Date {
+    let now = now();
+    Date::new(now.year(), now.month(), now.day())
+        .expect("the clock shows a year between 1 and 9999")
 }
