@@ -1,6 +1,6 @@
 //! Counter-based random draws.
 //!
-//! Every draw is a function of a seed, a stream and its place in the stream (ChaCha with 12 rounds:
+//! Every draw is a function of a seed, a stream and its place in the stream (`ChaCha` with 12 rounds:
 //! the seed is the key, the stream the nonce, the place the counter). A replication that takes its
 //! own number as its stream therefore draws the same numbers whatever the number of threads and in
 //! whatever order replications run. Logarithm and cosine come from `libm`, not from the platform.
@@ -69,7 +69,7 @@ mod tests {
         assert_ne!(normals(7, 3, 50), normals(8, 3, 50));
     }
 
-    /// Block 0 of ChaCha12 with a zero key and nonce begins `9b f4 9a 6a 07 55 f9 53` (test vector
+    /// Block 0 of `ChaCha12` with a zero key and nonce begins `9b f4 9a 6a 07 55 f9 53` (test vector
     /// TC1 of draft-strombergson-chacha-test-vectors-01).
     #[test]
     fn the_generator_is_chacha12() {
