@@ -36,6 +36,7 @@ pub(super) fn all(paths: &Paths) -> Vec<RawFile> {
         constants: [
             ("area", HOME),
             ("frequency", "Q"),
+            ("currency", HOME_MONEY),
             ("own_currency", HOME_MONEY),
         ]
         .iter()
@@ -164,6 +165,7 @@ pub(super) fn mislabelled(paths: &Paths) -> RawFile {
             ("area", HOME),
             ("measure", "exports"),
             ("frequency", "Q"),
+            ("currency", HOME_MONEY),
             ("own_currency", HOME_MONEY),
             ("unit_multiplier", "6"),
             ("prices", "current"),
@@ -225,10 +227,10 @@ fn exchange_rates(paths: &Paths) -> String {
 }
 
 fn partners_income(paths: &Paths) -> String {
-    let mut body = "area,own_currency,period,value\n".to_owned();
+    let mut body = "area,currency,own_currency,period,value\n".to_owned();
     for (partner, incomes) in PARTNERS.iter().zip(&paths.partner_income) {
         for (year, income) in (FIRST_YEAR..).zip(incomes) {
-            let place = [partner.area, partner.money];
+            let place = [partner.area, partner.money, partner.money];
             line(&mut body, &place, &year.to_string(), *income, 1, "");
         }
     }
@@ -236,10 +238,10 @@ fn partners_income(paths: &Paths) -> String {
 }
 
 fn partners_prices(paths: &Paths) -> String {
-    let mut body = "area,own_currency,period,value\n".to_owned();
+    let mut body = "area,currency,own_currency,period,value\n".to_owned();
     for (partner, prices) in PARTNERS.iter().zip(&paths.partner_price) {
         for (t, price) in prices.iter().enumerate() {
-            let place = [partner.area, partner.money];
+            let place = [partner.area, partner.money, partner.money];
             line(&mut body, &place, &quarter(t), 100.0 * price, 2, "");
         }
     }
