@@ -41,11 +41,7 @@ impl Client {
     }
 
     /// Sends a file of raw data.
-    pub(super) async fn upload(
-        &self,
-        query: &[(&str, &str)],
-        csv: &str,
-    ) -> anyhow::Result<Value> {
+    pub(super) async fn upload(&self, query: &[(&str, &str)], csv: &str) -> anyhow::Result<Value> {
         let path = "/v1/uploads";
         let request = self
             .http

@@ -59,7 +59,11 @@ pub async fn walk(base: &str, out: &mut dyn Write) -> anyhow::Result<Walked> {
     let prepared = client
         .json(Method::POST, &format!("{path}/runs"), None)
         .await?;
-    writeln!(out, "  prepared  {} series", list(&prepared, "/outputs").len())?;
+    writeln!(
+        out,
+        "  prepared  {} series",
+        list(&prepared, "/outputs").len()
+    )?;
 
     let path = format!("/v1/studies/{NAME}");
     client.json(Method::PUT, &path, Some(STUDY)).await?;
@@ -79,10 +83,22 @@ pub async fn walk(base: &str, out: &mut dyn Write) -> anyhow::Result<Walked> {
 /// `out` that cannot be written.
 pub fn look_further(base: &str, run: u64, out: &mut dyn Write) -> std::io::Result<()> {
     let lines = [
-        ("the prepared series", format!("/v1/series/A.{HOME}.exports_real/observations?growth=log")),
-        ("down to upload and line", format!("/v1/series/A.{HOME}.exports_real/lineage")),
-        ("what was published when", format!("/v1/series/Q.{HOME}.exports/vintages")),
-        ("the run, every number of it", format!("/v1/studies/{NAME}/runs/{run}")),
+        (
+            "the prepared series",
+            format!("/v1/series/A.{HOME}.exports_real/observations?growth=log"),
+        ),
+        (
+            "down to upload and line",
+            format!("/v1/series/A.{HOME}.exports_real/lineage"),
+        ),
+        (
+            "what was published when",
+            format!("/v1/series/Q.{HOME}.exports/vintages"),
+        ),
+        (
+            "the run, every number of it",
+            format!("/v1/studies/{NAME}/runs/{run}"),
+        ),
     ];
     writeln!(out, "To look further:")?;
     for (what, path) in lines {
@@ -125,7 +141,11 @@ async fn held_and_withdrawn(
     let answer = send(client, file).await?;
     let id = number(&answer, "/id")?;
     let state = answer["state"].as_str().unwrap_or("in no known state");
-    writeln!(out, "  {state:<9} {:<24} not served, feeding nothing, because:", file.name)?;
+    writeln!(
+        out,
+        "  {state:<9} {:<24} not served, feeding nothing, because:",
+        file.name
+    )?;
     for finding in list(&answer, "/report/findings") {
         let text = |field: &str| finding[field].as_str().unwrap_or("").to_owned();
         if text("severity") == "error" {
@@ -136,7 +156,11 @@ async fn held_and_withdrawn(
     let path = format!("/v1/uploads/{id}");
     let withdrawn = client.json(Method::DELETE, &path, None).await?;
     let state = withdrawn["state"].as_str().unwrap_or("withdrawn");
-    writeln!(out, "  {state} {:<24} exports stay as they were published", file.name)?;
+    writeln!(
+        out,
+        "  {state} {:<24} exports stay as they were published",
+        file.name
+    )?;
     Ok(())
 }
 

@@ -24,7 +24,8 @@ pub(crate) fn get(
     connections: usize,
     time: Duration,
 ) -> anyhow::Result<Load> {
-    let request = format!("GET {path} HTTP/1.1\r\nHost: {address}\r\nAccept: application/json\r\n\r\n");
+    let request =
+        format!("GET {path} HTTP/1.1\r\nHost: {address}\r\nAccept: application/json\r\n\r\n");
     let began = Instant::now();
     let workers: Vec<_> = (0..connections)
         .map(|_| {
@@ -39,7 +40,10 @@ pub(crate) fn get(
     }
     let elapsed = began.elapsed().as_secs_f64();
     times.sort_by(f64::total_cmp);
-    let last = times.len().checked_sub(1).context("no request was answered")?;
+    let last = times
+        .len()
+        .checked_sub(1)
+        .context("no request was answered")?;
     Ok(Load {
         rate: times.len() as f64 / elapsed,
         half: times[last / 2],
@@ -70,7 +74,10 @@ fn read_answer(stream: &mut TcpStream, buffer: &mut [u8]) -> anyhow::Result<()> 
     while whole.is_none_or(|n| filled < n) {
         let n = stream.read(&mut buffer[filled..])?;
         if n == 0 {
-            bail!("the service closed a connection, or an answer is longer than {}", buffer.len());
+            bail!(
+                "the service closed a connection, or an answer is longer than {}",
+                buffer.len()
+            );
         }
         filled += n;
         if whole.is_none()
@@ -78,13 +85,19 @@ fn read_answer(stream: &mut TcpStream, buffer: &mut [u8]) -> anyhow::Result<()> 
         {
             let head = std::str::from_utf8(&buffer[..end])?;
             if !head.starts_with("HTTP/1.1 200 ") {
-                bail!("not an answer of status 200: {}", head.lines().next().unwrap_or(""));
+                bail!(
+                    "not an answer of status 200: {}",
+                    head.lines().next().unwrap_or("")
+                );
             }
             let length = head.lines().find_map(|line| {
                 let (name, value) = line.split_once(':')?;
-                name.eq_ignore_ascii_case("content-length").then(|| value.trim())
+                name.eq_ignore_ascii_case("content-length")
+                    .then(|| value.trim())
             });
-            let length: usize = length.context("an answer without Content-Length")?.parse()?;
+            let length: usize = length
+                .context("an answer without Content-Length")?
+                .parse()?;
             whole = Some(end + 4 + length);
         }
     }

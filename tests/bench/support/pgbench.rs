@@ -10,7 +10,11 @@ use super::service::Database;
 /// Finds `pgbench` on the PATH or where distributions keep the server's programs.
 pub(crate) fn find() -> anyhow::Result<PathBuf> {
     let path = std::env::var_os("PATH").unwrap_or_default();
-    let usual = ["/usr/lib/postgresql", "/usr/pgsql", "/opt/homebrew/opt/postgresql"];
+    let usual = [
+        "/usr/lib/postgresql",
+        "/usr/pgsql",
+        "/opt/homebrew/opt/postgresql",
+    ];
     let mut folders: Vec<PathBuf> = std::env::split_paths(&path).collect();
     folders.push(PathBuf::from("/usr/pgsql/bin"));
     for folder in usual {
@@ -55,6 +59,9 @@ pub(crate) fn run(
         .find_map(|line| line.strip_prefix("tps = ")?.split(' ').next()?.parse().ok());
     match rate {
         Some(rate) if output.status.success() => Ok(rate),
-        _ => bail!("pgbench failed: {}", String::from_utf8_lossy(&output.stderr)),
+        _ => bail!(
+            "pgbench failed: {}",
+            String::from_utf8_lossy(&output.stderr)
+        ),
     }
 }
