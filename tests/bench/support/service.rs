@@ -31,11 +31,17 @@ impl Service {
     pub(crate) fn start() -> anyhow::Result<Self> {
         let folder = std::env::temp_dir().join(format!("realterms-bench-{}", std::process::id()));
         let address = TcpListener::bind((Ipv4Addr::LOCALHOST, 0))?.local_addr()?;
-        let process = Command::new(env!("CARGO_BIN_EXE_realterms"))
+        let mut command = Command::new(env!("CARGO_BIN_EXE_realterms"));
+        for (name, _) in std::env::vars_os() {
+            // Shipped settings, whatever the shell of whoever measures has set.
+            if name.to_string_lossy().starts_with("REALTERMS_") {
+                command.env_remove(name);
+            }
+        }
+        let process = command
             .arg("serve")
-            .arg(format!("--address={address}"))
+            .arg(format!("--listen={address}"))
             .arg(format!("--data-folder={}", folder.display()))
-            .env_remove("REALTERMS_DATABASE_URL")
             .stdin(Stdio::null())
             .stdout(Stdio::null())
             .stderr(fs::File::create(folder.with_extension("log"))?)
