@@ -4,6 +4,7 @@
 //! numbers). The algebra checks units on every operation: a clash is an error that names both
 //! sides, never a number.
 
+pub mod algebra;
 mod currency;
 mod fragment;
 mod key;
@@ -60,6 +61,40 @@ impl Series {
             values,
             status,
         }
+    }
+
+    /// A series with given statuses. A value of missing status becomes NaN, a value that is not
+    /// finite under a present status becomes [`Status::Missing`], −0 becomes 0.
+    #[must_use]
+    pub fn with_status(
+        unit: Unit,
+        start: Period,
+        mut values: Vec<f64>,
+        mut status: Vec<Status>,
+    ) -> Self {
+        status.resize(values.len(), Status::Missing);
+        for (value, status) in values.iter_mut().zip(&mut status) {
+            if status.is_missing() {
+                *value = f64::NAN;
+            } else if value.is_finite() {
+                *value += 0.0;
+            } else {
+                *value = f64::NAN;
+                *status = Status::Missing;
+            }
+        }
+        Self {
+            unit,
+            start,
+            values,
+            status,
+        }
+    }
+
+    /// The last period; `None` where the series is empty.
+    #[must_use]
+    pub fn end(&self) -> Option<Period> {
+        self.period(self.len().checked_sub(1)?)
     }
 
     /// The frequency.

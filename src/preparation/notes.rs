@@ -1,0 +1,171 @@
+//! What an evaluation is worth telling: coverage, link factors, periods left off. Thresholds are
+//! those of METHODS section 6 (common practice).
+
+use crate::finding::Finding;
+use crate::series::algebra::{Aggregated, Effective, Incomplete, Linked};
+use crate::series::{IndexKind, Quantity, RateTiming, Series, Timing};
+
+/// Factor and spread of a link; a spread above 1 % is told, above 5 % an error.
+pub(super) fn of_link(linked: &Linked) -> Vec<Finding> {
+    let (first, last) = linked.overlap;
+    let spread = format!("{:.2} %", 100.0 * linked.spread);
+    let mut notes = vec![
+        Finding::notice(
+            "link_factor",
+            format!(
+                "linked on {} periods, {first} to {last}: factor {}, spread over the overlap {spread}",
+                linked.periods, linked.factor
+            ),
+        )
+        .found(linked.factor.to_string()),
+    ];
+    if linked.spread > 0.01 {
+        let message = format!("the link factor varies by {spread} over the overlap");
+        let finding = if linked.spread > 0.05 {
+            Finding::error("link_spread", message)
+        } else {
+            Finding::notice("link_spread", message)
+        };
+        notes.push(
+            finding
+                .found(spread)
+                .expected("at most 1 %")
+                .remedy("Link on a stated period, or look into how the two parts differ."),
+        );
+    }
+    notes
+}
+
+/// Amounts without a price, and unit values as deflators.
+pub(super) fn of_deflating(nominal: &Series, index: &Series, result: &Series) -> Vec<Finding> {
+    let mut notes = unmatched("no_matching_price", "price", nominal, result);
+    if let Quantity::Index {
+        kind: IndexKind::UnitValue,
+        ..
+    } = index.unit.quantity
+    {
+        notes.push(Finding::notice(
+            "unit_value_deflator",
+            "deflated by unit values, which move with the mix of goods as well as with prices",
+        ));
+    }
+    notes
+}
+
+/// Amounts without a rate, and rates of another timing than the amount's.
+pub(super) fn of_converting(
+    amount: &Series,
+    rates: &Series,
+    result: &Series,
+    fixed: bool,
+) -> Vec<Finding> {
+    let mut notes = unmatched("no_matching_rate", "exchange rate", amount, result);
+    if let Quantity::Rate { rate_timing, .. } = rates.unit.quantity
+        && (rate_timing == RateTiming::End) != (amount.unit.timing == Timing::Stock)
+        && !fixed
+    {
+        notes.push(
+            Finding::notice(
+                "rate_timing",
+                "flows take rates averaged over the period, stocks those at its end; here it is the other way",
+            )
+            .found(format!("{}; {}", amount.unit, rates.unit))
+            .remedy("Take the rate of the matching timing where it is held."),
+        );
+    }
+    notes
+}
+
+fn unmatched(code: &str, what: &str, amount: &Series, result: &Series) -> Vec<Finding> {
+    let present = |series: &Series| series.values.iter().filter(|v| v.is_finite()).count();
+    let lost = present(amount) - present(result);
+    let first = (0..amount.len())
+        .find(|i| amount.values[*i].is_finite() && !result.values[*i].is_finite())
+        .and_then(|i| amount.period(i));
+    first
+        .map(|period| {
+            Finding::notice(
+                code,
+                format!("{lost} amounts have no {what} in their period and are missing"),
+            )
+            .at_period(period)
+            .found(lost.to_string())
+        })
+        .into_iter()
+        .collect()
+}
+
+/// Periods left off, missing, or resting on part of their sub-periods.
+pub(super) fn of_aggregating(aggregated: &Aggregated) -> Vec<Finding> {
+    [
+        (
+            "incomplete_periods_dropped",
+            "left off",
+            &aggregated.dropped,
+        ),
+        ("incomplete_periods_missing", "missing", &aggregated.missing),
+        (
+            "partial_periods",
+            "rest on part of their sub-periods",
+            &aggregated.partial,
+        ),
+    ]
+    .into_iter()
+    .filter_map(|(code, what, periods)| {
+        let first = periods.first()?;
+        Some(
+            Finding::notice(
+                code,
+                format!(
+                    "{} incomplete periods {what}: {}",
+                    periods.len(),
+                    shown(periods)
+                ),
+            )
+            .at_period(first.period),
+        )
+    })
+    .collect()
+}
+
+fn shown(periods: &[Incomplete]) -> String {
+    let mut text = periods
+        .iter()
+        .take(5)
+        .map(|p| format!("{} ({} of {})", p.period, p.held, p.of))
+        .collect::<Vec<_>>()
+        .join(", ");
+    if periods.len() > 5 {
+        text.push_str(", …");
+    }
+    text
+}
+
+/// Lowest coverage of the weights; below 80 % is told as such, below 60 % an error.
+pub(super) fn of_weights(effective: &Effective, partners: usize) -> Vec<Finding> {
+    let coverage = &effective.coverage;
+    let Some(lowest) = coverage.iter().min_by(|a, b| a.share.total_cmp(&b.share)) else {
+        return Vec::new();
+    };
+    let mean = coverage.iter().map(|c| c.share).sum::<f64>() / coverage.len() as f64;
+    let share = format!("{:.1} %", 100.0 * lowest.share);
+    let message = format!(
+        "weights of {partners} partners: on average {:.1} % covered, least in {} with {share} ({} partners)",
+        100.0 * mean,
+        lowest.period,
+        lowest.partners
+    );
+    let finding = if lowest.share < 0.6 {
+        Finding::error("weight_coverage", message)
+    } else {
+        Finding::notice("weight_coverage", message)
+    };
+    let finding = finding.at_period(lowest.period).found(share);
+    vec![if lowest.share < 0.8 {
+        finding
+            .expected("at least 80 %")
+            .remedy("Send the missing incomes, prices or weights, or name other partners.")
+    } else {
+        finding
+    }]
+}
