@@ -60,9 +60,12 @@ impl<'de> Deserialize<'de> for CurrencyCode {
 /// Whether ISO 4217 lists the code, now or among withdrawn currencies.
 #[must_use]
 pub fn is_iso_4217(code: CurrencyCode) -> bool {
-    ISO_4217
-        .split_ascii_whitespace()
-        .any(|c| c == code.as_str())
+    iso_4217().any(|c| c == code.as_str())
+}
+
+/// Every code that ISO 4217 lists, now or among withdrawn currencies.
+pub fn iso_4217() -> impl Iterator<Item = &'static str> + Clone {
+    ISO_4217.split_ascii_whitespace()
 }
 
 /// Codes of ISO 4217 lists one (current) and three (withdrawn).

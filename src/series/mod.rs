@@ -11,7 +11,7 @@ mod key;
 mod status;
 mod unit;
 
-pub use currency::{CurrencyCode, CurrencyError, is_iso_4217};
+pub use currency::{CurrencyCode, CurrencyError, is_iso_4217, iso_4217};
 pub use fragment::{Duplicate, Fragment, Piece, same};
 pub use key::{KeyError, SeriesKey};
 pub use status::Status;

@@ -1,0 +1,301 @@
+//! From descriptive cells to the identity and unit of a series.
+
+use super::column::Column;
+use super::kind::Kind;
+use super::measure::Form;
+use super::number;
+use super::settings::Context;
+use crate::finding::Finding;
+use crate::series::{
+    Adjustment, CurrencyCode, IndexKind, Prices, Quantity, RateTiming, RateType, Timing, Unit,
+};
+use crate::time::{Frequency, Period};
+
+/// Descriptive cells of a row with constants filled in, by column; empty where not given.
+pub(super) struct Texts(pub [String; Column::COUNT]);
+
+impl Texts {
+    fn get(&self, column: Column) -> &str {
+        &self.0[column as usize]
+    }
+
+    fn currency(&self, column: Column) -> Option<CurrencyCode> {
+        CurrencyCode::parse(self.get(column)).ok()
+    }
+}
+
+/// What the descriptive cells of a row say.
+#[derive(Clone, Debug)]
+pub(super) struct Described {
+    /// Places 1 to 7 of the series key.
+    pub places: [String; 7],
+    pub unit: Unit,
+    /// Power of ten that values are multiplied by.
+    pub multiplier: i32,
+    /// The frequency, where stated.
+    pub frequency: Option<Frequency>,
+    pub bound: Bound,
+    /// What is to be reported once for the area.
+    pub notes: Vec<Finding>,
+}
+
+/// Values that a measure may take.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) enum Bound {
+    Any,
+    NotNegative,
+    Positive,
+}
+
+/// Reads the cells of one kind; each is checked by itself first, then against the others.
+pub(super) fn describe(
+    kind: &Kind,
+    measures: &[&'static str],
+    texts: &Texts,
+    context: &Context,
+) -> Result<Described, Box<Finding>> {
+    for (column, required) in kind.columns {
+        let text = texts.get(*column);
+        if !text.is_empty() {
+            column.check(text, measures, Some(context))?;
+        } else if *required && column.may_be_constant() {
+            let name = column.name();
+            return Err(Box::new(
+                Finding::error("empty_cell", format!("{name} is required and empty"))
+                    .at_column(name)
+                    .expected(column.spec().description),
+            ));
+        }
+    }
+    let wanted = texts.get(Column::Measure);
+    // Only a kind of one measure lets the column be absent.
+    let measure = kind.measures.iter().find(|m| m.name == wanted);
+    let measure = measure.unwrap_or(&kind.measures[0]);
+
+    let mut notes = Vec::new();
+    let own = own_money(texts, context, &mut notes);
+    let currency = texts.currency(Column::Currency);
+    let prices = prices(measure.form, measure.name, texts)?;
+    let quantity = match measure.form {
+        Form::Nominal | Form::Real => match currency {
+            Some(currency) => Quantity::Money { currency },
+            None => return Err(not_applicable(Column::Currency, "money needs a currency")),
+        },
+        Form::Index(implied) => index(implied, texts, currency, own)?,
+        Form::Rate => rate(texts, currency, own)?,
+        Form::Weight | Form::Ratio => Quantity::Ratio,
+    };
+    let place = match (measure.form, currency) {
+        (Form::Rate, Some(foreign)) => foreign.to_string(),
+        (_, Some(c)) if Some(c) != own => {
+            if own.is_none() {
+                notes.push(own_money_unknown(texts.get(Column::Area), c));
+            }
+            c.to_string()
+        }
+        _ => String::new(),
+    };
+    let code = match texts.get(Column::Adjustment) {
+        "N" => "",
+        code => code,
+    };
+    let timing = match (measure.form, texts.get(Column::Flow)) {
+        (Form::Nominal | Form::Real, "annual_rate") => Timing::FlowAnnualRate,
+        (Form::Nominal | Form::Real, "year_to_date") => Timing::FlowYearToDate,
+        (Form::Nominal | Form::Real, _) => Timing::Flow,
+        (Form::Index(_) | Form::Rate | Form::Weight | Form::Ratio, _) => Timing::Average,
+    };
+    Ok(Described {
+        places: [
+            texts.get(Column::Area).to_owned(),
+            measure.name.to_owned(),
+            texts.get(Column::Partner).to_owned(),
+            texts.get(Column::Product).to_owned(),
+            place,
+            texts.get(Column::Source).to_owned(),
+            code.to_owned(),
+        ],
+        unit: Unit {
+            quantity,
+            timing,
+            prices,
+            adjustment: match code {
+                // W removes working-day effects and leaves the seasons in.
+                "" | "W" => Adjustment::Raw,
+                _ => Adjustment::SeasonallyAdjusted("source".to_owned()),
+            },
+        },
+        multiplier: texts.get(Column::UnitMultiplier).parse().unwrap_or(0),
+        frequency: Frequency::from_code(texts.get(Column::Frequency)),
+        bound: match measure.form {
+            Form::Nominal | Form::Real | Form::Weight => Bound::NotNegative,
+            Form::Index(_) | Form::Rate => Bound::Positive,
+            Form::Ratio => Bound::Any,
+        },
+        notes,
+    })
+}
+
+/// The area's own money: as the row states it, else as it is known.
+fn own_money(texts: &Texts, context: &Context, notes: &mut Vec<Finding>) -> Option<CurrencyCode> {
+    let area = texts.get(Column::Area);
+    let known = context.own_money.get(area).copied();
+    let stated = texts.currency(Column::OwnCurrency);
+    if let (Some(known), Some(stated)) = (known, stated)
+        && known != stated
+    {
+        notes.push(
+            Finding::error(
+                "currency_contradicted",
+                format!(
+                    "the file says that the own money of {area} is {stated}; it is known as {known}"
+                ),
+            )
+            .at_column(Column::OwnCurrency.name())
+            .found(stated.to_string())
+            .expected(known.to_string())
+            .remedy(format!(
+                "correct own_currency, or accept the upload if {area} has changed its money"
+            )),
+        );
+    }
+    stated.or(known)
+}
+
+fn own_money_unknown(area: &str, currency: CurrencyCode) -> Finding {
+    Finding::notice(
+        "own_money_unknown",
+        format!("the own money of {area} is not known, so that {currency} stands in its series keys"),
+    )
+    .at_column(Column::OwnCurrency.name())
+    .remedy(format!(
+        "if {currency} is the own money of {area}, withdraw the upload and state own_currency={currency}"
+    ))
+}
+
+fn not_applicable(column: Column, why: &str) -> Box<Finding> {
+    Box::new(
+        Finding::error(
+            "not_applicable",
+            format!("{} does not fit: {why}", column.name()),
+        )
+        .at_column(column.name()),
+    )
+}
+
+/// A period or year in the one notation that units keep.
+fn reference(text: &str) -> Option<String> {
+    text.parse::<Period>().ok().map(|p| p.to_string())
+}
+
+fn prices(form: Form, measure: &str, texts: &Texts) -> Result<Prices, Box<Finding>> {
+    let basis = texts.get(Column::Prices);
+    let price_reference = reference(texts.get(Column::PriceReference));
+    let wrong = |expected: &str, remedy: String| {
+        Box::new(
+            Finding::error(
+                "wrong_prices",
+                format!("{measure} cannot stand at prices '{basis}'"),
+            )
+            .at_column(Column::Prices.name())
+            .found(basis)
+            .expected(expected)
+            .remedy(remedy),
+        )
+    };
+    let prices = match (form, basis) {
+        (Form::Nominal, "" | "current") => Prices::Current,
+        (Form::Nominal, _) => {
+            let remedy = format!("name the real measure, such as {measure}_real");
+            return Err(wrong("current", remedy));
+        }
+        (Form::Real, "constant") => return Ok(Prices::Constant { price_reference }),
+        (Form::Real, "chained") => return Ok(Prices::Chained { price_reference }),
+        (Form::Real, "previous_year") => Prices::PreviousYear,
+        (Form::Real, _) => {
+            let remedy = "state the price basis in the column or parameter prices".to_owned();
+            return Err(wrong("constant, chained or previous_year", remedy));
+        }
+        (Form::Index(_) | Form::Rate | Form::Weight | Form::Ratio, _) => Prices::None,
+    };
+    if price_reference.is_some() {
+        let why = "only constant and chained prices have a price reference";
+        return Err(not_applicable(Column::PriceReference, why));
+    }
+    Ok(prices)
+}
+
+fn index(
+    implied: IndexKind,
+    texts: &Texts,
+    currency: Option<CurrencyCode>,
+    own: Option<CurrencyCode>,
+) -> Result<Quantity, Box<Finding>> {
+    let kind = match texts.get(Column::IndexKind) {
+        "price" => IndexKind::Price,
+        "unit_value" => IndexKind::UnitValue,
+        "volume" => IndexKind::Volume,
+        "value" => IndexKind::Value,
+        _ => implied,
+    };
+    let currency = match (kind, currency) {
+        (IndexKind::Volume, Some(_)) => {
+            return Err(not_applicable(Column::Currency, "volumes have no currency"));
+        }
+        (IndexKind::Volume, None) => None,
+        (_, stated) => stated.or(own),
+    };
+    let reference_value = texts.get(Column::ReferenceValue);
+    Ok(Quantity::Index {
+        currency,
+        kind,
+        weights_year: texts.get(Column::WeightsYear).parse().ok(),
+        reference: reference(texts.get(Column::Reference)),
+        reference_value: number::parse(reference_value, 0, &mut String::new()).unwrap_or(100.0),
+    })
+}
+
+fn rate(
+    texts: &Texts,
+    currency: Option<CurrencyCode>,
+    own: Option<CurrencyCode>,
+) -> Result<Quantity, Box<Finding>> {
+    let area = texts.get(Column::Area);
+    let (Some(foreign), Some(own)) = (currency, own) else {
+        return Err(Box::new(
+            Finding::error(
+                "own_money_needed",
+                format!("the own money of {area} is not known"),
+            )
+            .at_column(Column::OwnCurrency.name())
+            .expected("the currency of the area")
+            .remedy("state it in the column or parameter own_currency"),
+        ));
+    };
+    if foreign == own {
+        return Err(Box::new(
+            Finding::error("same_currency", format!("{own} is the own money of {area}"))
+                .at_column(Column::Currency.name())
+                .found(foreign.to_string())
+                .expected("another currency than the area's own"),
+        ));
+    }
+    let (numerator, denominator) = match texts.get(Column::Quotation) {
+        "indirect" => (foreign, own),
+        _ => (own, foreign),
+    };
+    Ok(Quantity::Rate {
+        numerator,
+        denominator,
+        rate_type: match texts.get(Column::RateType) {
+            "commercial" => RateType::Commercial,
+            "parallel" => RateType::Parallel,
+            "transaction_weighted" => RateType::TransactionWeighted,
+            _ => RateType::Official,
+        },
+        rate_timing: match texts.get(Column::RateTiming) {
+            "end" => RateTiming::End,
+            _ => RateTiming::Average,
+        },
+    })
+}
