@@ -316,11 +316,11 @@ fn the_preparation_makes_what_plain_code_makes() {
     }
 }
 
-/// The example files of the README are the demo's files with every constant as a column.
+/// The files of the README's session are the demo's files with every constant as a column.
 #[test]
-fn the_example_files_are_the_demo_s_files_in_full() {
+fn the_session_s_files_are_the_demo_s_in_full() {
     let economy = economy(SEED);
-    let mut examples: BTreeMap<String, String> = BTreeMap::new();
+    let mut written: BTreeMap<String, String> = BTreeMap::new();
     for file in &economy.files {
         let name = match file.name {
             "trade_prices_2010.csv" => "price_index_2010",
@@ -349,7 +349,7 @@ fn the_example_files_are_the_demo_s_files_in_full() {
             ],
         };
         let columns = [columns, &["frequency", "period", "value"]].concat();
-        let example = examples
+        let text = written
             .entry(name.to_owned())
             .or_insert_with(|| columns.join(",") + "\n");
         let head: Vec<&str> = file.body.lines().next().unwrap().split(',').collect();
@@ -360,19 +360,11 @@ fn the_example_files_are_the_demo_s_files_in_full() {
                 let place = head.iter().position(|h| h == column);
                 place.map_or_else(|| constant.map_or("", |c| c.1), |i| cells[i])
             };
-            *example += &(columns.iter().map(cell).collect::<Vec<_>>().join(",") + "\n");
+            *text += &(columns.iter().map(cell).collect::<Vec<_>>().join(",") + "\n");
         }
     }
-    let sums = |name: &str, key: &str| years(&read(named(&economy, name))[key], 4, true);
-    let (exports, gdp) = (sums("trade.csv", "exports"), sums("accounts.csv", ""));
-    let mut ratio = "area,measure,unit_multiplier,frequency,period,value\n".to_owned();
-    for (year, (exports, gdp)) in (FIRST_YEAR..).zip(exports.iter().zip(gdp)) {
-        let share = 100.0 * exports / gdp;
-        ratio += &format!("{HOME},export_share_of_gdp,-2,A,{year},{share:.1}\n");
-    }
-    examples.insert("ratio".to_owned(), ratio);
-    let folder = concat!(env!("CARGO_MANIFEST_DIR"), "/fixtures/examples");
-    for (name, text) in examples {
+    let folder = concat!(env!("CARGO_MANIFEST_DIR"), "/fixtures/demo");
+    for (name, text) in written {
         let path = format!("{folder}/{name}.csv");
         let committed = std::fs::read_to_string(&path).unwrap_or_default();
         if committed != text {
