@@ -1,1 +1,11 @@
-//! The demonstration: invented areas whose raw files travel through the HTTP API.
+//! The demo: an invented economy, the files of its offices, and their way through the HTTP API.
+//!
+//! [`economy`] is a pure generator; [`walk`] knows the service only by its address.
+
+mod client;
+pub mod economy;
+mod files;
+mod walk;
+
+pub use files::RawFile;
+pub use walk::{NAME, PREPARATION, STUDY, Walked, look_further, walk};
