@@ -1,5 +1,6 @@
 //! Everything that touches Postgres; the only user of sqlx.
 
+pub mod archive;
 pub mod cluster;
 mod pool;
 
