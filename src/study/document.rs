@@ -1,0 +1,559 @@
+//! The document that says what a study estimates, named before it runs.
+
+use std::collections::BTreeSet;
+
+use serde::de::DeserializeOwned;
+use serde::{Deserialize, Serialize};
+use serde_json::{Map, Value};
+use utoipa::ToSchema;
+
+use crate::constraint::{Form, IntervalMethod};
+use crate::finding::Finding;
+use crate::series::SeriesKey;
+use crate::time::{Frequency, Period};
+
+/// What to estimate, from which series, and which result is the headline.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+#[serde(deny_unknown_fields)]
+pub struct Document {
+    /// Title of the report.
+    pub title: String,
+    /// The area whose growth is studied.
+    pub area: String,
+    /// Frequency of every series: A, S, Q or M.
+    #[schema(value_type = String)]
+    pub frequency: Frequency,
+    /// The result to be judged by, named before the run.
+    pub headline: Headline,
+    /// Laws of constrained growth to solve.
+    pub forms: Vec<Form>,
+    /// Estimators of the demand equations.
+    pub estimators: Vec<Estimator>,
+    /// Outer bounds of the sample; the series may allow less.
+    #[serde(default)]
+    pub sample: SampleBounds,
+    /// Home income (real GDP by default); its growth is the actual growth unless `actual` is given.
+    #[schema(value_type = String)]
+    pub activity: SeriesKey,
+    /// Series whose growth is the actual growth.
+    #[schema(value_type = Option<String>)]
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub actual: Option<SeriesKey>,
+    /// Demand for imports: a rise of its relative price Rm (home over import price) makes imports
+    /// cheaper.
+    pub import_demand: Demand,
+    /// Demand for exports: a rise of its relative price Rx (own over competitors' price) makes
+    /// exports dearer.
+    pub export_demand: Demand,
+    /// Export over import price.
+    #[schema(value_type = Option<String>)]
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub terms_of_trade: Option<SeriesKey>,
+    /// Covariance of coefficients behind tests and intervals; absent: classical in differences,
+    /// Newey–West in levels.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub covariance: Option<Covariance>,
+    /// Newey–West lags; absent: ⌊4 (n/100)^(2/9)⌋.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub lags: Option<u32>,
+    /// Whether Newey–West covariances are multiplied by n/(n − k); absent: yes.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub small_sample: Option<bool>,
+    /// Intervals for growth rates.
+    #[serde(default)]
+    pub interval: Interval,
+}
+
+/// The one result a study is judged by.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize, ToSchema)]
+#[serde(deny_unknown_fields)]
+pub struct Headline {
+    /// One of the document's forms.
+    pub form: Form,
+    /// One of the document's estimators.
+    pub estimator: Estimator,
+}
+
+/// How a demand equation is estimated.
+#[derive(
+    Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize, ToSchema,
+)]
+#[serde(rename_all = "snake_case")]
+pub enum Estimator {
+    /// Least squares on log levels, with a constant.
+    OlsLevels,
+    /// Least squares on log differences; the constant is autonomous growth.
+    OlsDifferences,
+}
+
+impl Estimator {
+    /// The name used in documents and results.
+    #[must_use]
+    pub fn code(self) -> &'static str {
+        match self {
+            Self::OlsLevels => "ols_levels",
+            Self::OlsDifferences => "ols_differences",
+        }
+    }
+}
+
+/// Outer bounds of a sample, both included.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize, Deserialize, ToSchema)]
+#[serde(deny_unknown_fields)]
+pub struct SampleBounds {
+    /// First period.
+    #[schema(value_type = Option<String>)]
+    #[serde(default)]
+    pub from: Option<Period>,
+    /// Last period.
+    #[schema(value_type = Option<String>)]
+    #[serde(default)]
+    pub to: Option<Period>,
+}
+
+/// The series of one demand equation.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize, ToSchema)]
+#[serde(deny_unknown_fields)]
+pub struct Demand {
+    /// Volume demanded: real imports or exports.
+    #[schema(value_type = String)]
+    pub volume: SeriesKey,
+    /// Activity of those who demand: home or foreign income.
+    #[schema(value_type = String)]
+    pub activity: SeriesKey,
+    /// Relative price; absent: none.
+    #[schema(value_type = Option<String>)]
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub relative_price: Option<SeriesKey>,
+}
+
+/// Kinds of covariance of coefficients.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize, ToSchema)]
+#[serde(rename_all = "snake_case")]
+pub enum Covariance {
+    /// Independent errors of one variance.
+    Classical,
+    /// Newey & West 1987, Bartlett weights.
+    NeweyWest,
+}
+
+/// Settings of the intervals for growth rates.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+#[serde(deny_unknown_fields)]
+pub struct Interval {
+    /// Fieller by default.
+    #[serde(default)]
+    pub method: IntervalMethod,
+    /// Coverage aimed at, 0.5 to 0.999; 0.95 by default.
+    #[serde(default = "default_level")]
+    pub level: f64,
+    /// Whether the two equations' coefficients covary.
+    #[serde(default)]
+    pub cross_covariance: CrossCovariance,
+}
+
+impl Default for Interval {
+    fn default() -> Self {
+        Self {
+            method: IntervalMethod::default(),
+            level: default_level(),
+            cross_covariance: CrossCovariance::default(),
+        }
+    }
+}
+
+fn default_level() -> f64 {
+    0.95
+}
+
+/// Covariance between the coefficients of the two equations.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize, Deserialize, ToSchema)]
+#[serde(rename_all = "snake_case")]
+pub enum CrossCovariance {
+    /// Estimated from both equations' scores on the common sample.
+    #[default]
+    Joint,
+    /// Set to zero.
+    Zero,
+}
+
+impl Document {
+    /// Reads a document. Every fault is a finding with a JSON pointer and what was expected there.
+    ///
+    /// # Errors
+    /// The findings, all of severity error: `invalid_json`, `unknown_field` (lists the known ones),
+    /// `missing_field`, `invalid_value`.
+    pub fn parse(text: &str) -> Result<Self, Vec<Finding>> {
+        let value: Value = serde_json::from_str(text).map_err(|e| {
+            let line = u64::try_from(e.line()).unwrap_or_default();
+            vec![
+                Finding::error("invalid_json", format!("The document is not JSON: {e}"))
+                    .at_line(line),
+            ]
+        })?;
+        let mut reader = Reader::default();
+        let document = reader.document(&value);
+        match document {
+            Some(document) if reader.findings.is_empty() => {
+                let findings = document.check();
+                if findings.is_empty() {
+                    Ok(document)
+                } else {
+                    Err(findings)
+                }
+            }
+            _ => Err(reader.findings),
+        }
+    }
+
+    /// Every series that the study reads, each once, in key order.
+    #[must_use]
+    pub fn inputs(&self) -> Vec<SeriesKey> {
+        let keys: BTreeSet<SeriesKey> = self.roles().into_iter().map(|r| r.key.clone()).collect();
+        keys.into_iter().collect()
+    }
+
+    /// The series with their places in the document and what they must be.
+    pub(super) fn roles(&self) -> Vec<Role<'_>> {
+        let mut roles = Vec::new();
+        let mut add = |pointer: &str, key, kind| {
+            roles.push(Role {
+                pointer: pointer.to_owned(),
+                key,
+                kind,
+            });
+        };
+        add("/activity", &self.activity, Kind::Volume);
+        if let Some(key) = &self.actual {
+            add("/actual", key, Kind::Volume);
+        }
+        for (pointer, demand) in [
+            ("/import_demand", &self.import_demand),
+            ("/export_demand", &self.export_demand),
+        ] {
+            add(&format!("{pointer}/volume"), &demand.volume, Kind::Volume);
+            add(
+                &format!("{pointer}/activity"),
+                &demand.activity,
+                Kind::Volume,
+            );
+            if let Some(key) = &demand.relative_price {
+                add(
+                    &format!("{pointer}/relative_price"),
+                    key,
+                    Kind::RelativePrice,
+                );
+            }
+        }
+        if let Some(key) = &self.terms_of_trade {
+            add("/terms_of_trade", key, Kind::RelativePrice);
+        }
+        roles
+    }
+
+    /// What single fields cannot show.
+    fn check(&self) -> Vec<Finding> {
+        let mut findings = Vec::new();
+        let mut fault = |pointer: &str, message: String| {
+            findings.push(Finding::error("invalid_value", message).at_pointer(pointer));
+        };
+        if self.frequency.periods_per_year().is_none() {
+            let message = format!(
+                "A study needs frequency A, S, Q or M, not {}",
+                self.frequency
+            );
+            fault("/frequency", message);
+        }
+        for role in self.roles() {
+            if role.key.frequency() != self.frequency {
+                let message = format!("{} is not of frequency {}", role.key, self.frequency);
+                fault(&role.pointer, message);
+            }
+        }
+        let bounds = [
+            ("/sample/from", self.sample.from),
+            ("/sample/to", self.sample.to),
+        ];
+        for (pointer, period) in bounds {
+            if let Some(p) = period.filter(|p| p.frequency() != self.frequency) {
+                fault(
+                    pointer,
+                    format!("{p} is not of frequency {}", self.frequency),
+                );
+            }
+        }
+        if let (Some(from), Some(to)) = (self.sample.from, self.sample.to)
+            && from >= to
+        {
+            fault(
+                "/sample/to",
+                format!("The sample ends at {to}, not after {from}"),
+            );
+        }
+        if !self.forms.contains(&self.headline.form) {
+            let form = self.headline.form.code();
+            fault("/headline/form", format!("{form} is not among the forms"));
+        }
+        if !self.estimators.contains(&self.headline.estimator) {
+            let estimator = self.headline.estimator.code();
+            fault(
+                "/headline/estimator",
+                format!("{estimator} is not among the estimators"),
+            );
+        }
+        let twice = |positions: Vec<bool>| positions.iter().position(|first| !first);
+        let forms = self.forms.iter().enumerate();
+        if let Some(i) = twice(forms.map(|(i, f)| !self.forms[..i].contains(f)).collect()) {
+            fault(
+                &format!("/forms/{i}"),
+                format!("{} stands twice", self.forms[i].code()),
+            );
+        }
+        let list = &self.estimators;
+        let first = |(i, e): (usize, &Estimator)| !list[..i].contains(e);
+        if let Some(i) = twice(list.iter().enumerate().map(first).collect()) {
+            fault(
+                &format!("/estimators/{i}"),
+                format!("{} stands twice", list[i].code()),
+            );
+        }
+        if !(0.5..=0.999).contains(&self.interval.level) {
+            let message = format!(
+                "The level must be 0.5 to 0.999, not {}",
+                self.interval.level
+            );
+            fault("/interval/level", message);
+        }
+        if self.covariance == Some(Covariance::Classical) && self.lags.is_some() {
+            fault(
+                "/lags",
+                "Lags apply to newey_west, not to classical".to_owned(),
+            );
+        }
+        findings
+    }
+}
+
+/// A series of a document, where it stands and what it must be.
+pub(super) struct Role<'a> {
+    pub(super) pointer: String,
+    pub(super) key: &'a SeriesKey,
+    pub(super) kind: Kind,
+}
+
+/// What a role asks of a series' unit.
+#[derive(Clone, Copy, PartialEq, Eq)]
+pub(super) enum Kind {
+    Volume,
+    RelativePrice,
+}
+
+/// Reads JSON objects field by field, so that every fault has its pointer.
+#[derive(Default)]
+struct Reader {
+    findings: Vec<Finding>,
+}
+
+impl Reader {
+    fn document(&mut self, value: &Value) -> Option<Document> {
+        let known = [
+            "title",
+            "area",
+            "frequency",
+            "headline",
+            "forms",
+            "estimators",
+            "sample",
+            "activity",
+            "actual",
+            "import_demand",
+            "export_demand",
+            "terms_of_trade",
+            "covariance",
+            "lags",
+            "small_sample",
+            "interval",
+        ];
+        let map = self.object(value, "", &known)?;
+        // Every field is read before any fault returns, so that all faults are reported at once.
+        let title = self.field(map, "", "title");
+        let area = self.field(map, "", "area");
+        let frequency = self.field(map, "", "frequency");
+        let headline = self.headline(map);
+        let forms = self.list(map, "forms");
+        let estimators = self.list(map, "estimators");
+        let sample = self.sample(map);
+        let activity = self.field(map, "", "activity");
+        let actual = self.field(map, "", "actual");
+        let import_demand = self.demand(map, "import_demand");
+        let export_demand = self.demand(map, "export_demand");
+        let terms_of_trade = self.field(map, "", "terms_of_trade");
+        let covariance = self.field(map, "", "covariance");
+        let lags = self.field(map, "", "lags");
+        let small_sample = self.field(map, "", "small_sample");
+        let interval = self.interval(map);
+        Some(Document {
+            title: title?,
+            area: area?,
+            frequency: frequency?,
+            headline: headline?,
+            forms: forms?,
+            estimators: estimators?,
+            sample: sample?,
+            activity: activity?,
+            actual: actual?,
+            import_demand: import_demand?,
+            export_demand: export_demand?,
+            terms_of_trade: terms_of_trade?,
+            covariance: covariance?,
+            lags: lags?,
+            small_sample: small_sample?,
+            interval: interval?,
+        })
+    }
+
+    fn headline(&mut self, map: &Map<String, Value>) -> Option<Headline> {
+        let map = self.part(map, "headline", &["form", "estimator"])?;
+        let form = self.field(map, "/headline", "form");
+        let estimator = self.field(map, "/headline", "estimator");
+        Some(Headline {
+            form: form?,
+            estimator: estimator?,
+        })
+    }
+
+    fn sample(&mut self, map: &Map<String, Value>) -> Option<SampleBounds> {
+        if map.get("sample").is_none_or(Value::is_null) {
+            return Some(SampleBounds::default());
+        }
+        let map = self.part(map, "sample", &["from", "to"])?;
+        let from = self.field(map, "/sample", "from");
+        let to = self.field(map, "/sample", "to");
+        Some(SampleBounds {
+            from: from?,
+            to: to?,
+        })
+    }
+
+    fn demand(&mut self, map: &Map<String, Value>, name: &str) -> Option<Demand> {
+        let map = self.part(map, name, &["volume", "activity", "relative_price"])?;
+        let pointer = format!("/{name}");
+        let volume = self.field(map, &pointer, "volume");
+        let activity = self.field(map, &pointer, "activity");
+        let relative_price = self.field(map, &pointer, "relative_price");
+        Some(Demand {
+            volume: volume?,
+            activity: activity?,
+            relative_price: relative_price?,
+        })
+    }
+
+    fn interval(&mut self, map: &Map<String, Value>) -> Option<Interval> {
+        if map.get("interval").is_none_or(Value::is_null) {
+            return Some(Interval::default());
+        }
+        let map = self.part(map, "interval", &["method", "level", "cross_covariance"])?;
+        let method = self.field::<Option<IntervalMethod>>(map, "/interval", "method");
+        let level = self.field::<Option<f64>>(map, "/interval", "level");
+        let cross = self.field::<Option<CrossCovariance>>(map, "/interval", "cross_covariance");
+        Some(Interval {
+            method: method?.unwrap_or_default(),
+            level: level?.unwrap_or_else(default_level),
+            cross_covariance: cross?.unwrap_or_default(),
+        })
+    }
+
+    /// A list that holds at least one element.
+    fn list<T: DeserializeOwned>(
+        &mut self,
+        map: &Map<String, Value>,
+        name: &str,
+    ) -> Option<Vec<T>> {
+        let list: Vec<Value> = self.field(map, "", name)?;
+        if list.is_empty() {
+            let message = format!("{name} is empty");
+            let finding = Finding::error("invalid_value", message).at_pointer(format!("/{name}"));
+            self.findings.push(finding);
+            return None;
+        }
+        let items: Vec<Option<T>> = list
+            .iter()
+            .enumerate()
+            .map(|(i, v)| self.value(v, &format!("/{name}/{i}")))
+            .collect();
+        items.into_iter().collect()
+    }
+
+    /// An object inside the document.
+    fn part<'a>(
+        &mut self,
+        map: &'a Map<String, Value>,
+        name: &str,
+        known: &[&str],
+    ) -> Option<&'a Map<String, Value>> {
+        let Some(value) = map.get(name) else {
+            self.missing(&format!("/{name}"), name);
+            return None;
+        };
+        self.object(value, &format!("/{name}"), known)
+    }
+
+    fn object<'a>(
+        &mut self,
+        value: &'a Value,
+        pointer: &str,
+        known: &[&str],
+    ) -> Option<&'a Map<String, Value>> {
+        let Some(map) = value.as_object() else {
+            let finding = Finding::error("invalid_value", "An object is expected here")
+                .at_pointer(pointer)
+                .expected(format!("an object with {}", known.join(", ")));
+            self.findings.push(finding);
+            return None;
+        };
+        for name in map.keys().filter(|name| !known.contains(&name.as_str())) {
+            let escaped = name.replace('~', "~0").replace('/', "~1");
+            let finding = Finding::error("unknown_field", format!("There is no field '{name}'"))
+                .at_pointer(format!("{pointer}/{escaped}"))
+                .found(name.clone())
+                .expected(format!("one of {}", known.join(", ")));
+            self.findings.push(finding);
+        }
+        Some(map)
+    }
+
+    /// A field; an absent one reads as null, which optional types take.
+    fn field<T: DeserializeOwned>(
+        &mut self,
+        map: &Map<String, Value>,
+        pointer: &str,
+        name: &str,
+    ) -> Option<T> {
+        let pointer = format!("{pointer}/{name}");
+        match map.get(name) {
+            Some(value) => self.value(value, &pointer),
+            None => serde_json::from_value(Value::Null).ok().or_else(|| {
+                self.missing(&pointer, name);
+                None
+            }),
+        }
+    }
+
+    fn value<T: DeserializeOwned>(&mut self, value: &Value, pointer: &str) -> Option<T> {
+        match serde_json::from_value(value.clone()) {
+            Ok(value) => Some(value),
+            Err(error) => {
+                let finding = Finding::error("invalid_value", error.to_string())
+                    .at_pointer(pointer)
+                    .found(value.to_string());
+                self.findings.push(finding);
+                None
+            }
+        }
+    }
+
+    fn missing(&mut self, pointer: &str, name: &str) {
+        let finding = Finding::error("missing_field", format!("The field '{name}' is required"));
+        self.findings.push(finding.at_pointer(pointer));
+    }
+}

@@ -1,0 +1,258 @@
+//! The result of a study.
+//!
+//! Growth rates are 100 × log growth per year, elasticities plain numbers. A number that does not
+//! exist or may not be shown is null.
+
+use serde::{Deserialize, Serialize};
+use utoipa::ToSchema;
+
+use super::document::{Covariance, CrossCovariance, Estimator, Headline};
+use crate::constraint::{Form, IntervalMethod, Region};
+use crate::finding::Finding;
+
+/// Everything a study found.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct Outcome {
+    /// Version of the method; results of one version are comparable.
+    pub method_version: String,
+    /// Title of the study.
+    pub title: String,
+    /// The area studied.
+    pub area: String,
+    /// The result named in advance.
+    pub headline: Headline,
+    /// Always `log_percent`: 100 × log growth.
+    pub growth_unit: String,
+    /// Always `year`: growth rates are per year whatever the frequency.
+    pub growth_per: String,
+    /// The sample of the levels; differences begin a period later.
+    pub sample: Sample,
+    /// Average growth of home activity, or of the series named as actual.
+    pub actual_growth: f64,
+    /// Average growth rates that the forms use.
+    pub growth: MeanGrowth,
+    /// How the intervals were made.
+    pub interval: IntervalSettings,
+    /// One a requested estimator, in the order of the document.
+    pub estimators: Vec<EstimatorResult>,
+    /// What concerns the whole study.
+    pub findings: Vec<Finding>,
+    /// What a reader must keep in mind.
+    pub caution: String,
+}
+
+impl Outcome {
+    /// The result named in advance.
+    #[must_use]
+    pub fn headline_form(&self) -> Option<&FormResult> {
+        let estimator = self.headline.estimator;
+        let result = self.estimators.iter().find(|e| e.estimator == estimator)?;
+        result.forms.iter().find(|f| f.form == self.headline.form)
+    }
+}
+
+/// Periods used.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize, ToSchema)]
+pub struct Sample {
+    /// Frequency code.
+    pub frequency: String,
+    /// First period.
+    pub from: String,
+    /// Last period.
+    pub to: String,
+    /// Number of periods.
+    pub observations: u32,
+}
+
+/// Average growth over the sample, log per cent a year.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct MeanGrowth {
+    /// Real exports.
+    pub exports: f64,
+    /// Real imports.
+    pub imports: f64,
+    /// Activity in import demand.
+    pub home_activity: f64,
+    /// Activity in export demand.
+    pub foreign_income: f64,
+    /// Export over import price.
+    pub terms_of_trade: Option<f64>,
+    /// Home over import price.
+    pub import_relative_price: Option<f64>,
+    /// Own export over competitors' price.
+    pub export_relative_price: Option<f64>,
+}
+
+/// How intervals were made.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct IntervalSettings {
+    /// Method.
+    pub method: IntervalMethod,
+    /// Coverage aimed at.
+    pub level: f64,
+    /// Covariance across equations.
+    pub cross_covariance: CrossCovariance,
+}
+
+/// What one estimator gave.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct EstimatorResult {
+    /// Which.
+    pub estimator: Estimator,
+    /// Demand for imports.
+    pub import_demand: EquationResult,
+    /// Demand for exports.
+    pub export_demand: EquationResult,
+    /// Response of imports to home income.
+    pub import_income_elasticity: Estimate,
+    /// Response of exports to foreign income.
+    pub export_income_elasticity: Estimate,
+    /// Response of imports to home over import prices; expected positive.
+    pub import_price_elasticity: Option<Estimate>,
+    /// Response of exports to competitors' over own prices; expected positive.
+    pub export_price_elasticity: Option<Estimate>,
+    /// Growth of imports that neither income nor prices explain, log per cent a year; null where the
+    /// equation has no such term (levels without trend).
+    pub import_autonomous_growth: Option<Estimate>,
+    /// Growth of exports that neither income nor prices explain, log per cent a year.
+    pub export_autonomous_growth: Option<Estimate>,
+    /// One a requested form, in the order of the document.
+    pub forms: Vec<FormResult>,
+    /// How far agreement with actual growth is arithmetic.
+    pub near_identity: NearIdentity,
+    /// What concerns the equations.
+    pub findings: Vec<Finding>,
+}
+
+/// One estimated equation in logs.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct EquationResult {
+    /// Key of the series explained.
+    pub dependent: String,
+    /// First period of the sample.
+    pub from: String,
+    /// Last period of the sample.
+    pub to: String,
+    /// Observations.
+    pub observations: u32,
+    /// Residual degrees of freedom.
+    pub degrees_of_freedom: u32,
+    /// Coefficients as estimated: growth rates among them (the constant in differences) are
+    /// fractions per period, and that of the export relative price has the sign of the equation.
+    pub coefficients: Vec<CoefficientResult>,
+    /// Covariance behind t, p and intervals.
+    pub covariance: Covariance,
+    /// Newey–West lags of `std_error_newey_west`.
+    pub lags: u32,
+    /// Whether Newey–West covariances were multiplied by n/(n − k).
+    pub small_sample: bool,
+    /// R².
+    pub r_squared: Option<f64>,
+    /// Adjusted R².
+    pub adjusted_r_squared: Option<f64>,
+    /// Standard deviation of the residuals, `√(ssr/(n − k))`.
+    pub residual_std_dev: f64,
+    /// Durbin–Watson statistic; null for a perfect fit.
+    pub durbin_watson: Option<f64>,
+}
+
+/// One coefficient.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct CoefficientResult {
+    /// `constant`, `income` or `relative_price`.
+    pub name: String,
+    /// Key of the regressor; null for the constant.
+    pub series: Option<String>,
+    /// Estimate.
+    pub estimate: f64,
+    /// Classical standard error.
+    pub std_error_classical: f64,
+    /// Newey–West standard error.
+    pub std_error_newey_west: f64,
+    /// Estimate over the standard error of the equation's covariance.
+    pub t: Option<f64>,
+    /// Two-sided p-value by Student's t.
+    pub p: Option<f64>,
+}
+
+/// A number with its standard error.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct Estimate {
+    /// Estimate.
+    pub value: f64,
+    /// Standard error by the equation's covariance.
+    pub std_error: f64,
+}
+
+/// What one form gave. Exactly one of three holds: numbers; `unreliable`, which then carries the
+/// numbers with reasons; or `refused`, where there is no number.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct FormResult {
+    /// Which.
+    pub form: Form,
+    /// The numbers, null where unreliable or refused.
+    #[serde(flatten)]
+    pub numbers: FormNumbers,
+    /// Numbers that should not be relied on, with the reasons.
+    #[serde(default)]
+    pub unreliable: Option<Unreliable>,
+    /// Why there is no number at all.
+    #[serde(default)]
+    pub refused: Option<String>,
+    /// What concerns this form alone.
+    pub findings: Vec<Finding>,
+}
+
+/// Numbers of a form, log per cent a year.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct FormNumbers {
+    /// Growth that keeps trade in balance, autonomous growth left out.
+    pub rate: Option<f64>,
+    /// Its standard error by the delta method.
+    pub std_error: Option<f64>,
+    /// Its confidence set.
+    pub interval: Option<Region>,
+    /// The rate with the equations' autonomous growth; null where they have none.
+    pub rate_with_autonomous_growth: Option<f64>,
+    /// What relative prices add; null where a price is not given.
+    pub relative_price_effect: Option<RelativePriceEffect>,
+}
+
+/// What relative prices add to the rate at constant prices.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct RelativePriceEffect {
+    /// Whether the form's rate includes it.
+    pub included: bool,
+    /// The effect, log per cent a year.
+    pub effect: f64,
+    /// Its confidence set.
+    pub interval: Region,
+    /// p-value of the test that its numerator is zero, mean price growth taken as given.
+    pub p_zero: Option<f64>,
+}
+
+/// Numbers with the reasons not to rely on them.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct Unreliable {
+    /// The numbers.
+    #[serde(flatten)]
+    pub numbers: FormNumbers,
+    /// Findings of severity error, from the equations that the form uses and from the form.
+    pub reasons: Vec<Finding>,
+}
+
+/// How far agreement of constrained with actual growth is arithmetic: least squares fits sample means.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct NearIdentity {
+    /// Growth of imports over growth of home activity; null without growth.
+    pub arithmetic_elasticity: Option<f64>,
+    /// The estimated income elasticity of imports.
+    pub import_income_elasticity: f64,
+    /// The part of constrained less actual growth that comes from exports and imports growing apart,
+    /// log per cent a year; null where the elasticity is not positive.
+    pub trade_imbalance_part: Option<f64>,
+    /// `values` where the terms of trade are given, else `volumes`.
+    pub measured_in: String,
+    /// The same in words.
+    pub sentence: String,
+}

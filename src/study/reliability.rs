@@ -1,0 +1,237 @@
+//! Which estimates and rates may be relied on, and why not. Limits are common practice.
+//!
+//! A finding of severity error makes every form unreliable that uses its equation; notices do not.
+
+use super::document::Estimator;
+use super::equation::{CONST, Equation, INCOME, PRICE};
+use super::sample::Logs;
+use crate::constraint::Region;
+use crate::dist::t_upper;
+use crate::finding::{Finding, Severity};
+
+/// Two-sided significance of the tests here, whatever the level of the intervals.
+const SIGNIFICANCE: f64 = 0.05;
+/// Income elasticities beyond these are worth a notice, and beyond the last not believable.
+const USUAL_INCOME_ELASTICITY: (f64, f64) = (0.5, 3.5);
+const LARGEST_INCOME_ELASTICITY: f64 = 5.0;
+/// A sum of price elasticities beyond this is worth a notice.
+const USUAL_PRICE_ELASTICITIES: f64 = 3.0;
+/// Observations: notice below (annual, more frequent), unreliable below, and per coefficient.
+const FEW_OBSERVATIONS: (usize, usize) = (30, 60);
+const TOO_FEW_OBSERVATIONS: usize = 20;
+const TOO_FEW_A_COEFFICIENT: usize = 5;
+/// Shares of estimated and imputed observations: notice above, unreliable above.
+const GUESSED: (f64, f64) = (0.1, 0.3);
+/// Constrained growth, compound per cent a year: notice this far from actual, unreliable beyond.
+const FAR_FROM_ACTUAL: f64 = 3.0;
+const BELIEVABLE_RATE: (f64, f64) = (-2.0, 12.0);
+const WIDEST_INTERVAL: f64 = 6.0;
+
+/// Which of the two demands an equation is, with its words.
+#[derive(Clone, Copy, PartialEq, Eq)]
+pub(super) enum Side {
+    Imports,
+    Exports,
+}
+
+impl Side {
+    pub(super) fn pointer(self) -> &'static str {
+        match self {
+            Self::Imports => "/import_demand",
+            Self::Exports => "/export_demand",
+        }
+    }
+
+    fn noun(self) -> &'static str {
+        match self {
+            Self::Imports => "imports",
+            Self::Exports => "exports",
+        }
+    }
+
+    /// The sign that turns the equation's coefficient into the elasticity expected positive.
+    pub(super) fn price_sign(self) -> f64 {
+        match self {
+            Self::Imports => 1.0,
+            Self::Exports => -1.0,
+        }
+    }
+}
+
+/// Whether any finding is an error.
+pub(super) fn errors(findings: &[Finding]) -> Vec<Finding> {
+    let error = |f: &&Finding| f.severity == Severity::Error;
+    findings.iter().filter(error).cloned().collect()
+}
+
+/// What an equation's estimates show.
+pub(super) fn judge_equation(
+    equation: &Equation<'_>,
+    side: Side,
+    logs: &Logs,
+    annual: bool,
+) -> Vec<Finding> {
+    let mut findings = Vec::new();
+    let mut add = |severity: Severity, code: &str, message: String| {
+        let finding = match severity {
+            Severity::Error => Finding::error(code, message),
+            Severity::Notice => Finding::notice(code, message),
+        };
+        findings.push(finding.at_pointer(side.pointer()));
+    };
+    let noun = side.noun();
+    let fit = &equation.fit;
+    let quantile = t_upper(SIGNIFICANCE / 2.0, equation.df());
+    let band = |i: usize, sign: f64| {
+        let (centre, half) = (sign * fit.coefficients[i], quantile * equation.std_error(i));
+        (centre, centre - half, centre + half)
+    };
+
+    if equation.estimator == Estimator::OlsLevels && fit.durbin_watson < fit.r2 {
+        let message = format!(
+            "Demand for {noun} in levels may be spurious: Durbin-Watson {:.2} lies below R2 {:.2}",
+            fit.durbin_watson, fit.r2
+        );
+        add(Severity::Error, "possibly_spurious", message);
+    }
+    let (income, low, high) = band(INCOME, 1.0);
+    if high < 0.0 {
+        let message =
+            format!("The income elasticity of {noun} is negative at 5 per cent: {income:.2}");
+        add(Severity::Error, "wrong_sign", message);
+    } else if low <= 0.0 {
+        let message = format!(
+            "The income elasticity of {noun}, {income:.2}, is not told from zero: \
+             its 95 per cent interval is {low:.2} to {high:.2}"
+        );
+        add(Severity::Error, "insignificant_income_elasticity", message);
+    }
+    let (usual_low, usual_high) = USUAL_INCOME_ELASTICITY;
+    if income <= 0.0 || income > LARGEST_INCOME_ELASTICITY {
+        let message = format!(
+            "The income elasticity of {noun}, {income:.2}, lies outside 0 to {LARGEST_INCOME_ELASTICITY}"
+        );
+        add(Severity::Error, "income_elasticity_outside_range", message);
+    } else if !(usual_low..=usual_high).contains(&income) {
+        let message = format!(
+            "The income elasticity of {noun}, {income:.2}, lies outside the usual \
+             {usual_low} to {usual_high}"
+        );
+        add(Severity::Notice, "income_elasticity_outside_range", message);
+    }
+    if equation.has_price() {
+        let (price, _, high) = band(PRICE, side.price_sign());
+        let verdict = if high < 0.0 {
+            Some((Severity::Error, "and significantly so at 5 per cent"))
+        } else if price < 0.0 {
+            Some((Severity::Notice, "though not significantly at 5 per cent"))
+        } else {
+            None
+        };
+        if let Some((severity, how)) = verdict {
+            let message = format!(
+                "The price elasticity of {noun} has the wrong sign, {how}: {price:.2}, expected positive"
+            );
+            add(severity, "wrong_sign", message);
+        }
+    }
+    if equation.estimator == Estimator::OlsDifferences {
+        let (constant, low, high) = band(CONST, 1.0);
+        if low > 0.0 || high < 0.0 {
+            let message = format!(
+                "A constant in the growth of {noun}, {:.2} per cent a period, is neither income nor prices: \
+                 autonomous growth that the law leaves out",
+                100.0 * constant
+            );
+            add(Severity::Notice, "autonomous_growth", message);
+        }
+    }
+    let enough = if annual {
+        FEW_OBSERVATIONS.0
+    } else {
+        FEW_OBSERVATIONS.1
+    };
+    if fit.n < TOO_FEW_OBSERVATIONS || fit.n < TOO_FEW_A_COEFFICIENT * fit.k {
+        let message = format!(
+            "Demand for {noun} has {} observations for {} coefficients; at least {} are needed",
+            fit.n,
+            fit.k,
+            TOO_FEW_OBSERVATIONS.max(TOO_FEW_A_COEFFICIENT * fit.k)
+        );
+        add(Severity::Error, "few_observations", message);
+    } else if fit.n < enough {
+        let message = format!(
+            "Demand for {noun} has {} observations; {enough} are better",
+            fit.n
+        );
+        add(Severity::Notice, "few_observations", message);
+    }
+    let demand = equation.demand;
+    let mut keys = vec![&demand.volume, &demand.activity];
+    keys.extend(&demand.relative_price);
+    for key in keys {
+        let share = logs.guessed(key);
+        if share > GUESSED.0 {
+            let severity = if share > GUESSED.1 {
+                Severity::Error
+            } else {
+                Severity::Notice
+            };
+            let message = format!(
+                "{:.0} per cent of {key} are estimated or imputed",
+                100.0 * share
+            );
+            add(severity, "estimated_observations", message);
+        }
+    }
+    findings
+}
+
+/// What both price elasticities show together.
+pub(super) fn judge_price_elasticities(imports: f64, exports: f64) -> Option<Finding> {
+    let sum = imports + exports;
+    (sum > USUAL_PRICE_ELASTICITIES).then(|| {
+        let message = format!(
+            "The price elasticities of imports and exports sum to {sum:.2}, above the usual \
+             {USUAL_PRICE_ELASTICITIES}"
+        );
+        Finding::notice("price_elasticities_outside_range", message)
+    })
+}
+
+/// What a rate shows; all in compound per cent a year.
+pub(super) fn judge_rate(rate: f64, interval: Region, actual: f64) -> Vec<Finding> {
+    let mut findings = Vec::new();
+    let (low, high) = BELIEVABLE_RATE;
+    if !(low..=high).contains(&rate) {
+        let message =
+            format!("A rate of {rate:.2} per cent a year lies outside {low} to {high} per cent");
+        findings.push(Finding::error("rate_outside_range", message));
+    }
+    let width = match interval {
+        Region::Interval { low, high } => Some(high - low),
+        Region::Complement { .. } | Region::WholeLine => None,
+    };
+    match width {
+        None => {
+            let message = "The confidence set has no end: the income elasticity of imports is not \
+                           told from zero well enough to divide by it";
+            findings.push(Finding::error("interval_unbounded", message));
+        }
+        Some(width) if width > WIDEST_INTERVAL => {
+            let message = format!(
+                "The interval spans {width:.1} percentage points, more than {WIDEST_INTERVAL}"
+            );
+            findings.push(Finding::error("interval_too_wide", message));
+        }
+        Some(_) => {}
+    }
+    if (rate - actual).abs() > FAR_FROM_ACTUAL {
+        let message = format!(
+            "The rate lies {:.1} percentage points from actual growth of {actual:.2} per cent",
+            (rate - actual).abs()
+        );
+        findings.push(Finding::notice("far_from_actual", message));
+    }
+    findings
+}

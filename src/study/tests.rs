@@ -1,0 +1,1 @@
+//! Studies on reference data and on a simulated economy.
