@@ -5,7 +5,9 @@
 mod client;
 pub mod economy;
 mod files;
+mod run;
 mod walk;
 
 pub use files::RawFile;
+pub use run::run;
 pub use walk::{NAME, PREPARATION, STUDY, Walked, look_further, walk};

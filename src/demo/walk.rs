@@ -100,9 +100,8 @@ pub fn look_further(base: &str, run: u64, out: &mut dyn Write) -> std::io::Resul
             format!("/v1/studies/{NAME}/runs/{run}"),
         ),
     ];
-    writeln!(out, "To look further:")?;
     for (what, path) in lines {
-        writeln!(out, "  curl -s '{base}{path}'    # {what}")?;
+        writeln!(out, "  curl -s \"{base}{path}\"    # {what}")?;
     }
     Ok(())
 }

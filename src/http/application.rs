@@ -60,8 +60,12 @@ impl Application {
                 settings.listen
             );
         }
-        let listener = TcpListener::bind(settings.listen)
-            .with_context(|| format!("cannot listen on {} (setting REALTERMS_LISTEN)", settings.listen))?;
+        let listener = TcpListener::bind(settings.listen).with_context(|| {
+            format!(
+                "cannot listen on {} (setting REALTERMS_LISTEN)",
+                settings.listen
+            )
+        })?;
         let address = listener.local_addr()?;
         if open {
             tracing::warn!(address = %address, "no token exists: everybody on this machine may do everything");
@@ -122,7 +126,9 @@ impl Application {
                 match uploads::sweep_refused(&shared.database, before).await {
                     Ok(0) => {}
                     Ok(count) => tracing::info!(uploads = count, "erased old refused uploads"),
-                    Err(fault) => tracing::warn!(error = ?fault, "old refused uploads stay for now"),
+                    Err(fault) => {
+                        tracing::warn!(error = ?fault, "old refused uploads stay for now")
+                    }
                 }
             }
         });
@@ -177,18 +183,24 @@ fn mount(config: &mut web::ServiceConfig, routes: &'static [Route]) {
             ));
         }
         let allow = allowed.join(", ");
-        config.service(resource.default_service(web::route().to(move |request: HttpRequest| {
-            let allow = allow.clone();
-            async move {
-                let problem = Problem::new(
-                    StatusCode::METHOD_NOT_ALLOWED,
-                    "method_not_allowed",
-                    format!("{} is not for {}; allowed: {allow}", request.method(), request.path()),
-                )
-                .with_header("Allow", allow);
-                finish(&request, Instant::now(), Err(problem))
-            }
-        })));
+        config.service(
+            resource.default_service(web::route().to(move |request: HttpRequest| {
+                let allow = allow.clone();
+                async move {
+                    let problem = Problem::new(
+                        StatusCode::METHOD_NOT_ALLOWED,
+                        "method_not_allowed",
+                        format!(
+                            "{} is not for {}; allowed: {allow}",
+                            request.method(),
+                            request.path()
+                        ),
+                    )
+                    .with_header("Allow", allow);
+                    finish(&request, Instant::now(), Err(problem))
+                }
+            })),
+        );
     }
 }
 
@@ -196,7 +208,10 @@ async fn no_such_path(request: HttpRequest) -> HttpResponse {
     let problem = Problem::new(
         StatusCode::NOT_FOUND,
         "not_found",
-        format!("there is nothing at {}; /openapi.json lists what there is", request.path()),
+        format!(
+            "there is nothing at {}; /openapi.json lists what there is",
+            request.path()
+        ),
     );
     finish(&request, Instant::now(), Err(problem))
 }
@@ -235,7 +250,10 @@ async fn admit(
         .headers()
         .get("Authorization")
         .and_then(|v| v.to_str().ok())
-        .and_then(|v| v.strip_prefix("Bearer ").or_else(|| v.strip_prefix("bearer ")))
+        .and_then(|v| {
+            v.strip_prefix("Bearer ")
+                .or_else(|| v.strip_prefix("bearer "))
+        })
         .map(str::trim);
     let unauthorised = |code: &str, detail: &str| {
         Err(Problem::new(StatusCode::UNAUTHORIZED, code, detail)
@@ -306,7 +324,9 @@ fn request_id(request: &HttpRequest) -> String {
         .and_then(|v| v.to_str().ok())
         .filter(|id| {
             (1..=64).contains(&id.len())
-                && id.bytes().all(|b| b.is_ascii_alphanumeric() || b == b'-' || b == b'_')
+                && id
+                    .bytes()
+                    .all(|b| b.is_ascii_alphanumeric() || b == b'-' || b == b'_')
         })
         .map_or_else(|| uuid::Uuid::now_v7().to_string(), str::to_owned)
 }

@@ -39,7 +39,9 @@ impl Call {
     ) -> Result<Self, Problem> {
         let known = route.parameters();
         let pairs = web::Query::<Vec<(String, String)>>::from_query(request.query_string())
-            .map_err(|e| Problem::bad_request(format!("the query string cannot be read: {e}"), vec![]))?;
+            .map_err(|e| {
+                Problem::bad_request(format!("the query string cannot be read: {e}"), vec![])
+            })?;
         let mut parameters = BTreeMap::new();
         let mut faults = Vec::new();
         for (name, value) in pairs.into_inner() {
@@ -51,9 +53,12 @@ impl Call {
                     }
                     if parameters.insert(name.clone(), value).is_some() {
                         faults.push(
-                            Finding::error("repeated_parameter", format!("'{name}' is given twice"))
-                                .at_parameter(name)
-                                .remedy("give it once"),
+                            Finding::error(
+                                "repeated_parameter",
+                                format!("'{name}' is given twice"),
+                            )
+                            .at_parameter(name)
+                            .remedy("give it once"),
                         );
                     }
                 }
@@ -72,7 +77,11 @@ impl Call {
             }
         }
         if !faults.is_empty() {
-            let detail = faults.iter().map(|f| f.message.as_str()).collect::<Vec<_>>().join("; ");
+            let detail = faults
+                .iter()
+                .map(|f| f.message.as_str())
+                .collect::<Vec<_>>()
+                .join("; ");
             return Err(Problem::bad_request(detail, faults));
         }
         Ok(Self {
@@ -108,7 +117,9 @@ impl Call {
 
     /// All query parameters by name.
     pub(super) fn parameters(&self) -> impl Iterator<Item = (&str, &str)> {
-        self.parameters.iter().map(|(n, v)| (n.as_str(), v.as_str()))
+        self.parameters
+            .iter()
+            .map(|(n, v)| (n.as_str(), v.as_str()))
     }
 
     /// A query parameter that the route declares as a flag.
@@ -176,9 +187,12 @@ fn unknown_parameter(name: &str, known: &[Parameter]) -> Finding {
     } else {
         names.join(", ")
     };
-    Finding::error("unknown_parameter", format!("there is no parameter '{name}' here"))
-        .at_parameter(name)
-        .found(name)
-        .expected(expected)
-        .remedy("check the spelling; nothing was done")
+    Finding::error(
+        "unknown_parameter",
+        format!("there is no parameter '{name}' here"),
+    )
+    .at_parameter(name)
+    .found(name)
+    .expected(expected)
+    .remedy("check the spelling; nothing was done")
 }

@@ -24,7 +24,10 @@ pub(super) fn routes() -> Vec<Route> {
             problems: &[],
             handler: |call| {
                 Box::pin(async move {
-                    call.json(StatusCode::OK, &currencies::list(&call.shared.database).await?)
+                    call.json(
+                        StatusCode::OK,
+                        &currencies::list(&call.shared.database).await?,
+                    )
                 })
             },
         },

@@ -7,7 +7,9 @@ use actix_web::http::header;
 use super::call::Call;
 use super::problem::Problem;
 use super::respond::{Media, location};
-use super::route::{Answer, Form, Method, Parameter, Route, Success, empty, json, object, optional, paging, text};
+use super::route::{
+    Answer, Form, Method, Parameter, Route, Success, empty, json, object, optional, paging, text,
+};
 use super::series::{moment, moment_parameters};
 use crate::preparation::Plan;
 use crate::service::documents::{self, DocumentKind, Precondition};
@@ -17,16 +19,24 @@ use crate::service::tokens::Role;
 use crate::service::{DocumentView, RunLine};
 
 const PUT_HEADERS: &[(&str, &str)] = &[
-    ("If-Match", "entity tags of versions of which one must be current"),
+    (
+        "If-Match",
+        "entity tags of versions of which one must be current",
+    ),
     ("If-None-Match", "* where nothing may be there yet"),
 ];
-const DELETE_HEADERS: &[(&str, &str)] =
-    &[("If-Match", "entity tags of versions of which one must be current")];
+const DELETE_HEADERS: &[(&str, &str)] = &[(
+    "If-Match",
+    "entity tags of versions of which one must be current",
+)];
 
 fn version_parameters() -> Vec<Parameter> {
     vec![optional(
         "version",
-        Form::Integer { least: 1, most: 1_000_000_000 },
+        Form::Integer {
+            least: 1,
+            most: 1_000_000_000,
+        },
         "a version; the newest unless given",
     )]
 }
@@ -45,7 +55,9 @@ fn run_text_parameters() -> Vec<Parameter> {
 fn put_successes() -> Vec<Success> {
     vec![
         json::<DocumentView>(200, "a new version, or the same text again").header("ETag"),
-        json::<DocumentView>(201, "created").header("ETag").header("Location"),
+        json::<DocumentView>(201, "created")
+            .header("ETag")
+            .header("Location"),
     ]
 }
 
@@ -226,7 +238,10 @@ pub(super) fn routes() -> Vec<Route> {
                     let author = &call.principal.name;
                     let run = preparations::run(database, name, &moment(&call), author).await?;
                     let mut response = call.json(StatusCode::CREATED, &run)?;
-                    location(&mut response, &format!("/v1/preparations/{name}/runs/{}", run.id));
+                    location(
+                        &mut response,
+                        &format!("/v1/preparations/{name}/runs/{}", run.id),
+                    );
                     Ok(response)
                 })
             },
@@ -265,7 +280,11 @@ pub(super) fn routes() -> Vec<Route> {
             headers: &[],
             body: &[],
             successes: || {
-                vec![json::<StudyRun>(201, "the run").or("text/plain", text).header("Location")]
+                vec![
+                    json::<StudyRun>(201, "the run")
+                        .or("text/plain", text)
+                        .header("Location"),
+                ]
             },
             problems: &[404, 406, 422],
             handler: |call| {
@@ -275,7 +294,10 @@ pub(super) fn routes() -> Vec<Route> {
                     let author = &call.principal.name;
                     let run = studies::run(database, name, &moment(&call), author).await?;
                     let mut response = study_run(&call, StatusCode::CREATED, media, &run)?;
-                    location(&mut response, &format!("/v1/studies/{name}/runs/{}", run.id));
+                    location(
+                        &mut response,
+                        &format!("/v1/studies/{name}/runs/{}", run.id),
+                    );
                     Ok(response)
                 })
             },
@@ -320,7 +342,11 @@ fn tag(version: i32) -> String {
 }
 
 fn document(call: &Call, view: &DocumentView, created: bool) -> Answer {
-    let status = if created { StatusCode::CREATED } else { StatusCode::OK };
+    let status = if created {
+        StatusCode::CREATED
+    } else {
+        StatusCode::OK
+    };
     let mut response = call.json(status, view)?;
     if let Ok(value) = header::HeaderValue::from_str(&tag(view.version)) {
         response.headers_mut().insert(header::ETAG, value);
@@ -342,10 +368,19 @@ fn precondition(call: &Call) -> Result<Precondition, Problem> {
             ));
         }
     };
-    let matches = call.header("If-Match").filter(|tags| *tags != "*").map(|tags| {
-        tags.split(',')
-            .filter_map(|t| t.trim().strip_prefix("\"v")?.strip_suffix('"')?.parse().ok())
-            .collect()
-    });
+    let matches = call
+        .header("If-Match")
+        .filter(|tags| *tags != "*")
+        .map(|tags| {
+            tags.split(',')
+                .filter_map(|t| {
+                    t.trim()
+                        .strip_prefix("\"v")?
+                        .strip_suffix('"')?
+                        .parse()
+                        .ok()
+                })
+                .collect()
+        });
     Ok(Precondition { matches, absent })
 }

@@ -65,12 +65,14 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: Vec::new,
             headers: &[],
             body: &[],
-            successes: || vec![super::route::Success {
-                status: 200,
-                description: "the document",
-                content: vec![("application/json", object)],
-                headers: vec![],
-            }],
+            successes: || {
+                vec![super::route::Success {
+                    status: 200,
+                    description: "the document",
+                    content: vec![("application/json", object)],
+                    headers: vec![],
+                }]
+            },
             problems: &[],
             handler: |call| {
                 Box::pin(async move {

@@ -85,28 +85,36 @@ impl From<Fault> for Problem {
     fn from(fault: Fault) -> Self {
         match fault {
             Fault::BadRequest { detail, errors } => Self::bad_request(detail, errors),
-            Fault::Invalid { code, detail, errors } => {
-                Self::new(StatusCode::UNPROCESSABLE_ENTITY, code, detail).with_errors(errors)
-            }
-            Fault::Refused { detail, errors, upload } => Self {
+            Fault::Invalid {
+                code,
+                detail,
+                errors,
+            } => Self::new(StatusCode::UNPROCESSABLE_ENTITY, code, detail).with_errors(errors),
+            Fault::Refused {
+                detail,
+                errors,
+                upload,
+            } => Self {
                 upload: Some(upload),
                 ..Self::new(StatusCode::UNPROCESSABLE_ENTITY, "upload_refused", detail)
                     .with_errors(errors)
             },
-            Fault::NotFound { what } => {
-                Self::new(StatusCode::NOT_FOUND, "not_found", format!("there is no {what}"))
-            }
+            Fault::NotFound { what } => Self::new(
+                StatusCode::NOT_FOUND,
+                "not_found",
+                format!("there is no {what}"),
+            ),
             Fault::Conflict { code, detail } => Self::new(StatusCode::CONFLICT, code, detail),
-            Fault::PreconditionFailed { detail } => {
-                Self::new(StatusCode::PRECONDITION_FAILED, "precondition_failed", detail)
-            }
+            Fault::PreconditionFailed { detail } => Self::new(
+                StatusCode::PRECONDITION_FAILED,
+                "precondition_failed",
+                detail,
+            ),
             Fault::TooLarge { detail } => {
                 Self::new(StatusCode::PAYLOAD_TOO_LARGE, "too_large", detail)
             }
-            Fault::TooSlow { detail } => {
-                Self::new(StatusCode::REQUEST_TIMEOUT, "too_slow", detail)
-                    .with_header("Connection", "close")
-            }
+            Fault::TooSlow { detail } => Self::new(StatusCode::REQUEST_TIMEOUT, "too_slow", detail)
+                .with_header("Connection", "close"),
             Fault::Store(error) => Self {
                 internal: Some(error.to_string()),
                 ..Self::new(

@@ -56,9 +56,13 @@ impl Call {
     /// does not care.
     pub(super) fn media(&self, offered: &[Media]) -> Result<Media, Problem> {
         if let Some(name) = self.parameter("format") {
-            return offered.iter().find(|m| m.short() == name).copied().ok_or_else(|| {
-                Problem::bad_request(format!("there is no format '{name}' here"), vec![])
-            });
+            return offered
+                .iter()
+                .find(|m| m.short() == name)
+                .copied()
+                .ok_or_else(|| {
+                    Problem::bad_request(format!("there is no format '{name}' here"), vec![])
+                });
         }
         let Some(accept) = self.header("Accept") else {
             return Ok(offered[0]);
@@ -74,9 +78,9 @@ impl Call {
             let matched = offered.iter().find(|m| {
                 name == "*/*"
                     || name == m.as_str()
-                    || name.strip_suffix("/*").is_some_and(|kind| {
-                        m.as_str().split('/').next() == Some(kind)
-                    })
+                    || name
+                        .strip_suffix("/*")
+                        .is_some_and(|kind| m.as_str().split('/').next() == Some(kind))
             });
             if let Some(media) = matched
                 && weight > 0.0
@@ -90,7 +94,10 @@ impl Call {
             Problem::new(
                 StatusCode::NOT_ACCEPTABLE,
                 "not_acceptable",
-                format!("this can be had as {}, none of which Accept allows", names.join(", ")),
+                format!(
+                    "this can be had as {}, none of which Accept allows",
+                    names.join(", ")
+                ),
             )
         })
     }
@@ -114,7 +121,9 @@ impl Call {
     /// Whether the client has this version already.
     pub(super) fn has(&self, tag: &str) -> bool {
         self.header("If-None-Match").is_some_and(|tags| {
-            tags.split(',').map(str::trim).any(|t| t == "*" || t.trim_start_matches("W/") == tag)
+            tags.split(',')
+                .map(str::trim)
+                .any(|t| t == "*" || t.trim_start_matches("W/") == tag)
         })
     }
 
@@ -127,7 +136,13 @@ impl Call {
     }
 
     /// A body, compressed if it pays and the client agrees.
-    pub(super) fn body(&self, status: StatusCode, media: Media, tag: Option<&str>, body: Vec<u8>) -> HttpResponse {
+    pub(super) fn body(
+        &self,
+        status: StatusCode,
+        media: Media,
+        tag: Option<&str>,
+        body: Vec<u8>,
+    ) -> HttpResponse {
         let mut response = HttpResponse::build(status);
         response
             .content_type(media.content_type())
@@ -162,7 +177,11 @@ impl Call {
                 .map(|(name, value)| format!("{name}={}", percent_encoded(value)))
                 .collect();
             pairs.push(format!("after={}", percent_encoded(next)));
-            let link = format!("<{}?{}>; rel=\"next\"", self.request.path(), pairs.join("&"));
+            let link = format!(
+                "<{}?{}>; rel=\"next\"",
+                self.request.path(),
+                pairs.join("&")
+            );
             if let Ok(value) = header::HeaderValue::from_str(&link) {
                 response.headers_mut().insert(header::LINK, value);
             }

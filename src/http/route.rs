@@ -97,7 +97,10 @@ impl Parameter {
                 "true or false".to_owned()
             }
             Form::Integer { least, most } => {
-                if value.parse::<i64>().is_ok_and(|n| (*least..=*most).contains(&n)) {
+                if value
+                    .parse::<i64>()
+                    .is_ok_and(|n| (*least..=*most).contains(&n))
+                {
                     return None;
                 }
                 format!("a whole number from {least} to {most}")
@@ -136,8 +139,19 @@ impl Parameter {
 /// `limit` and `after` of every list.
 pub(super) fn paging() -> Vec<Parameter> {
     vec![
-        optional("limit", Form::Integer { least: 1, most: 1000 }, "entries a page, 100 unless given"),
-        optional("after", Form::Text, "cursor from the header Link of the page before"),
+        optional(
+            "limit",
+            Form::Integer {
+                least: 1,
+                most: 1000,
+            },
+            "entries a page, 100 unless given",
+        ),
+        optional(
+            "after",
+            Form::Text,
+            "cursor from the header Link of the page before",
+        ),
     ]
 }
 
@@ -318,11 +332,17 @@ fn headers_object(names: &[&str]) -> serde_json::Value {
         .into()
 }
 
-fn content_object(content: &[(&'static str, SchemaOf)], schemas: &mut Schemas) -> serde_json::Value {
+fn content_object(
+    content: &[(&'static str, SchemaOf)],
+    schemas: &mut Schemas,
+) -> serde_json::Value {
     content
         .iter()
         .map(|(media, schema)| {
-            ((*media).to_owned(), serde_json::json!({ "schema": schema(schemas) }))
+            (
+                (*media).to_owned(),
+                serde_json::json!({ "schema": schema(schemas) }),
+            )
         })
         .collect::<serde_json::Map<_, _>>()
         .into()

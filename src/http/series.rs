@@ -21,15 +21,27 @@ fn list_parameters() -> Vec<Parameter> {
             "codes wanted in this place of the key, separated by commas",
         ));
     }
-    parameters.push(optional("words", Form::Text, "words that occur in key or unit"));
+    parameters.push(optional(
+        "words",
+        Form::Text,
+        "words that occur in key or unit",
+    ));
     parameters
 }
 
 /// Parameters that pick a moment.
 pub(super) fn moment_parameters() -> Vec<Parameter> {
     vec![
-        optional("as_of", Form::Text, "as released until this date, or as of revision:N"),
-        optional("recorded_as_of", Form::Text, "as recorded here until this RFC 3339 time"),
+        optional(
+            "as_of",
+            Form::Text,
+            "as released until this date, or as of revision:N",
+        ),
+        optional(
+            "recorded_as_of",
+            Form::Text,
+            "as recorded here until this RFC 3339 time",
+        ),
     ]
 }
 
@@ -37,7 +49,10 @@ fn read_parameters() -> Vec<Parameter> {
     let mut parameters = moment_parameters();
     parameters.push(optional(
         "segment",
-        Form::Integer { least: 1, most: 1_000_000 },
+        Form::Integer {
+            least: 1,
+            most: 1_000_000,
+        },
         "segment by number; the one released last unless given",
     ));
     parameters
@@ -48,7 +63,11 @@ fn observation_parameters() -> Vec<Parameter> {
     parameters.extend([
         optional("from", Form::Text, "first period wanted"),
         optional("to", Form::Text, "last period wanted"),
-        optional("growth", Form::OneOf(series::growth_names()), "growth in place of levels, as a fraction"),
+        optional(
+            "growth",
+            Form::OneOf(series::growth_names()),
+            "growth in place of levels, as a fraction",
+        ),
         optional("format", Form::OneOf(vec!["json", "csv"]), "json or csv"),
     ]);
     parameters
@@ -56,7 +75,11 @@ fn observation_parameters() -> Vec<Parameter> {
 
 fn lineage_parameters() -> Vec<Parameter> {
     let mut parameters = read_parameters();
-    parameters.push(optional("period", Form::Text, "one period, down to its line"));
+    parameters.push(optional(
+        "period",
+        Form::Text,
+        "one period, down to its line",
+    ));
     parameters
 }
 
@@ -171,7 +194,11 @@ pub(super) fn routes() -> Vec<Route> {
 async fn list(call: Call) -> Answer {
     let split = |text: Option<&str>, at: char| -> Vec<String> {
         text.map_or_else(Vec::new, |t| {
-            t.split(at).map(str::trim).filter(|w| !w.is_empty()).map(str::to_owned).collect()
+            t.split(at)
+                .map(str::trim)
+                .filter(|w| !w.is_empty())
+                .map(str::to_owned)
+                .collect()
         })
     };
     let query = Query {
@@ -220,7 +247,11 @@ fn csv_body(view: &ObservationsView) -> Vec<u8> {
     let mut rows = vec![["period".to_owned(), "value".to_owned(), "status".to_owned()]];
     rows.extend(view.observations.iter().map(|o| {
         let value = o.value.map_or_else(String::new, |v| v.to_string());
-        [o.period.clone(), value, char::from(o.status.byte()).to_string()]
+        [
+            o.period.clone(),
+            value,
+            char::from(o.status.byte()).to_string(),
+        ]
     }));
     for row in rows {
         // Writing into memory cannot fail.

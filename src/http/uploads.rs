@@ -7,9 +7,7 @@ use futures_util::TryStreamExt;
 use super::call::Call;
 use super::problem::Problem;
 use super::respond::Media;
-use super::route::{
-    Answer, Form, Method, Parameter, Route, json, optional, paging, text,
-};
+use super::route::{Answer, Form, Method, Parameter, Route, json, optional, paging, text};
 use crate::clock;
 use crate::intake::{self, KindSpec, Reject};
 use crate::series::vintage::Scope;
@@ -20,12 +18,25 @@ use crate::service::{UploadView, uploads};
 /// Parameters of an upload that are no columns.
 fn own_parameters() -> Vec<Parameter> {
     vec![
-        optional("kind", Form::OneOf(kind_names()), "what the file holds; see /v1/kinds").required(),
-        optional("released", Form::Date, "date of release by the source; today unless given"),
+        optional(
+            "kind",
+            Form::OneOf(kind_names()),
+            "what the file holds; see /v1/kinds",
+        )
+        .required(),
+        optional(
+            "released",
+            Form::Date,
+            "date of release by the source; today unless given",
+        ),
         optional("title", Form::Text, "title of the publication"),
         optional("publisher", Form::Text, "who publishes it"),
         optional("note", Form::Text, "anything worth keeping with it"),
-        optional("dry_run", Form::Flag, "say what would happen and keep nothing"),
+        optional(
+            "dry_run",
+            Form::Flag,
+            "say what would happen and keep nothing",
+        ),
         optional(
             "on_reject",
             Form::OneOf(vec!["fail", "skip"]),
@@ -67,7 +78,11 @@ fn list_parameters() -> Vec<Parameter> {
         Form::OneOf(vec!["landed", "held", "refused", "withdrawn"]),
         "only uploads in this state",
     ));
-    parameters.push(optional("kind", Form::OneOf(kind_names()), "only uploads of this kind"));
+    parameters.push(optional(
+        "kind",
+        Form::OneOf(kind_names()),
+        "only uploads of this kind",
+    ));
     parameters
 }
 
@@ -92,7 +107,13 @@ pub(super) fn routes() -> Vec<Route> {
             name: "get_kind",
             summary: "One kind; as text/csv an empty template",
             role: Some(Role::Read),
-            parameters: || vec![optional("format", Form::OneOf(vec!["json", "csv"]), "json or csv")],
+            parameters: || {
+                vec![optional(
+                    "format",
+                    Form::OneOf(vec!["json", "csv"]),
+                    "json or csv",
+                )]
+            },
             headers: &[],
             body: &[],
             successes: || vec![json::<KindSpec>(200, "the kind").or("text/csv", text)],
@@ -146,7 +167,10 @@ pub(super) fn routes() -> Vec<Route> {
             handler: |call| {
                 Box::pin(async move {
                     let id = call.number("id", "upload")?;
-                    call.json(StatusCode::OK, &uploads::get(&call.shared.database, id).await?)
+                    call.json(
+                        StatusCode::OK,
+                        &uploads::get(&call.shared.database, id).await?,
+                    )
                 })
             },
         },
@@ -204,7 +228,8 @@ pub(super) fn routes() -> Vec<Route> {
             handler: |call| {
                 Box::pin(async move {
                     let id = call.number("id", "upload")?;
-                    let page = uploads::rejects(&call.shared.database, id, call.after(), call.limit());
+                    let page =
+                        uploads::rejects(&call.shared.database, id, call.after(), call.limit());
                     call.page(&page.await?)
                 })
             },
@@ -238,7 +263,10 @@ async fn get_kind(call: Call) -> Answer {
         return Err(Problem::new(
             StatusCode::NOT_FOUND,
             "not_found",
-            format!("there is no kind '{name}'; there are {}", kind_names().join(", ")),
+            format!(
+                "there is no kind '{name}'; there are {}",
+                kind_names().join(", ")
+            ),
         ));
     };
     match call.media(&[Media::Json, Media::Csv])? {
@@ -251,7 +279,9 @@ async fn get_kind(call: Call) -> Answer {
 }
 
 async fn create(mut call: Call) -> Answer {
-    let declared = call.header("Content-Length").and_then(|n| n.parse::<u64>().ok());
+    let declared = call
+        .header("Content-Length")
+        .and_then(|n| n.parse::<u64>().ok());
     let limit = call.shared.limits.max_bytes;
     if declared.is_some_and(|n| n > limit) {
         return Err(too_large(limit).into());
@@ -274,8 +304,9 @@ async fn create(mut call: Call) -> Answer {
         .map(|(name, value)| (name.to_owned(), value.to_owned()))
         .collect();
     let kind = call.parameter("kind").unwrap_or_default();
-    let settings = intake::Settings::parse(kind, &columns)
-        .map_err(|errors| Problem::bad_request("a parameter cannot stand for its column", errors))?;
+    let settings = intake::Settings::parse(kind, &columns).map_err(|errors| {
+        Problem::bad_request("a parameter cannot stand for its column", errors)
+    })?;
     let today = clock::today();
     let released = call.date("released");
     if released.is_some_and(|r| r > today) {
@@ -340,9 +371,17 @@ async fn list(call: Call) -> Answer {
 async fn raw(call: Call) -> Answer {
     let id = call.number("id", "upload")?;
     let (upload, bytes) = uploads::raw(&call.shared.database, id).await?;
-    let media = if upload.compression == "gzip" { "application/gzip" } else { "text/csv" };
+    let media = if upload.compression == "gzip" {
+        "application/gzip"
+    } else {
+        "text/csv"
+    };
     Ok(HttpResponse::Ok()
         .content_type(media)
         .insert_header(("ETag", format!("\"{}\"", upload.sha256)))
-        .streaming(bytes.map_ok(web::Bytes::from).map_err(|fault| std::io::Error::other(format!("{fault:?}")))))
+        .streaming(
+            bytes
+                .map_ok(web::Bytes::from)
+                .map_err(|fault| std::io::Error::other(format!("{fault:?}"))),
+        ))
 }

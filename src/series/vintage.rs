@@ -143,9 +143,12 @@ pub fn difference(old: &State, new: &State) -> Changes {
         usize::try_from(ordinal - state.start.ordinal())
             .ok()
             .filter(|i| *i < state.values.len())
-            .map_or((f64::NAN, Status::Absent), |i| (state.values[i], state.status[i]))
+            .map_or((f64::NAN, Status::Absent), |i| {
+                (state.values[i], state.status[i])
+            })
     };
-    let end = |state: &State| state.start.ordinal() + i32::try_from(state.values.len()).unwrap_or(0);
+    let end =
+        |state: &State| state.start.ordinal() + i32::try_from(state.values.len()).unwrap_or(0);
     let low = old.start.ordinal().min(new.start.ordinal());
     let high = end(old).max(end(new));
     let mut changes = Changes::default();

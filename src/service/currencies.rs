@@ -33,8 +33,12 @@ pub async fn declare(
     code: &str,
     body: &str,
 ) -> Result<(CurrencyView, bool), Fault> {
-    let code = CurrencyCode::parse(code)
-        .map_err(|e| Fault::invalid("bad_currency", vec![Finding::error("bad_currency", e.to_string())]))?;
+    let code = CurrencyCode::parse(code).map_err(|e| {
+        Fault::invalid(
+            "bad_currency",
+            vec![Finding::error("bad_currency", e.to_string())],
+        )
+    })?;
     let declaration: Declaration = documents::parse_json(body, &["name", "areas"])?;
     for (i, area) in declaration.areas.iter().enumerate() {
         if let Err(e) = SeriesKey::new(Frequency::Annual, [area, "x", "", "", "", "", ""]) {
@@ -130,7 +134,10 @@ pub(super) async fn context(connection: &mut Connection) -> Result<intake::Conte
             own_money.extend(row.areas.into_iter().map(|area| (area, code)));
         }
     }
-    Ok(intake::Context { declared, own_money })
+    Ok(intake::Context {
+        declared,
+        own_money,
+    })
 }
 
 fn view(row: store::currency::CurrencyRow) -> CurrencyView {

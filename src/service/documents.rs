@@ -44,7 +44,9 @@ impl Precondition {
                 "If-None-Match: * asks that nothing be there, but version {} is",
                 row.version
             )),
-            (None, Some(_)) => failed("If-Match asks for a version, but nothing is there".to_owned()),
+            (None, Some(_)) => {
+                failed("If-Match asks for a version, but nothing is there".to_owned())
+            }
             (Some(row), Some(versions)) if !versions.contains(&row.version) => failed(format!(
                 "the current version is {}, which If-Match does not name; read it and try again",
                 row.version
@@ -82,7 +84,10 @@ pub fn parse_json<T: DeserializeOwned>(body: &str, known: &[&str]) -> Result<T, 
     serde_json::from_str(body).map_err(|e| {
         let finding = Finding::error("bad_document", e.to_string())
             .at_line(e.line() as u64)
-            .expected(format!("a JSON object with the fields {}", known.join(", ")));
+            .expected(format!(
+                "a JSON object with the fields {}",
+                known.join(", ")
+            ));
         if e.is_data() {
             Fault::invalid("bad_document", vec![finding])
         } else {
@@ -114,8 +119,15 @@ pub(super) async fn put(
     {
         return Ok((view(row), false));
     }
-    store::document::insert(&mut transaction, kind.as_str(), name, highest + 1, Some(body), author)
-        .await?;
+    store::document::insert(
+        &mut transaction,
+        kind.as_str(),
+        name,
+        highest + 1,
+        Some(body),
+        author,
+    )
+    .await?;
     let row = store::document::newest(&mut transaction, kind.as_str(), name)
         .await?
         .ok_or_else(|| Fault::Internal("a document vanished inside its transaction".to_owned()))?;
@@ -167,8 +179,13 @@ pub async fn list(
     limit: i64,
 ) -> Result<Page<DocumentView>, Fault> {
     let mut connection = database.connection().await?;
-    let rows =
-        store::document::list(&mut connection, kind.as_str(), after.unwrap_or(""), limit + 1).await?;
+    let rows = store::document::list(
+        &mut connection,
+        kind.as_str(),
+        after.unwrap_or(""),
+        limit + 1,
+    )
+    .await?;
     let items: Vec<DocumentView> = rows.into_iter().map(view).collect();
     Ok(Page::cut(items, limit, |d| d.name.clone()))
 }
@@ -188,10 +205,21 @@ pub async fn delete(
     let highest = store::document::lock(&mut transaction, kind.as_str(), name).await?;
     let current = store::document::newest(&mut transaction, kind.as_str(), name).await?;
     if current.is_none() {
-        return Err(Fault::not_found(format!("{} named '{name}'", kind.as_str())));
+        return Err(Fault::not_found(format!(
+            "{} named '{name}'",
+            kind.as_str()
+        )));
     }
     precondition.check(current.as_ref())?;
-    store::document::insert(&mut transaction, kind.as_str(), name, highest + 1, None, author).await?;
+    store::document::insert(
+        &mut transaction,
+        kind.as_str(),
+        name,
+        highest + 1,
+        None,
+        author,
+    )
+    .await?;
     store::commit(transaction).await?;
     Ok(())
 }

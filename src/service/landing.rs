@@ -59,8 +59,7 @@ pub(super) async fn land(
     let after = next_day(released);
     let mut created: BTreeSet<i64> = BTreeSet::new();
     for batch in segments.chunks(BATCH) {
-        let statements =
-            store::vintage::statements_of_upload(connection, upload, batch).await?;
+        let statements = store::vintage::statements_of_upload(connection, upload, batch).await?;
         let stored = by_id(store::series::segments_by_id(connection, batch).await?);
         let mut bases = one_each(
             store::vintage::visible_before(connection, batch, after).await?,
@@ -77,7 +76,10 @@ pub(super) async fn land(
         let mut vintages = Vec::new();
         for row in statements {
             let Some(segment) = stored.get(&row.segment_id) else {
-                return Err(Fault::Internal(format!("segment {} vanished", row.segment_id)));
+                return Err(Fault::Internal(format!(
+                    "segment {} vanished",
+                    row.segment_id
+                )));
             };
             let base = bases.remove(&row.segment_id);
             if let Some(base) = &base
@@ -99,7 +101,13 @@ pub(super) async fn land(
                 let rest = later_statements.remove(&row.segment_id).unwrap_or_default();
                 let visible = later_states.remove(&row.segment_id).unwrap_or_default();
                 let statements = rest.iter().map(|s| (s.released, &s.statement));
-                replay_onto(Some(state.clone()), statements, visible, &mut vintages, row.segment_id);
+                replay_onto(
+                    Some(state.clone()),
+                    statements,
+                    visible,
+                    &mut vintages,
+                    row.segment_id,
+                );
                 vintages.push(NewVintage {
                     segment_id: row.segment_id,
                     released,
@@ -216,7 +224,9 @@ fn dated(
     let mut map: HashMap<i64, BTreeMap<Date, State>> = HashMap::new();
     for row in rows {
         let (id, released) = (row.segment_id, store::date(row.released)?);
-        map.entry(id).or_default().insert(released, state_of(row, stored)?);
+        map.entry(id)
+            .or_default()
+            .insert(released, state_of(row, stored)?);
     }
     Ok(map)
 }

@@ -87,17 +87,19 @@ pub async fn lineage(
 ) -> Result<LineageView, Fault> {
     let only = match period {
         None => None,
-        Some(text) => Some(Period::parse_as(text, key.frequency()).map_err(|e| {
-            Fault::BadRequest {
-                detail: e.to_string(),
-                errors: vec![
-                    Finding::error("bad_parameter", e.to_string())
-                        .at_parameter("period")
-                        .found(text)
-                        .expected(e.expected),
-                ],
-            }
-        })?),
+        Some(text) => {
+            Some(
+                Period::parse_as(text, key.frequency()).map_err(|e| Fault::BadRequest {
+                    detail: e.to_string(),
+                    errors: vec![
+                        Finding::error("bad_parameter", e.to_string())
+                            .at_parameter("period")
+                            .found(text)
+                            .expected(e.expected),
+                    ],
+                })?,
+            )
+        }
     };
     let vintage = vintage(database, key, moment).await?;
     let runs = provenance::decode(&vintage.provenance).unwrap_or_default();
@@ -106,8 +108,13 @@ pub async fn lineage(
     let mut offset = 0_i32;
     for run in runs {
         let length = i32::try_from(run.length).unwrap_or(i32::MAX);
-        let ends = (vintage.start.plus(offset), vintage.start.plus(offset + length - 1));
-        let (Some(mut from), Some(mut to)) = ends else { break };
+        let ends = (
+            vintage.start.plus(offset),
+            vintage.start.plus(offset + length - 1),
+        );
+        let (Some(mut from), Some(mut to)) = ends else {
+            break;
+        };
         let mut skipped = 0;
         offset += length;
         if let Some(only) = only {
@@ -121,7 +128,13 @@ pub async fn lineage(
             Origin::Absent => continue,
             Origin::Upload { id, line } => {
                 let first = i64::from(line) + run.line_step * i64::from(skipped);
-                upload(database, id, u32::try_from(first).unwrap_or(line), run.line_step).await?
+                upload(
+                    database,
+                    id,
+                    u32::try_from(first).unwrap_or(line),
+                    run.line_step,
+                )
+                .await?
             }
             Origin::Run { id } => match origins.get(&id) {
                 Some(known) => known.clone(),

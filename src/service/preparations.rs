@@ -110,7 +110,14 @@ async fn check_plan(database: &Database, document: Document) -> Result<Plan, Fau
         let series = preview::series(vintage);
         let last = series.len().checked_sub(1).and_then(|i| series.period(i));
         if let Some(last) = last {
-            infos.insert(input, InputInfo { unit: series.unit, first: series.start, last });
+            infos.insert(
+                input,
+                InputInfo {
+                    unit: series.unit,
+                    first: series.start,
+                    last,
+                },
+            );
         }
     }
     blocking(move || preparation::plan(&document, &infos))
@@ -164,8 +171,10 @@ pub async fn run(
     let found = read_inputs(database, &document.inputs(), moment).await?;
     let pins: Vec<Pin> = found.iter().map(|(input, v)| pin(&input.key, v)).collect();
     let released = found.iter().map(|(_, v)| v.released).max();
-    let inputs: BTreeMap<InputRef, Series> =
-        found.into_iter().map(|(input, v)| (input, preview::series(v))).collect();
+    let inputs: BTreeMap<InputRef, Series> = found
+        .into_iter()
+        .map(|(input, v)| (input, preview::series(v)))
+        .collect();
     let outputs = blocking(move || preparation::evaluate(&document, &inputs))
         .await?
         .map_err(|errors| Fault::invalid("preparation_failed", errors))?;
@@ -188,7 +197,10 @@ pub async fn run(
     let (revision, changed) = write(&mut transaction, id, released, &outputs, author).await?;
     let result = StoredResult {
         revision,
-        outputs: outputs.iter().map(|o| output_view(o, changed.contains(&o.key))).collect(),
+        outputs: outputs
+            .iter()
+            .map(|o| output_view(o, changed.contains(&o.key)))
+            .collect(),
     };
     store::document::set_run_result(&mut transaction, id, &serde_json::json!(result)).await?;
     store::commit(transaction).await?;
@@ -237,7 +249,12 @@ async fn write(
         let (state, changes) = merge(before.as_ref(), &statement(run, &output.series));
         if changes.any() {
             changed.insert(output.key.clone());
-            vintages.push(NewVintage { segment_id: segment.id, released, state, changes });
+            vintages.push(NewVintage {
+                segment_id: segment.id,
+                released,
+                state,
+                changes,
+            });
         }
         // A run gives the whole series: what stood under another unit is over.
         for (series, sibling) in &siblings {
@@ -249,7 +266,12 @@ async fn write(
                 let old = row.state(output.key.frequency())?;
                 let state = State::empty(old.start);
                 let changes = crate::series::vintage::difference(&old, &state);
-                vintages.push(NewVintage { segment_id: *sibling, released, state, changes });
+                vintages.push(NewVintage {
+                    segment_id: *sibling,
+                    released,
+                    state,
+                    changes,
+                });
             }
         }
     }
@@ -307,7 +329,8 @@ pub async fn get_run(database: &Database, name: &str, id: i64) -> Result<Prepara
 }
 
 fn run_view(row: RunRow) -> Result<PreparationRun, Fault> {
-    let unreadable = |e: serde_json::Error| Fault::Internal(format!("run {} cannot be read: {e}", row.id));
+    let unreadable =
+        |e: serde_json::Error| Fault::Internal(format!("run {} cannot be read: {e}", row.id));
     let result: StoredResult = serde_json::from_value(row.result.0).map_err(unreadable)?;
     Ok(PreparationRun {
         id: row.id,
@@ -348,8 +371,15 @@ pub(super) async fn origin(
     }
     Ok(OriginView::Run {
         run: run.id,
-        steps: by_key.get(text.as_str()).map_or_else(Vec::new, |o| o.steps.clone()),
-        inputs: run.pins.iter().filter(|p| seen.contains(p.series.as_str())).cloned().collect(),
+        steps: by_key
+            .get(text.as_str())
+            .map_or_else(Vec::new, |o| o.steps.clone()),
+        inputs: run
+            .pins
+            .iter()
+            .filter(|p| seen.contains(p.series.as_str()))
+            .cloned()
+            .collect(),
         preparation: run.preparation.clone(),
         version: run.version,
         method_version: run.method_version.clone(),

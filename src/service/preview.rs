@@ -4,9 +4,9 @@ use super::Fault;
 use super::views::{OpenedSegment, ProposedLink};
 use crate::series::Series;
 use crate::series::algebra::link;
+use crate::store::Connection;
 use crate::store::series::StoredSegment;
 use crate::store::vintage::{self, AsOf, ReadVintage};
-use crate::store::Connection;
 
 /// Segments for which a link is worked out; a table of thousands needs no thousand proposals.
 const SHOWN: usize = 20;

@@ -113,11 +113,16 @@ pub async fn receive<E: std::fmt::Display>(
     let released = request.released.unwrap_or(request.today);
     let mut transaction = database.begin_upload().await?;
     let context = currencies::context(&mut transaction).await?;
-    let reader = Reader::new(request.settings.clone(), context, limits.intake, request.gzip_declared)
-        .map_err(|fatal| Fault::BadRequest {
-            detail: fatal.to_string(),
-            errors: fatal.findings().to_vec(),
-        })?;
+    let reader = Reader::new(
+        request.settings.clone(),
+        context,
+        limits.intake,
+        request.gzip_declared,
+    )
+    .map_err(|fatal| Fault::BadRequest {
+        detail: fatal.to_string(),
+        errors: fatal.findings().to_vec(),
+    })?;
     let new = NewUpload {
         kind: request.settings.kind(),
         parameters: &parameters_json,
@@ -145,13 +150,17 @@ pub async fn receive<E: std::fmt::Display>(
         return uploads::recognised(row.clone());
     }
     let mut parts = ReportParts::new(&body.intake);
-    if let Some(other) = earlier.iter().find(|row| {
-        row.kind != request.settings.kind() || row.parameters.0 != parameters_json
-    }) {
+    if let Some(other) = earlier
+        .iter()
+        .find(|row| row.kind != request.settings.kind() || row.parameters.0 != parameters_json)
+    {
         parts.findings.push(
             Finding::error(
                 "same_bytes_other_settings",
-                format!("these bytes came before as upload {} with other settings", other.id),
+                format!(
+                    "these bytes came before as upload {} with other settings",
+                    other.id
+                ),
             )
             .found(uploads::settings_text(&parameters, request.settings.kind()))
             .expected(uploads::stored_settings_text(other))
@@ -159,12 +168,23 @@ pub async fn receive<E: std::fmt::Display>(
         );
     }
 
-    let source = receiver.source(&mut transaction, body.intake.pieces).await?;
+    let source = receiver
+        .source(&mut transaction, body.intake.pieces)
+        .await?;
     let mut attempt = 0;
     let (state, landed) = loop {
         attempt += 1;
         store::savepoint(&mut transaction, Savepoint::Upload).await?;
-        match store_and_land(&mut transaction, id, released, &request, &source, &mut parts).await {
+        match store_and_land(
+            &mut transaction,
+            id,
+            released,
+            &request,
+            &source,
+            &mut parts,
+        )
+        .await
+        {
             Err(Fault::Store(e)) if e.is_transient() && attempt < ATTEMPTS => {
                 store::rollback_to(&mut transaction, Savepoint::Upload).await?;
             }
@@ -180,12 +200,18 @@ pub async fn receive<E: std::fmt::Display>(
         sha256: &body.sha256,
         byte_count,
         compression: body.intake.understood.compression.as_str(),
-        landed_revision: landed.as_ref().filter(|_| state == "landed").and_then(|l| l.revision),
+        landed_revision: landed
+            .as_ref()
+            .filter(|_| state == "landed")
+            .and_then(|l| l.revision),
         report: &report_json,
     };
     store::upload::finish(&mut transaction, id, &outcome).await?;
-    let rejects: Vec<serde_json::Value> =
-        parts.rejects.iter().filter_map(|r| serde_json::to_value(r).ok()).collect();
+    let rejects: Vec<serde_json::Value> = parts
+        .rejects
+        .iter()
+        .filter_map(|r| serde_json::to_value(r).ok())
+        .collect();
     store::upload::insert_rejects(&mut transaction, id, &rejects).await?;
     let row = store::upload::get(&mut transaction, id)
         .await?
@@ -201,14 +227,17 @@ pub async fn receive<E: std::fmt::Display>(
         store::commit(transaction).await?;
     }
     if state == "refused" {
-        let errors: Vec<Finding> =
-            report.rejects.iter().map(|r| r.finding.clone()).collect();
+        let errors: Vec<Finding> = report.rejects.iter().map(|r| r.finding.clone()).collect();
         let detail = format!(
             "{} rows were rejected, so nothing of the file counts; mend them, or send it with \
              on_reject=skip",
             report.understood.rows_rejected
         );
-        return Err(Fault::Refused { detail, errors, upload: Box::new(view) });
+        return Err(Fault::Refused {
+            detail,
+            errors,
+            upload: Box::new(view),
+        });
     }
     Ok(view)
 }
@@ -235,7 +264,8 @@ async fn store_and_land(
                 fragment
             })
             .collect();
-        let wanted: Vec<(&SeriesKey, &Unit)> = fragments.iter().map(|f| (&f.key, &f.unit)).collect();
+        let wanted: Vec<(&SeriesKey, &Unit)> =
+            fragments.iter().map(|f| (&f.key, &f.unit)).collect();
         let segments = store::series::ensure_segments(connection, &wanted).await?;
         let derived = store::vintage::fed_by_runs(
             connection,
@@ -264,8 +294,7 @@ async fn store_and_land(
         return Ok(("refused", None));
     }
     store::savepoint(connection, Savepoint::Landing).await?;
-    let landed =
-        landing::land(connection, id, released, Action::Land, &request.author).await?;
+    let landed = landing::land(connection, id, released, Action::Land, &request.author).await?;
     let opened = preview::opened_segments(connection, &landed.opened).await?;
     parts.add_landing(&landed, opened);
     if parts.holds() && request.on_finding == OnFinding::Hold {
@@ -281,7 +310,10 @@ fn statement(upload: i64, scope: Scope, fragment: Fragment) -> Statement {
         .iter()
         .map(|line| match line {
             0 => Origin::Absent,
-            line => Origin::Upload { id: upload, line: *line },
+            line => Origin::Upload {
+                id: upload,
+                line: *line,
+            },
         })
         .collect();
     Statement {
@@ -381,13 +413,19 @@ impl Receiver<'_> {
         }
     }
 
-    async fn stage(&mut self, connection: &mut Connection, pieces: Vec<Piece>) -> Result<(), Fault> {
+    async fn stage(
+        &mut self,
+        connection: &mut Connection,
+        pieces: Vec<Piece>,
+    ) -> Result<(), Fault> {
         if self.staged.is_none() {
             store::staging::create(connection).await?;
         }
         let groups = self.staged.get_or_insert_default();
-        let numbered: Vec<(i32, Piece)> =
-            pieces.into_iter().map(|piece| (groups.number(&piece), piece)).collect();
+        let numbered: Vec<(i32, Piece)> = pieces
+            .into_iter()
+            .map(|piece| (groups.number(&piece), piece))
+            .collect();
         store::staging::insert(connection, &numbered).await?;
         Ok(())
     }
@@ -433,7 +471,9 @@ pub fn too_large(limit: u64) -> Fault {
 
 fn unreadable(fatal: &Fatal) -> Fault {
     match fatal {
-        Fatal::TooLarge(_) => Fault::TooLarge { detail: fatal.to_string() },
+        Fatal::TooLarge(_) => Fault::TooLarge {
+            detail: fatal.to_string(),
+        },
         Fatal::Refused(findings) => Fault::invalid("unreadable_file", findings.clone()),
     }
 }
@@ -467,7 +507,9 @@ fn work(
             return;
         }
         if reader.pending_bytes() > budget
-            && to_store.blocking_send(FromWorker::Pieces(reader.take_pieces())).is_err()
+            && to_store
+                .blocking_send(FromWorker::Pieces(reader.take_pieces()))
+                .is_err()
         {
             return;
         }
@@ -504,7 +546,8 @@ impl Groups {
         }
         let number = i32::try_from(self.identities.len()).unwrap_or(i32::MAX);
         numbers.push(number);
-        self.identities.push((piece.key.clone(), piece.unit.clone()));
+        self.identities
+            .push((piece.key.clone(), piece.unit.clone()));
         number
     }
 }
@@ -533,13 +576,18 @@ impl Source {
     ) -> Result<Vec<Vec<Piece>>, Fault> {
         let index = |n: i32| usize::try_from(n).unwrap_or(0);
         match self {
-            Self::Memory(groups) => {
-                Ok(groups[index(first)..index(end).min(groups.len())].to_vec())
-            }
+            Self::Memory(groups) => Ok(groups[index(first)..index(end).min(groups.len())].to_vec()),
             Self::Staged(groups) => {
                 let identity = |n: i32| {
                     let (key, unit) = groups.identities[index(n)].clone();
-                    Piece { key, unit, periods: vec![], values: vec![], status: vec![], lines: vec![] }
+                    Piece {
+                        key,
+                        unit,
+                        periods: vec![],
+                        values: vec![],
+                        status: vec![],
+                        lines: vec![],
+                    }
                 };
                 let rows = store::staging::fetch(connection, first, end - 1, identity).await?;
                 let mut grouped: BTreeMap<i32, Vec<Piece>> = BTreeMap::new();

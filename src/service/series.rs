@@ -36,8 +36,10 @@ impl Moment {
             if let Some(number) = text.strip_prefix("revision:") {
                 as_of.revision = Some(number.parse().map_err(|_| bad_moment("as_of", text))?);
             } else {
-                as_of.released =
-                    Some(text.parse::<Date>().map_err(|_| bad_moment("as_of", text))?);
+                as_of.released = Some(
+                    text.parse::<Date>()
+                        .map_err(|_| bad_moment("as_of", text))?,
+                );
             }
         }
         if let Some(text) = &self.recorded_as_of {
@@ -114,7 +116,11 @@ pub async fn list(
     let rows = store::series::search(&mut connection, &search).await?;
     let page = Page::cut(rows, limit, |r: &ListedSeries| r.id.to_string());
     Ok(Page {
-        items: page.items.into_iter().map(listed).collect::<Result<_, _>>()?,
+        items: page
+            .items
+            .into_iter()
+            .map(listed)
+            .collect::<Result<_, _>>()?,
         next: page.next,
     })
 }
@@ -185,7 +191,10 @@ pub(super) async fn vintage(
 
 /// Transformation on reading, by its name in the query.
 fn growth_of(name: &str) -> Option<(GrowthKind, Over, bool)> {
-    GROWTHS.iter().find(|(n, ..)| *n == name).map(|(_, k, o, a)| (*k, *o, *a))
+    GROWTHS
+        .iter()
+        .find(|(n, ..)| *n == name)
+        .map(|(_, k, o, a)| (*k, *o, *a))
 }
 
 /// Names of growth transformations: kind, distance, annualised.
@@ -233,8 +242,12 @@ pub async fn observations(
     };
     let (from, to) = (bound("from", from)?, bound("to", to)?);
     let vintage = vintage(database, key, moment).await?;
-    let (segment, released, recorded, revision) =
-        (vintage.segment, vintage.released, vintage.recorded, vintage.revision);
+    let (segment, released, recorded, revision) = (
+        vintage.segment,
+        vintage.released,
+        vintage.recorded,
+        vintage.revision,
+    );
     let mut series = series(vintage);
     if let Some((kind, over, annualised)) = growth_name.and_then(growth_of) {
         series = growth(&series, kind, over, annualised)

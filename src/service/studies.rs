@@ -116,7 +116,8 @@ pub async fn get_run(database: &Database, name: &str, id: i64) -> Result<StudyRu
 }
 
 fn view(row: RunRow, runs_so_far: i64) -> Result<StudyRun, Fault> {
-    let unreadable = |e: serde_json::Error| Fault::Internal(format!("run {} cannot be read: {e}", row.id));
+    let unreadable =
+        |e: serde_json::Error| Fault::Internal(format!("run {} cannot be read: {e}", row.id));
     Ok(StudyRun {
         id: row.id,
         study: row.name,
@@ -133,7 +134,12 @@ fn view(row: RunRow, runs_so_far: i64) -> Result<StudyRun, Fault> {
 /// The run as a text for a person.
 #[must_use]
 pub fn text(run: &StudyRun, with_unreliable: bool) -> String {
-    let newest = run.pins.iter().map(|p| p.released.as_str()).max().unwrap_or("-");
+    let newest = run
+        .pins
+        .iter()
+        .map(|p| p.released.as_str())
+        .max()
+        .unwrap_or("-");
     let header = [
         format!(
             "Study {} version {}, run {} (its {}. run; {}, by {})",

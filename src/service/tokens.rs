@@ -80,7 +80,11 @@ impl Gate {
     ///
     /// # Errors
     /// [`Fault::Store`].
-    pub async fn admit(&self, database: &Database, bearer: Option<&str>) -> Result<Admission, Fault> {
+    pub async fn admit(
+        &self,
+        database: &Database,
+        bearer: Option<&str>,
+    ) -> Result<Admission, Fault> {
         let Some(token) = bearer else {
             return Ok(if self.any_token(database).await? {
                 Admission::TokenMissing
@@ -128,7 +132,9 @@ impl Gate {
 }
 
 fn lock<T>(mutex: &Mutex<T>) -> std::sync::MutexGuard<'_, T> {
-    mutex.lock().unwrap_or_else(std::sync::PoisonError::into_inner)
+    mutex
+        .lock()
+        .unwrap_or_else(std::sync::PoisonError::into_inner)
 }
 
 fn hash(token: &str) -> [u8; 32] {
@@ -156,7 +162,9 @@ pub async fn create(
         Ok(_) => Ok(secret),
         Err(e) if e.constraint() == Some("token_name_unique") => Err(Fault::Conflict {
             code: "name_taken",
-            detail: format!("a valid token is already named '{name}'; revoke it or take another name"),
+            detail: format!(
+                "a valid token is already named '{name}'; revoke it or take another name"
+            ),
         }),
         Err(e) => Err(e.into()),
     }

@@ -82,8 +82,12 @@ impl ReportParts {
         const KEPT: usize = 1000;
         self.duplicate_count += duplicates.len() as u64;
         let room = KEPT.saturating_sub(self.duplicates.len());
-        self.duplicates
-            .extend(duplicates.iter().take(room).map(|d| Reject::duplicate(key, d)));
+        self.duplicates.extend(
+            duplicates
+                .iter()
+                .take(room)
+                .map(|d| Reject::duplicate(key, d)),
+        );
     }
 
     pub(super) fn add_landing(&mut self, landing: &Landing, opened: Vec<OpenedSegment>) {
@@ -105,8 +109,11 @@ impl ReportParts {
         self.rejects.append(&mut self.duplicates);
         self.rejects.sort_by_key(|r| r.finding.place.line);
         if self.duplicate_count > 0 {
-            *self.understood.rejects_by_code.entry("duplicate_key".to_owned()).or_default() +=
-                self.duplicate_count;
+            *self
+                .understood
+                .rejects_by_code
+                .entry("duplicate_key".to_owned())
+                .or_default() += self.duplicate_count;
             self.understood.rows_rejected += self.duplicate_count;
             self.understood.rows_accepted -= self.duplicate_count;
         }
@@ -185,7 +192,9 @@ pub async fn list(
     let mut connection = database.connection().await?;
     let rows = store::upload::list(&mut connection, state, kind, before, limit + 1).await?;
     let views = rows.into_iter().map(view).collect::<Result<_, _>>()?;
-    Ok(Page::cut(views, limit, |u: &UploadView| u.id.unwrap_or_default().to_string()))
+    Ok(Page::cut(views, limit, |u: &UploadView| {
+        u.id.unwrap_or_default().to_string()
+    }))
 }
 
 /// Rejects of an upload.
@@ -200,7 +209,9 @@ pub async fn rejects(
 ) -> Result<Page<Reject>, Fault> {
     let after = after.map_or(Ok(0), cursor)?;
     let mut connection = database.connection().await?;
-    store::upload::get(&mut connection, id).await?.ok_or_else(|| no_upload(id))?;
+    store::upload::get(&mut connection, id)
+        .await?
+        .ok_or_else(|| no_upload(id))?;
     let after = i32::try_from(after).unwrap_or(i32::MAX);
     let rows = store::upload::rejects(&mut connection, id, after, limit + 1).await?;
     let page = Page::cut(rows, limit, |(number, _)| number.to_string());
@@ -240,14 +251,18 @@ pub async fn raw(
 /// [`Fault::NotFound`]; [`Fault::Conflict`] where it is not held; [`Fault::Store`].
 pub async fn accept(database: &Database, id: i64, author: &str) -> Result<UploadView, Fault> {
     let mut transaction = database.begin_upload().await?;
-    let state = store::upload::lock(&mut transaction, id).await?.ok_or_else(|| no_upload(id))?;
+    let state = store::upload::lock(&mut transaction, id)
+        .await?
+        .ok_or_else(|| no_upload(id))?;
     if state != "held" {
         return Err(Fault::Conflict {
             code: "not_held",
             detail: format!("upload {id} is {state}; only a held upload can be accepted"),
         });
     }
-    let row = store::upload::get(&mut transaction, id).await?.ok_or_else(|| no_upload(id))?;
+    let row = store::upload::get(&mut transaction, id)
+        .await?
+        .ok_or_else(|| no_upload(id))?;
     let released = store::date(row.released)?;
     let landed = landing::land(&mut transaction, id, released, Action::Accept, author).await?;
     let report = match serde_json::from_value::<UploadReport>(row.report.0.clone()) {
@@ -261,7 +276,15 @@ pub async fn accept(database: &Database, id: i64, author: &str) -> Result<Upload
         .map_err(|e| Fault::Internal(format!("a report cannot be written: {e}")))?,
         Err(_) => row.report.0,
     };
-    store::upload::set_state(&mut transaction, id, "landed", landed.revision, None, &report).await?;
+    store::upload::set_state(
+        &mut transaction,
+        id,
+        "landed",
+        landed.revision,
+        None,
+        &report,
+    )
+    .await?;
     store::commit(transaction).await?;
     get(database, id).await
 }
@@ -272,15 +295,21 @@ pub async fn accept(database: &Database, id: i64, author: &str) -> Result<Upload
 /// [`Fault::NotFound`]; [`Fault::Conflict`] where it neither landed nor is held; [`Fault::Store`].
 pub async fn withdraw(database: &Database, id: i64, author: &str) -> Result<UploadView, Fault> {
     let mut transaction = database.begin_upload().await?;
-    let state = store::upload::lock(&mut transaction, id).await?.ok_or_else(|| no_upload(id))?;
-    let row = store::upload::get(&mut transaction, id).await?.ok_or_else(|| no_upload(id))?;
+    let state = store::upload::lock(&mut transaction, id)
+        .await?
+        .ok_or_else(|| no_upload(id))?;
+    let row = store::upload::get(&mut transaction, id)
+        .await?
+        .ok_or_else(|| no_upload(id))?;
     let report = row.report.0;
     match state.as_str() {
         "held" => {
-            store::upload::set_state(&mut transaction, id, "withdrawn", None, None, &report).await?;
+            store::upload::set_state(&mut transaction, id, "withdrawn", None, None, &report)
+                .await?;
         }
         "landed" => {
-            store::upload::set_state(&mut transaction, id, "withdrawn", None, None, &report).await?;
+            store::upload::set_state(&mut transaction, id, "withdrawn", None, None, &report)
+                .await?;
             let released = store::date(row.released)?;
             let revision = landing::unland(&mut transaction, id, released, author).await?;
             store::upload::set_state(

@@ -31,10 +31,7 @@ pub async fn create(connection: &mut PgConnection) -> Result<(), Error> {
 ///
 /// # Errors
 /// [`Error::Database`].
-pub async fn insert(
-    connection: &mut PgConnection,
-    pieces: &[(i32, Piece)],
-) -> Result<(), Error> {
+pub async fn insert(connection: &mut PgConnection, pieces: &[(i32, Piece)]) -> Result<(), Error> {
     let mut rows = CopyBuffer::new(5);
     for (group, piece) in pieces {
         let periods: Vec<u8> = piece.periods.iter().flat_map(|p| p.to_be_bytes()).collect();
@@ -93,10 +90,16 @@ pub async fn fetch(
                 .map(|b| Status::from_byte(b).ok_or_else(|| Error::corrupt("staged row", "status")))
                 .collect::<Result<_, _>>()?;
             let piece = Piece {
-                periods: periods.chunks_exact(4).map(|c| i32::from_be_bytes(word(c))).collect(),
+                periods: periods
+                    .chunks_exact(4)
+                    .map(|c| i32::from_be_bytes(word(c)))
+                    .collect(),
                 values,
                 status,
-                lines: lines.chunks_exact(4).map(|c| u32::from_be_bytes(word(c))).collect(),
+                lines: lines
+                    .chunks_exact(4)
+                    .map(|c| u32::from_be_bytes(word(c)))
+                    .collect(),
                 ..identity(group)
             };
             Ok((group, piece))

@@ -2,9 +2,9 @@
 
 use futures_util::StreamExt;
 use futures_util::stream::BoxStream;
+use sqlx::PgConnection;
 use sqlx::types::Json;
 use sqlx::types::chrono::{DateTime, NaiveDate, Utc};
-use sqlx::PgConnection;
 
 use super::{Database, Error, day};
 use crate::time::Date;

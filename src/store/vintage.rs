@@ -210,8 +210,8 @@ impl TryFrom<FragmentRow> for StatementRow {
 
     fn try_from(r: FragmentRow) -> Result<Self, Error> {
         let what = format!("fragment of upload {}", r.upload_id);
-        let frequency = Frequency::from_code(&r.frequency)
-            .ok_or_else(|| Error::corrupt(&what, "frequency"))?;
+        let frequency =
+            Frequency::from_code(&r.frequency).ok_or_else(|| Error::corrupt(&what, "frequency"))?;
         let origins = provenance::decode(&r.lines)
             .map(|runs| provenance::expand(&runs))
             .filter(|origins| origins.len() == r.values.len())
@@ -522,7 +522,15 @@ pub async fn version(
     key: &SeriesKey,
     as_of: AsOf,
 ) -> Result<Option<(i32, i64)>, Error> {
-    let [area, measure, partner, product, currency, source, adjustment] = key.places();
+    let [
+        area,
+        measure,
+        partner,
+        product,
+        currency,
+        source,
+        adjustment,
+    ] = key.places();
     let row = sqlx::query!(
         r#"SELECT g.number, v.revision
            FROM series s
@@ -556,10 +564,7 @@ pub async fn version(
 ///
 /// # Errors
 /// [`Error::Database`].
-pub async fn fed_by_runs(
-    connection: &mut PgConnection,
-    series: &[i64],
-) -> Result<Vec<i64>, Error> {
+pub async fn fed_by_runs(connection: &mut PgConnection, series: &[i64]) -> Result<Vec<i64>, Error> {
     let rows = sqlx::query_scalar!(
         r#"SELECT DISTINCT g.series_id FROM segment g JOIN vintage v ON v.segment_id = g.id
            JOIN change c ON c.revision = v.revision AND c.action = 'run'
