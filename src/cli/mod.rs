@@ -1,8 +1,12 @@
 //! The commands of the program.
 
 mod database;
+mod serve;
+mod token;
 
 use crate::config::{Settings, check_environment};
+use crate::demo;
+use crate::http::openapi;
 use crate::store::cluster;
 use crate::telemetry;
 use clap::{CommandFactory, Parser, Subcommand};
@@ -20,6 +24,19 @@ struct Cli {
 
 #[derive(Debug, Subcommand)]
 enum Command {
+    /// Serve the HTTP API until interrupted
+    Serve,
+    /// Show the whole way on an invented economy: raw files in, constrained growth out
+    Demo {
+        /// Go on serving until interrupted
+        #[arg(long)]
+        keep: bool,
+    },
+    /// Bearer tokens: create, list, revoke
+    #[command(subcommand)]
+    Token(token::TokenCommand),
+    /// Print the OpenAPI document of the API
+    Openapi,
     /// The database: where it is, start, stop, migrate, dump, restore
     #[command(subcommand)]
     Database(database::DatabaseCommand),
@@ -60,6 +77,16 @@ fn run(cli: Cli) -> anyhow::Result<()> {
         .build()?;
     runtime.block_on(async {
         match cli.command {
+            Command::Serve => serve::serve(&cli.settings).await,
+            Command::Demo { keep } => {
+                let mut out = std::io::stdout();
+                demo::run(&cli.settings, keep, serve::stopped(), &mut out).await
+            }
+            Command::Token(command) => command.run(&cli.settings).await,
+            Command::Openapi => {
+                say(openapi::document().trim_end());
+                Ok(())
+            }
             Command::Database(command) => command.run(&cli.settings).await,
             Command::KeepCluster { .. } => unreachable!("the keeper runs without a runtime"),
         }
