@@ -2,10 +2,11 @@
 
 use super::say;
 use crate::config::Settings;
-use crate::store::Database;
 use crate::store::cluster::{self, Address, Stopped};
+use crate::store::{Database, archive};
 use anyhow::Context;
 use clap::Subcommand;
+use std::path::PathBuf;
 use tokio::signal::unix::{SignalKind, signal};
 
 #[derive(Debug, Subcommand)]
@@ -18,6 +19,16 @@ pub(super) enum DatabaseCommand {
     Stop,
     /// Apply the migrations that are missing
     Migrate,
+    /// Write everything to a new file; the service may run meanwhile
+    Dump {
+        /// The file to make
+        file: PathBuf,
+    },
+    /// Put the content of a dump in the place of everything; the service must not run
+    Restore {
+        /// The file to read
+        file: PathBuf,
+    },
 }
 
 impl DatabaseCommand {
@@ -30,6 +41,27 @@ impl DatabaseCommand {
                 let options = settings.database("realterms database migrate", true)?;
                 Database::open(&options).await?.close().await;
                 say("the database is up to date");
+                Ok(())
+            }
+            Self::Dump { file } => {
+                let holder = "realterms database dump";
+                let tools = cluster::find_binaries(&settings.cluster(holder)?)?;
+                let options = settings.database(holder, true)?;
+                let database = Database::open_without_migrating(&options).await?;
+                let dumped = archive::dump(&database, &tools, &file).await;
+                database.close().await;
+                dumped?;
+                say(format!("dumped to {}", file.display()));
+                Ok(())
+            }
+            Self::Restore { file } => {
+                let holder = "realterms database restore";
+                let tools = cluster::find_binaries(&settings.cluster(holder)?)?;
+                let database = Database::open(&settings.database(holder, false)?).await?;
+                let restored = archive::restore(&database, &tools, &file).await;
+                database.close().await;
+                restored?;
+                say(format!("restored from {}", file.display()));
                 Ok(())
             }
         }

@@ -110,6 +110,11 @@ impl Decoder {
             }
         };
         self.received += taken as u64;
+        self.bounded()?;
+        Ok(taken)
+    }
+
+    fn bounded(&self) -> Result<(), Fault> {
         let decoded = self.characters.decoded;
         if decoded > self.limits.max_decoded_bytes {
             return Err(Fault::TooLarge);
@@ -117,7 +122,7 @@ impl Decoder {
         if decoded > RATIO_FROM && decoded / self.received.max(1) > self.limits.max_ratio {
             return Err(Fault::Ratio);
         }
-        Ok(taken)
+        Ok(())
     }
 
     /// Appends what is left once all bytes have come.
@@ -131,6 +136,7 @@ impl Decoder {
                 self.characters.append(&output, text)?;
             }
         }
+        self.bounded()?;
         match self.characters.tail.len() {
             0 => Ok(()),
             n => Err(Fault::InvalidUtf8 {

@@ -33,3 +33,6 @@ pub use kind::{ColumnSpec, KindSpec, MeasureSpec, kinds, template_csv};
 pub use reader::Reader;
 pub use report::{Intake, Understood, UnderstoodColumn, UnderstoodPeriods};
 pub use settings::{Context, Limits, Settings};
+
+#[cfg(test)]
+mod tests;

@@ -3,261 +3,14 @@
 use std::collections::{BTreeMap, BTreeSet};
 use std::fmt;
 
-use serde::de::value::MapAccessDeserializer;
 use serde::de::{MapAccess, Visitor};
-use serde::{Deserialize, Deserializer, Serialize};
+use serde::{Deserialize, Deserializer};
 use serde_json::Value;
-use utoipa::ToSchema;
 
 use super::fault;
+use super::step::{InputRef, Step};
 use crate::finding::Finding;
-use crate::series::algebra::{Ends, Method, Over, Span, WeightYears};
-use crate::series::{CurrencyCode, GrowthKind, SeriesKey};
-use crate::time::Frequency;
-
-/// A series as an operand: a key, or in a document also `{"take": key, "segment": n}`.
-#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, ToSchema)]
-pub struct InputRef {
-    /// Which series.
-    #[schema(value_type = String)]
-    pub key: SeriesKey,
-    /// Which of its segments, where it has several; the current one where absent.
-    #[serde(skip_serializing_if = "Option::is_none")]
-    pub segment: Option<i32>,
-}
-
-impl fmt::Display for InputRef {
-    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        write!(f, "{}", self.key)?;
-        self.segment
-            .map_or(Ok(()), |segment| write!(f, " (segment {segment})"))
-    }
-}
-
-#[derive(Deserialize)]
-#[serde(deny_unknown_fields)]
-struct WithSegment {
-    take: SeriesKey,
-    segment: Option<i32>,
-}
-
-impl<'de> Deserialize<'de> for InputRef {
-    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        struct KeyOrObject;
-        impl<'de> Visitor<'de> for KeyOrObject {
-            type Value = InputRef;
-
-            fn expecting(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-                f.write_str("a series key or {\"take\": key, \"segment\": n}")
-            }
-
-            fn visit_str<E: serde::de::Error>(self, text: &str) -> Result<InputRef, E> {
-                let key = text.parse().map_err(E::custom)?;
-                Ok(InputRef { key, segment: None })
-            }
-
-            fn visit_map<A: MapAccess<'de>>(self, map: A) -> Result<InputRef, A::Error> {
-                let WithSegment { take, segment } =
-                    WithSegment::deserialize(MapAccessDeserializer::new(map))?;
-                Ok(InputRef { key: take, segment })
-            }
-        }
-        deserializer.deserialize_any(KeyOrObject)
-    }
-}
-
-/// One step of an output. The table of the [module](super) says what each does.
-#[derive(Clone, Debug, PartialEq, Deserialize)]
-#[serde(rename_all = "snake_case", deny_unknown_fields)]
-#[expect(missing_docs, reason = "fields carry the names of the table of steps")]
-pub enum Step {
-    /// Begins with a series.
-    Take(InputRef),
-    /// Adds series, to what came before or to the first named.
-    Add(Vec<InputRef>),
-    /// Subtracts series, from what came before or from the first named.
-    Subtract(Vec<InputRef>),
-    /// Multiplies by series.
-    Multiply(Vec<InputRef>),
-    /// Divides by series.
-    Divide(Vec<InputRef>),
-    /// Geometric mean of series.
-    GeometricMean {
-        of: Vec<InputRef>,
-        #[serde(default)]
-        weights: Option<Vec<f64>>,
-    },
-    /// One series continued by another at the first one's level.
-    Link {
-        target: InputRef,
-        with: InputRef,
-        #[serde(default)]
-        over: Option<Span>,
-    },
-    /// Weighted growth of partners' real income.
-    ForeignIncome {
-        partners: Vec<IncomePartner>,
-        reference: Span,
-        #[serde(default = "hundred")]
-        reference_value: f64,
-        #[serde(default)]
-        weight_years: WeightYears,
-    },
-    /// Home prices over foreign prices in home money; up is a real appreciation.
-    RealExchangeRate {
-        home_price: InputRef,
-        foreign_price: InputRef,
-        #[serde(default)]
-        rate: Option<InputRef>,
-        reference: Span,
-        #[serde(default = "hundred")]
-        reference_value: f64,
-    },
-    /// Weighted real exchange rates against partners; up is a real appreciation.
-    RealEffectiveExchangeRate {
-        home_price: InputRef,
-        partners: Vec<PricePartner>,
-        reference: Span,
-        #[serde(default = "hundred")]
-        reference_value: f64,
-        #[serde(default)]
-        weight_years: WeightYears,
-    },
-    /// Index to another reference.
-    Rebase {
-        reference: Span,
-        #[serde(default = "hundred")]
-        reference_value: f64,
-    },
-    /// Nominal money over a price index.
-    Deflate { by: InputRef, reference: Span },
-    /// Another currency.
-    Convert {
-        to: CurrencyCode,
-        rates: InputRef,
-        #[serde(default)]
-        at: Option<Span>,
-    },
-    /// A lower frequency.
-    Aggregate {
-        to: Frequency,
-        #[serde(default)]
-        by: Option<Method>,
-        #[serde(default)]
-        min_coverage: Option<f64>,
-        #[serde(default)]
-        ends: Ends,
-    },
-    /// Growth rates.
-    Growth {
-        kind: GrowthKind,
-        #[serde(default)]
-        over: Over,
-        #[serde(default)]
-        annualised: bool,
-    },
-    /// The other sign.
-    Negate {},
-}
-
-/// A partner of [`Step::ForeignIncome`].
-#[derive(Clone, Debug, PartialEq, Deserialize)]
-#[serde(deny_unknown_fields)]
-pub struct IncomePartner {
-    /// Its real income.
-    pub income: InputRef,
-    /// Its annual weights.
-    pub weights: InputRef,
-}
-
-/// A partner of [`Step::RealEffectiveExchangeRate`].
-#[derive(Clone, Debug, PartialEq, Deserialize)]
-#[serde(deny_unknown_fields)]
-pub struct PricePartner {
-    /// Its price index.
-    pub price: InputRef,
-    /// Exchange rate between home and partner money; none where both share one.
-    #[serde(default)]
-    pub rate: Option<InputRef>,
-    /// Its annual weights.
-    pub weights: InputRef,
-}
-
-fn hundred() -> f64 {
-    100.0
-}
-
-impl Step {
-    /// All series that the step names.
-    #[must_use]
-    pub fn operands(&self) -> Vec<&InputRef> {
-        match self {
-            Self::Take(series) | Self::Deflate { by: series, .. } => vec![series],
-            Self::Convert { rates, .. } => vec![rates],
-            Self::Add(of)
-            | Self::Subtract(of)
-            | Self::Multiply(of)
-            | Self::Divide(of)
-            | Self::GeometricMean { of, .. } => of.iter().collect(),
-            Self::Link { target, with, .. } => vec![target, with],
-            Self::ForeignIncome { partners, .. } => partners
-                .iter()
-                .flat_map(|p| [&p.income, &p.weights])
-                .collect(),
-            Self::RealExchangeRate {
-                home_price,
-                foreign_price,
-                rate,
-                ..
-            } => [home_price, foreign_price]
-                .into_iter()
-                .chain(rate)
-                .collect(),
-            Self::RealEffectiveExchangeRate {
-                home_price,
-                partners,
-                ..
-            } => std::iter::once(home_price)
-                .chain(
-                    partners
-                        .iter()
-                        .flat_map(|p| [&p.price, &p.weights].into_iter().chain(&p.rate)),
-                )
-                .collect(),
-            Self::Rebase { .. }
-            | Self::Aggregate { .. }
-            | Self::Growth { .. }
-            | Self::Negate {} => vec![],
-        }
-    }
-
-    /// Why the step cannot stand where it does: first, or after others.
-    fn misplaced(&self, first: bool) -> Option<&'static str> {
-        match self {
-            Self::Take(_)
-            | Self::GeometricMean { .. }
-            | Self::Link { .. }
-            | Self::ForeignIncome { .. }
-            | Self::RealExchangeRate { .. }
-            | Self::RealEffectiveExchangeRate { .. } => {
-                (!first).then_some("it begins an output and can only stand first")
-            }
-            Self::Add(of) | Self::Subtract(of) | Self::Multiply(of) | Self::Divide(of) => {
-                match (first, of.len()) {
-                    (true, 0 | 1) => Some("as the first step it names at least two series"),
-                    (false, 0) => Some("it names at least one series"),
-                    _ => None,
-                }
-            }
-            Self::Rebase { .. }
-            | Self::Deflate { .. }
-            | Self::Convert { .. }
-            | Self::Aggregate { .. }
-            | Self::Growth { .. }
-            | Self::Negate {} => first.then_some("it needs a series before it; begin with take"),
-        }
-    }
-}
+use crate::series::SeriesKey;
 
 /// A preparation: outputs by key, each a list of steps.
 #[derive(Clone, Debug, PartialEq)]
@@ -269,7 +22,7 @@ pub struct Document {
 }
 
 #[derive(Deserialize)]
-#[serde(deny_unknown_fields)]
+#[serde(deny_unknown_fields, expecting = "an object with outputs")]
 struct Raw {
     #[serde(default)]
     title: Option<String>,
@@ -309,6 +62,9 @@ impl Document {
     /// or missing fields, keys that are none, steps out of place, outputs given twice or depending
     /// on themselves.
     pub fn parse(text: &str) -> Result<Self, Vec<Finding>> {
+        if text.trim_start().starts_with('[') {
+            return Err(vec![fault::not_an_object("")]);
+        }
         let raw: Raw =
             serde_json::from_str(text).map_err(|e| vec![fault::of_json(text, "", &e)])?;
         let mut faults = Vec::new();
@@ -395,7 +151,7 @@ fn parse_steps(pointer: &str, values: &[Value], faults: &mut Vec<Finding>) -> Ve
     for (i, value) in values.iter().enumerate() {
         let pointer = format!("{pointer}/{i}");
         match parse_step(&pointer, value) {
-            Err(finding) => faults.push(finding),
+            Err(finding) => faults.push(*finding),
             Ok(step) => {
                 if let Some(reason) = step.misplaced(i == 0) {
                     let name = value.as_object().and_then(|o| o.keys().next());
@@ -412,9 +168,15 @@ fn parse_steps(pointer: &str, values: &[Value], faults: &mut Vec<Finding>) -> Ve
     steps
 }
 
-fn parse_step(pointer: &str, value: &Value) -> Result<Step, Finding> {
+fn parse_step(pointer: &str, value: &Value) -> Result<Step, Box<Finding>> {
     let text = value.to_string();
-    let fault = |e| fault::of_json(&text, pointer, &e);
+    let fault = |e| Box::new(fault::of_json(&text, pointer, &e));
+    // The reader would take a list for the fields in their order; a document names its fields.
+    if let Some((name, Value::Array(_))) = value.as_object().and_then(|o| o.iter().next())
+        && !["add", "subtract", "multiply", "divide"].contains(&name.as_str())
+    {
+        return Err(Box::new(fault::not_an_object(&format!("{pointer}/{name}"))));
+    }
     if value.get("take").is_some() && value.get("segment").is_some() {
         return serde_json::from_str(&text).map(Step::Take).map_err(fault);
     }

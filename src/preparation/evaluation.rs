@@ -2,13 +2,15 @@
 
 use std::collections::{BTreeMap, BTreeSet};
 
-use super::document::{Document, IncomePartner, InputRef, PricePartner, Step};
+use super::agreement::{disagreement, own_money};
+use super::document::Document;
+use super::step::{IncomePartner, InputRef, PricePartner, Step};
 use super::{fault, notes};
 use crate::finding::Finding;
 use crate::series::algebra::{
     self, AlgebraError, Partner, Reference, Span, TradePartner, WeightYears,
 };
-use crate::series::{CurrencyCode, Quantity, Series, SeriesKey, Unit};
+use crate::series::{Series, SeriesKey};
 
 /// A step as it was done.
 #[derive(Clone, Debug)]
@@ -66,7 +68,7 @@ pub(super) fn run(
                 };
                 found.ok_or(Halt::Reported)
             };
-            let words = words(step);
+            let words = step.words();
             match apply(step, done.last().map(|d| &d.series), &lookup) {
                 Ok((series, notes)) => {
                     all_notes.extend(notes.into_iter().map(at));
@@ -311,191 +313,4 @@ fn real_effective_exchange_rate(
     let effective = algebra::real_effective_exchange_rate(home_price, &partners, years, reference)?;
     let notes = notes::of_weights(&effective, partners.len());
     Ok((effective.series, notes))
-}
-
-/// The step in words.
-fn words(step: &Step) -> String {
-    let list = |of: &[InputRef]| {
-        of.iter()
-            .map(ToString::to_string)
-            .collect::<Vec<_>>()
-            .join(", ")
-    };
-    let option = |name: &str, value: Option<String>| {
-        value.map_or_else(String::new, |value| format!("{name}{value}"))
-    };
-    let weights = |years: &WeightYears| match years {
-        WeightYears::One => "weights of the year before",
-        WeightYears::Three => "mean weights of the three years before",
-    };
-    match step {
-        Step::Take(series) => format!("take {series}"),
-        Step::Add(of) => format!("add {}", list(of)),
-        Step::Subtract(of) => format!("subtract {}", list(of)),
-        Step::Multiply(of) => format!("multiply {}", list(of)),
-        Step::Divide(of) => format!("divide {}", list(of)),
-        Step::GeometricMean { of, weights } => format!(
-            "geometric mean of {}{}",
-            list(of),
-            option(", weights ", weights.as_ref().map(|w| format!("{w:?}")))
-        ),
-        Step::Link { target, with, over } => format!(
-            "link {with} to the level of {target} over {}",
-            option(
-                "",
-                over.map(|o| o.to_string())
-                    .or(Some("all common periods".to_owned()))
-            )
-        ),
-        Step::ForeignIncome {
-            partners,
-            reference,
-            reference_value,
-            weight_years,
-        } => format!(
-            "foreign income of {} partners ({}), {}, {reference} = {reference_value}",
-            partners.len(),
-            partners
-                .iter()
-                .map(|p| p.income.to_string())
-                .collect::<Vec<_>>()
-                .join(", "),
-            weights(weight_years)
-        ),
-        Step::RealExchangeRate {
-            home_price,
-            foreign_price,
-            rate,
-            reference,
-            reference_value,
-        } => format!(
-            "real exchange rate (up: real appreciation): {home_price} over {foreign_price}{}, {reference} = {reference_value}",
-            option(" at ", rate.as_ref().map(ToString::to_string))
-        ),
-        Step::RealEffectiveExchangeRate {
-            home_price,
-            partners,
-            reference,
-            reference_value,
-            weight_years,
-        } => format!(
-            "real effective exchange rate (up: real appreciation): {home_price} over the prices of {} partners ({}), {}, {reference} = {reference_value}",
-            partners.len(),
-            partners
-                .iter()
-                .map(|p| p.price.to_string())
-                .collect::<Vec<_>>()
-                .join(", "),
-            weights(weight_years)
-        ),
-        Step::Rebase {
-            reference,
-            reference_value,
-        } => format!("rebase to {reference} = {reference_value}"),
-        Step::Deflate { by, reference } => format!("deflate by {by}, prices of {reference}"),
-        Step::Convert { to, rates, at } => format!(
-            "convert to {to} by {rates}{}",
-            option(" at the rate of ", at.map(|at| at.to_string()))
-        ),
-        Step::Aggregate {
-            to,
-            by,
-            min_coverage,
-            ..
-        } => format!(
-            "aggregate to {to}{}{}",
-            option(" by ", by.map(|by| format!("{by:?}").to_lowercase())),
-            option(", coverage at least ", min_coverage.map(|c| c.to_string()))
-        ),
-        Step::Growth {
-            kind,
-            over,
-            annualised,
-        } => format!(
-            "{:?} growth over the {:?}{}",
-            kind,
-            over,
-            if *annualised { ", at annual rate" } else { "" }
-        )
-        .to_lowercase(),
-        Step::Negate {} => "negate".to_owned(),
-    }
-}
-
-/// Own money of each area, as its series without a currency in their key say.
-fn own_money(inputs: &BTreeMap<InputRef, Series>) -> BTreeMap<&str, BTreeSet<CurrencyCode>> {
-    let mut money: BTreeMap<&str, BTreeSet<CurrencyCode>> = BTreeMap::new();
-    for (input, series) in inputs {
-        if let Quantity::Money { currency } = series.unit.quantity
-            && input.key.currency().is_empty()
-        {
-            money.entry(input.key.area()).or_default().insert(currency);
-        }
-    }
-    money
-}
-
-/// Where a result contradicts the key that it is to have.
-fn disagreement(
-    key: &SeriesKey,
-    series: &Series,
-    own_money: &BTreeMap<&str, BTreeSet<CurrencyCode>>,
-) -> Option<Finding> {
-    if series.frequency() != key.frequency() {
-        return Some(
-            Finding::error(
-                "frequency_mismatch",
-                format!(
-                    "the key says frequency {}, the steps give {}",
-                    key.frequency(),
-                    series.frequency()
-                ),
-            )
-            .found(series.frequency().to_string())
-            .expected(key.frequency().to_string())
-            .remedy("Correct the key, or aggregate to its frequency."),
-        );
-    }
-    let held = currencies(&series.unit);
-    let own = own_money.get(key.area());
-    let (fits, expected) = if key.currency().is_empty() {
-        let money = matches!(series.unit.quantity, Quantity::Money { .. });
-        let own = own.filter(|_| money);
-        (
-            own.is_none_or(|own| held.iter().any(|c| own.contains(c))),
-            own.map_or_else(String::new, |own| {
-                let codes: Vec<&str> = own.iter().map(CurrencyCode::as_str).collect();
-                format!("{}, the money of {}", codes.join(" or "), key.area())
-            }),
-        )
-    } else {
-        (
-            held.is_empty() || held.iter().any(|c| c.as_str() == key.currency()),
-            key.currency().to_owned(),
-        )
-    };
-    (!fits).then(|| {
-        Finding::error(
-            "currency_mismatch",
-            format!("the key says {expected}, the steps give {}", series.unit),
-        )
-        .found(series.unit.to_string())
-        .expected(expected)
-        .remedy("Correct the currency in the key, or convert.")
-    })
-}
-
-fn currencies(unit: &Unit) -> Vec<CurrencyCode> {
-    match unit.quantity {
-        Quantity::Money { currency } => vec![currency],
-        Quantity::Index { currency, .. } => currency.into_iter().collect(),
-        Quantity::Rate {
-            numerator,
-            denominator,
-            ..
-        } => vec![numerator, denominator],
-        Quantity::Ratio | Quantity::Growth { .. } | Quantity::Physical { .. } | Quantity::Count => {
-            vec![]
-        }
-    }
 }

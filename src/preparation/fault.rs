@@ -12,6 +12,14 @@ fn escaped(token: &str) -> String {
     token.replace('~', "~0").replace('/', "~1")
 }
 
+/// A list where an object belongs.
+pub(super) fn not_an_object(pointer: &str) -> Finding {
+    Finding::error("invalid_value", "a list stands where an object belongs")
+        .at_pointer(pointer)
+        .found("a list")
+        .expected("an object with named fields")
+}
+
 /// The finding of an error met while reading `text`, which stands at `base` in the document.
 pub(super) fn of_json(text: &str, base: &str, error: &serde_json::Error) -> Finding {
     let shown = error.to_string();

@@ -32,16 +32,21 @@
 //! | `growth` | later | `kind` (`log`, `ratio`), `over` (`period`, `year`), `annualised` | growth as a fraction |
 //! | `negate` | later | `{}` | the other sign |
 
+mod agreement;
 mod document;
 mod evaluation;
 mod fault;
 mod notes;
 mod plan;
+mod step;
+#[cfg(test)]
+mod tests;
 
 use std::collections::BTreeMap;
 
-pub use document::{Document, IncomePartner, InputRef, PricePartner, Step};
+pub use document::Document;
 pub use plan::{InputInfo, Plan, PlannedOutput, PlannedStep, plan};
+pub use step::{IncomePartner, InputRef, PricePartner, Step};
 
 use crate::finding::Finding;
 use crate::series::{Series, SeriesKey};

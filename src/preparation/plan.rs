@@ -6,8 +6,9 @@ use serde::Serialize;
 use utoipa::ToSchema;
 
 use super::METHOD_VERSION;
-use super::document::{Document, InputRef};
+use super::document::Document;
 use super::evaluation::run;
+use super::step::InputRef;
 use crate::finding::Finding;
 use crate::series::{Series, SeriesKey, Status, Unit};
 use crate::time::{Frequency, Period};
@@ -115,9 +116,9 @@ fn settled(series: Series) -> Series {
     let (values, status) = series
         .status
         .iter()
-        .map(|status| match status {
-            Status::CannotExist => (1.0, Status::Normal),
-            status => (1.0, *status),
+        .map(|status| {
+            let undefined = *status == Status::CannotExist;
+            (1.0, if undefined { Status::Normal } else { *status })
         })
         .unzip();
     Series::with_status(series.unit, series.start, values, status)

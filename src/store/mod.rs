@@ -3,6 +3,7 @@
 //! Functions take a connection; `service` owns the transactions. One file an aggregate. Static SQL is
 //! checked at compile time against the migrations.
 
+pub mod archive;
 pub mod change;
 pub mod cluster;
 mod connection;

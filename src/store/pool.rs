@@ -8,10 +8,10 @@ use std::str::FromStr;
 use std::time::Duration;
 
 /// The schema that holds everything of ours.
-const SCHEMA: &str = "realterms";
+pub(super) const SCHEMA: &str = "realterms";
 
 /// The embedded migrations, forward only.
-static MIGRATIONS: Migrator = sqlx::migrate!("./migrations");
+pub(super) static MIGRATIONS: Migrator = sqlx::migrate!("./migrations");
 
 /// The advisory lock that migrations run under.
 const MIGRATION_LOCK: i64 = 0x7265_616c_7465_726d;
@@ -216,21 +216,46 @@ pub fn migrations_digest() -> String {
 }
 
 async fn migrate(connection: &mut PgConnection) -> Result<(), MigrateError> {
-    sqlx::query("SELECT pg_advisory_lock($1)")
-        .bind(MIGRATION_LOCK)
-        .execute(&mut *connection)
-        .await?;
-    let exists: bool =
-        sqlx::query_scalar("SELECT EXISTS (SELECT FROM pg_namespace WHERE nspname = $1)")
-            .bind(SCHEMA)
-            .fetch_one(&mut *connection)
-            .await?;
-    if !exists {
+    lock_migrations(connection).await?;
+    undo_cut_short_restore(connection).await?;
+    if !schema_exists(connection, SCHEMA).await? {
         sqlx::query("CREATE SCHEMA realterms")
             .execute(&mut *connection)
             .await?;
     }
     MIGRATIONS.run_direct(None, connection, false).await
+}
+
+/// Takes the advisory lock that migrations and restores run under, until the connection ends.
+pub(super) async fn lock_migrations(connection: &mut PgConnection) -> sqlx::Result<()> {
+    sqlx::query("SELECT pg_advisory_lock($1)")
+        .bind(MIGRATION_LOCK)
+        .execute(connection)
+        .await
+        .map(|_| ())
+}
+
+/// Puts back what a restore set aside, if one was cut short. Needs the lock of [`lock_migrations`]: while a restore
+/// runs, it holds the lock itself.
+pub(super) async fn undo_cut_short_restore(connection: &mut PgConnection) -> sqlx::Result<()> {
+    if !schema_exists(connection, "realterms_before_restore").await? {
+        return Ok(());
+    }
+    let mut transaction = connection.begin().await?;
+    sqlx::query("DROP SCHEMA IF EXISTS realterms CASCADE")
+        .execute(&mut *transaction)
+        .await?;
+    sqlx::query("ALTER SCHEMA realterms_before_restore RENAME TO realterms")
+        .execute(&mut *transaction)
+        .await?;
+    transaction.commit().await
+}
+
+async fn schema_exists(connection: &mut PgConnection, name: &str) -> sqlx::Result<bool> {
+    sqlx::query_scalar("SELECT EXISTS (SELECT FROM pg_namespace WHERE nspname = $1)")
+        .bind(name)
+        .fetch_one(connection)
+        .await
 }
 
 /// Makes the database of a private cluster the first time.

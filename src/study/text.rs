@@ -1,16 +1,504 @@
-//! An outcome as a page of plain text.
+//! An outcome as a page of plain text, at most 100 columns wide.
+//!
+//! Growth rates are printed as compound per cent a year; what should not be relied on is replaced by
+//! a letter that leads to the reasons.
 
-use super::outcome::Outcome;
+use super::document::{CrossCovariance, Estimator};
+use super::outcome::{Estimate, EstimatorResult, FormNumbers, FormResult, Outcome};
+use super::run::compound;
+use crate::constraint::{Form, IntervalMethod, Region};
+use crate::finding::{Finding, Severity};
+
+const WIDTH: usize = 96;
+const LABEL: usize = 36;
+const CELL: usize = 30;
 
 /// Prints an outcome for a reader. `header_lines` come below the title; with `with_unreliable`,
-/// numbers that should not be relied on are printed and marked.
+/// numbers that should not be relied on are printed, marked by their letter.
 #[must_use]
 pub fn render(outcome: &Outcome, header_lines: &[String], with_unreliable: bool) -> String {
-    let _ = with_unreliable;
-    let mut page = format!("{}\n", outcome.title);
-    for line in header_lines {
-        page.push_str(line);
-        page.push('\n');
+    let mut page = Page {
+        text: String::new(),
+        outcome,
+        notes: Vec::new(),
+        with_unreliable,
+    };
+    page.head(header_lines);
+    page.headline();
+    page.rates();
+    page.elasticities();
+    page.price_effects();
+    page.near_identity();
+    page.findings();
+    page.section("Caution");
+    page.paragraph(&outcome.caution, "");
+    page.line(&format!("Method {}.", outcome.method_version));
+    page.text
+}
+
+struct Page<'a> {
+    text: String,
+    outcome: &'a Outcome,
+    /// Reasons by letter: (a), (b), …; forms with the same reasons share one.
+    notes: Vec<Vec<String>>,
+    with_unreliable: bool,
+}
+
+impl Page<'_> {
+    fn head(&mut self, header_lines: &[String]) {
+        let outcome = self.outcome;
+        let title = format!("{} ({})", outcome.title, outcome.area);
+        self.line(&title);
+        self.line(&"=".repeat(title.chars().count().min(WIDTH)));
+        for line in header_lines {
+            self.line(line);
+        }
+        let sample = &outcome.sample;
+        let word = match sample.frequency.as_str() {
+            "A" => "years",
+            "S" => "half-years",
+            "Q" => "quarters",
+            _ => "months",
+        };
+        self.line(&format!(
+            "Sample {} to {}, {} {word}. Growth in compound per cent a year, averaged over the sample.",
+            sample.from, sample.to, sample.observations
+        ));
     }
-    page
+
+    fn headline(&mut self) {
+        let outcome = self.outcome;
+        let actual = compound(outcome.actual_growth);
+        self.text.push('\n');
+        self.line(&format!("Actual growth               {actual:6.2}"));
+        let Some(form) = outcome.headline_form() else {
+            return;
+        };
+        let estimator = estimator_label(outcome.headline.estimator);
+        let named = format!("{}, {estimator}", form_label(form.form));
+        let sentence = if let Some(reason) = &form.refused {
+            format!("No constrained growth rate exists for the headline ({named}): {reason}.")
+        } else if let Some(unreliable) = &form.unreliable {
+            let letter = self.note(&unreliable.reasons);
+            if let (true, Some(rate)) = (self.with_unreliable, unreliable.numbers.rate) {
+                let rate = compound(rate);
+                self.line(&format!(
+                    "Balance-of-payments limit   {rate:6.2}  unreliable ({letter})"
+                ));
+            } else {
+                self.line(&format!(
+                    "Balance-of-payments limit   unreliable ({letter})"
+                ));
+            }
+            format!(
+                "The headline named in advance ({named}) gives no rate to rely on: see ({letter}) below."
+            )
+        } else if let (Some(rate), Some(region)) = (form.numbers.rate, form.numbers.interval) {
+            let (rate, region) = (compound(rate), region.map(compound));
+            let level = self.level();
+            self.line(&format!(
+                "Balance-of-payments limit   {rate:6.2}  {level} interval {}",
+                interval(region)
+            ));
+            format!(
+                "{} Headline named in advance: {named}.",
+                verdict(actual, region)
+            )
+        } else {
+            return;
+        };
+        self.text.push('\n');
+        self.paragraph(&sentence, "");
+    }
+
+    fn rates(&mut self) {
+        let outcome = self.outcome;
+        let method = match outcome.interval.method {
+            IntervalMethod::Fieller => "Fieller",
+            IntervalMethod::Delta => "delta-method",
+        };
+        let across = match outcome.interval.cross_covariance {
+            CrossCovariance::Joint => "with",
+            CrossCovariance::Zero => "without",
+        };
+        let level = self.level();
+        self.section("Growth at which exports pay for imports");
+        self.paragraph(
+            &format!(
+                "Compound per cent a year; {level} {method} intervals {across} covariance across the two \
+                 equations; * marks the headline."
+            ),
+            "",
+        );
+        self.text.push('\n');
+        self.estimator_heads();
+        self.form_rows(|page, form, headline| {
+            let star = if headline { "*" } else { "" };
+            page.form_cell(form, |numbers| {
+                let (rate, region) = (numbers.rate?, numbers.interval?);
+                Some(format!(
+                    "{:.2}{star} {}",
+                    compound(rate),
+                    interval(region.map(compound))
+                ))
+            })
+        });
+        let free = |f: &FormResult| numbers(f).rate_with_autonomous_growth.is_some();
+        if outcome.estimators.iter().any(|e| e.forms.iter().any(free)) {
+            self.text.push('\n');
+            self.line("With autonomous growth (the constants of the equations in differences)");
+            self.form_rows(|page, form, _| {
+                page.form_cell(form, |numbers| {
+                    Some(match numbers.rate_with_autonomous_growth {
+                        Some(rate) => format!("{:.2}", compound(rate)),
+                        None => "-".to_owned(),
+                    })
+                })
+            });
+        }
+        self.print_notes();
+    }
+
+    fn elasticities(&mut self) {
+        self.section("Elasticities and equations");
+        self.line("Standard errors in brackets.");
+        self.text.push('\n');
+        self.estimator_heads();
+        let plain = |e: &Estimate| format!("{:.2} ({:.2})", e.value, e.std_error);
+        let absent = || "-".to_owned();
+        type Cell<'c> = &'c dyn Fn(&EstimatorResult) -> String;
+        let rate = |e: &Option<Estimate>| e.as_ref().map_or_else(absent, plain);
+        let equation = |r: &super::outcome::EquationResult| {
+            let two = |v: Option<f64>| v.map_or_else(absent, |v| format!("{v:.2}"));
+            format!(
+                "{}, {}, {}",
+                two(r.r_squared),
+                two(r.durbin_watson),
+                r.observations
+            )
+        };
+        let rows: [(&str, Cell<'_>); 8] = [
+            ("imports: income elasticity", &|r| {
+                plain(&r.import_income_elasticity)
+            }),
+            ("imports: price elasticity", &|r| {
+                rate(&r.import_price_elasticity)
+            }),
+            ("imports: autonomous growth, log %", &|r| {
+                rate(&r.import_autonomous_growth)
+            }),
+            ("imports: R2, Durbin-Watson, n", &|r| {
+                equation(&r.import_demand)
+            }),
+            ("exports: income elasticity", &|r| {
+                plain(&r.export_income_elasticity)
+            }),
+            ("exports: price elasticity", &|r| {
+                rate(&r.export_price_elasticity)
+            }),
+            ("exports: autonomous growth, log %", &|r| {
+                rate(&r.export_autonomous_growth)
+            }),
+            ("exports: R2, Durbin-Watson, n", &|r| {
+                equation(&r.export_demand)
+            }),
+        ];
+        for (label, cell) in rows {
+            let cells: Vec<String> = self.outcome.estimators.iter().map(cell).collect();
+            self.row(label, &cells);
+        }
+        let growth = &self.outcome.growth;
+        let mut means = vec![
+            ("exports", growth.exports),
+            ("imports", growth.imports),
+            ("home activity", growth.home_activity),
+            ("foreign income", growth.foreign_income),
+        ];
+        let prices = [
+            ("terms of trade", growth.terms_of_trade),
+            ("home over import price", growth.import_relative_price),
+            (
+                "export over competitors' price",
+                growth.export_relative_price,
+            ),
+        ];
+        means.extend(
+            prices
+                .iter()
+                .filter_map(|(label, g)| g.map(|g| (*label, g))),
+        );
+        let means: Vec<String> = means
+            .iter()
+            .map(|(label, g)| format!("{label} {:.2}", compound(*g)))
+            .collect();
+        self.text.push('\n');
+        self.paragraph(&format!("Average growth: {}.", means.join(", ")), "");
+    }
+
+    fn price_effects(&mut self) {
+        let given = |f: &FormResult| numbers(f).relative_price_effect.is_some();
+        let any = |e: &EstimatorResult| e.forms.iter().any(given);
+        if !self.outcome.estimators.iter().any(any) {
+            return;
+        }
+        self.section("What relative prices add");
+        self.paragraph(
+            "Percentage points of log growth a year, and the p-value of a test that they add nothing; the \
+             weak and strong forms leave it out, the forms with prices include it.",
+            "",
+        );
+        self.text.push('\n');
+        self.estimator_heads();
+        self.form_rows(|page, form, _| {
+            page.form_cell(form, |numbers| {
+                let Some(effect) = &numbers.relative_price_effect else {
+                    return Some("-".to_owned());
+                };
+                let p = effect
+                    .p_zero
+                    .map_or(String::new(), |p| format!(" p {p:.2}"));
+                Some(format!(
+                    "{:+.2} {}{p}",
+                    effect.effect,
+                    interval(effect.interval)
+                ))
+            })
+        });
+    }
+
+    fn near_identity(&mut self) {
+        self.section("How much of the agreement is arithmetic");
+        for result in &self.outcome.estimators {
+            let label = estimator_label(result.estimator);
+            self.paragraph(&format!("{label}: {}", result.near_identity.sentence), "");
+        }
+    }
+
+    fn findings(&mut self) {
+        let outcome = self.outcome;
+        let mut lines: Vec<(Severity, String)> = Vec::new();
+        let mut add = |label: &str, finding: &Finding| {
+            let text = format!("{label}{} [{}]", finding.message, finding.code);
+            if !lines.iter().any(|(_, l)| *l == text) {
+                lines.push((finding.severity, text));
+            }
+        };
+        for finding in &outcome.findings {
+            add("", finding);
+        }
+        for result in &outcome.estimators {
+            let label = estimator_label(result.estimator);
+            for finding in &result.findings {
+                add(&format!("{label}: "), finding);
+            }
+            for form in &result.forms {
+                let label = format!("{label}, {}: ", form_label(form.form));
+                form.findings.iter().for_each(|f| add(&label, f));
+            }
+        }
+        if lines.is_empty() {
+            return;
+        }
+        self.section("Findings (! makes rates unreliable)");
+        for (severity, line) in lines {
+            let mark = if severity == Severity::Error {
+                "!"
+            } else {
+                "-"
+            };
+            self.paragraph(&format!("{mark} {line}"), "  ");
+        }
+    }
+
+    /// One row a form, one cell an estimator.
+    fn form_rows(&mut self, cell: impl Fn(&mut Self, &FormResult, bool) -> String) {
+        let outcome = self.outcome;
+        let forms: Vec<Form> = outcome
+            .estimators
+            .first()
+            .map_or_else(Vec::new, |e| e.forms.iter().map(|f| f.form).collect());
+        for (i, form) in forms.into_iter().enumerate() {
+            let headline = |e: &EstimatorResult| {
+                outcome.headline.form == form && outcome.headline.estimator == e.estimator
+            };
+            let mut cells = Vec::new();
+            for result in &outcome.estimators {
+                cells.push(cell(self, &result.forms[i], headline(result)));
+            }
+            self.row(form_label(form), &cells);
+        }
+    }
+
+    /// What a form's cell shows: its numbers, or the letter of the reasons against them.
+    fn form_cell(
+        &mut self,
+        form: &FormResult,
+        show: impl Fn(&FormNumbers) -> Option<String>,
+    ) -> String {
+        if let Some(reason) = &form.refused {
+            let letter = self.note_text(vec![format!("No rate exists: {reason}.")]);
+            return format!("none ({letter})");
+        }
+        let Some(unreliable) = &form.unreliable else {
+            return show(&form.numbers).unwrap_or_default();
+        };
+        let letter = self.note(&unreliable.reasons);
+        match show(&unreliable.numbers) {
+            Some(cell) if cell == "-" => cell,
+            Some(cell) if self.with_unreliable => format!("{cell} ({letter})"),
+            _ => format!("unreliable ({letter})"),
+        }
+    }
+
+    fn note(&mut self, reasons: &[Finding]) -> String {
+        self.note_text(
+            reasons
+                .iter()
+                .map(|r| format!("{} [{}]", r.message, r.code))
+                .collect(),
+        )
+    }
+
+    fn note_text(&mut self, note: Vec<String>) -> String {
+        let i = self
+            .notes
+            .iter()
+            .position(|n| *n == note)
+            .unwrap_or_else(|| {
+                self.notes.push(note);
+                self.notes.len() - 1
+            });
+        let mut letters = String::new();
+        let mut rest = i + 1;
+        while rest > 0 {
+            let digit = u8::try_from((rest - 1) % 26).unwrap_or(0);
+            letters.insert(0, char::from(b'a' + digit));
+            rest = (rest - 1) / 26;
+        }
+        letters
+    }
+
+    fn print_notes(&mut self) {
+        if self.notes.is_empty() {
+            return;
+        }
+        self.text.push('\n');
+        for i in 0..self.notes.len() {
+            let note = self.notes[i].clone();
+            let letter = self.note_text(note.clone());
+            self.paragraph(&format!("({letter}) {}", note.join("; ")), "    ");
+        }
+    }
+
+    fn estimator_heads(&mut self) {
+        let heads: Vec<String> = self
+            .outcome
+            .estimators
+            .iter()
+            .map(|e| estimator_label(e.estimator).to_owned())
+            .collect();
+        self.row("", &heads);
+        let rules: Vec<String> = heads.iter().map(|_| "-".repeat(CELL - 2)).collect();
+        self.row(&"-".repeat(LABEL - 2), &rules);
+    }
+
+    fn row(&mut self, label: &str, cells: &[String]) {
+        let mut line = format!("{label:<LABEL$}");
+        for cell in cells {
+            line.push_str(&format!("{cell:<CELL$}"));
+        }
+        self.line(line.trim_end());
+    }
+
+    fn section(&mut self, title: &str) {
+        self.text.push('\n');
+        self.line(title);
+        self.line(&"-".repeat(title.chars().count()));
+    }
+
+    fn line(&mut self, line: &str) {
+        self.text.push_str(line);
+        self.text.push('\n');
+    }
+
+    /// Breaks a text into lines; all but the first are indented.
+    fn paragraph(&mut self, text: &str, indent: &str) {
+        let mut line = String::new();
+        for word in text.split_whitespace() {
+            if !line.is_empty() && line.chars().count() + 1 + word.chars().count() > WIDTH {
+                self.line(&line);
+                indent.clone_into(&mut line);
+                line.push_str(word);
+                continue;
+            }
+            if !line.is_empty() {
+                line.push(' ');
+            }
+            line.push_str(word);
+        }
+        self.line(&line);
+    }
+
+    fn level(&self) -> String {
+        format!("{} per cent", 100.0 * self.outcome.interval.level)
+    }
+}
+
+/// A form's numbers, reliable or not.
+fn numbers(form: &FormResult) -> &FormNumbers {
+    form.unreliable
+        .as_ref()
+        .map_or(&form.numbers, |u| &u.numbers)
+}
+
+fn form_label(form: Form) -> &'static str {
+    match form {
+        Form::WeakForm => "weak form",
+        Form::WeakFormWithPrices => "weak form with prices",
+        Form::StrongForm => "strong form",
+        Form::WithRelativePrices => "strong form with relative prices",
+    }
+}
+
+fn estimator_label(estimator: Estimator) -> &'static str {
+    match estimator {
+        Estimator::OlsLevels => "least squares, levels",
+        Estimator::OlsDifferences => "least squares, differences",
+    }
+}
+
+/// A confidence set in brackets.
+fn interval(region: Region) -> String {
+    match region {
+        Region::Interval { low, high } => format!("[{}, {}]", end(low), end(high)),
+        Region::Complement { low, high } => format!("up to {} or from {}", end(low), end(high)),
+        Region::WholeLine => "any rate".to_owned(),
+    }
+}
+
+fn end(value: f64) -> String {
+    if value.abs() < 1000.0 {
+        format!("{value:.2}")
+    } else if value > 0.0 {
+        "over 1000".to_owned()
+    } else {
+        "below -1000".to_owned()
+    }
+}
+
+/// What actual growth beside the interval says.
+fn verdict(actual: f64, region: Region) -> &'static str {
+    match region {
+        Region::Interval { low, .. } if actual < low => {
+            "The economy grew more slowly than its trade would have paid for: the balance of payments was \
+             not what held it back."
+        }
+        Region::Interval { high, .. } if actual > high => {
+            "The economy grew faster than its exports paid for: the difference was financed from abroad or \
+             by relative prices."
+        }
+        Region::Interval { .. } | Region::Complement { .. } | Region::WholeLine => {
+            "Actual growth lies within the interval: the economy grew about as fast as its trade paid for."
+        }
+    }
 }

@@ -1,3 +1,4 @@
 //! Tests through the real HTTP interface on a real Postgres.
 
+mod cluster;
 mod support;

@@ -29,7 +29,7 @@ fn sum(
 ) -> Result<Series, AlgebraError> {
     let unit = sum_unit(operation, &left.unit, &right.unit)?;
     same_frequency(operation, left, right)?;
-    let extent = overlap(operation, left, right)?;
+    let extent = overlap(operation, &[left, right])?;
     Ok(map_together(unit, extent, &[left, right], |v| {
         v[0] + sign * v[1]
     }))
@@ -110,7 +110,7 @@ pub fn multiply(left: &Series, right: &Series) -> Result<Series, AlgebraError> {
     const MULTIPLY: &str = "multiply";
     let (unit, scale) = product_unit(&left.unit, &right.unit)?;
     same_frequency(MULTIPLY, left, right)?;
-    let extent = overlap(MULTIPLY, left, right)?;
+    let extent = overlap(MULTIPLY, &[left, right])?;
     Ok(map_together(unit, extent, &[left, right], |v| {
         v[0] * (v[1] / scale)
     }))
@@ -241,7 +241,7 @@ pub fn divide(left: &Series, right: &Series) -> Result<Series, AlgebraError> {
     const DIVIDE: &str = "divide";
     let (unit, scale) = quotient_unit(&left.unit, &right.unit)?;
     same_frequency(DIVIDE, left, right)?;
-    let extent = overlap(DIVIDE, left, right)?;
+    let extent = overlap(DIVIDE, &[left, right])?;
     Ok(map_together(unit, extent, &[left, right], |v| {
         v[0] / v[1] * scale
     }))
@@ -441,7 +441,6 @@ pub fn geometric_mean(of: &[&Series], weights: Option<&[f64]>) -> Result<Series,
         unit
     };
     let mut unit = comparable(&first.unit);
-    let (mut start, mut len) = (first.start, first.len());
     for other in rest {
         if comparable(&other.unit) != unit {
             return Err(AlgebraError::clash(
@@ -452,8 +451,6 @@ pub fn geometric_mean(of: &[&Series], weights: Option<&[f64]>) -> Result<Series,
             ));
         }
         same_frequency(MEAN, first, other)?;
-        let so_far = Series::with_status(unit.clone(), start, vec![f64::NAN; len], vec![]);
-        (start, len) = overlap(MEAN, &so_far, other)?;
     }
     match &mut unit.quantity {
         Quantity::Index { reference, .. } => *reference = None,
@@ -471,7 +468,7 @@ pub fn geometric_mean(of: &[&Series], weights: Option<&[f64]>) -> Result<Series,
         }
     }
     let total: f64 = weights.iter().sum();
-    Ok(map_together(unit, (start, len), of, |v| {
+    Ok(map_together(unit, overlap(MEAN, of)?, of, |v| {
         // A logarithm of zero would make the mean zero, which it is not.
         if v.iter().any(|v| *v <= 0.0) {
             return f64::NAN;

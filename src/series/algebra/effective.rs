@@ -122,7 +122,6 @@ fn relative_price(
     all_positive(RER, "the foreign price index", foreign_price)?;
     let mut unit = relative_price_unit(IndexKind::ExchangeRate, 100.0);
     unit.adjustment = home_price.unit.adjustment.clone();
-    let extent = overlap(RER, home_price, foreign_price)?;
     let Some(rate) = rate else {
         if home != foreign {
             return Err(AlgebraError::clash(
@@ -132,12 +131,9 @@ fn relative_price(
                 "Name the exchange rate between them.",
             ));
         }
-        return Ok(map_together(
-            unit,
-            extent,
-            &[home_price, foreign_price],
-            |v| v[0] / v[1],
-        ));
+        let sides = [home_price, foreign_price];
+        let extent = overlap(RER, &sides)?;
+        return Ok(map_together(unit, extent, &sides, |v| v[0] / v[1]));
     };
     let home_per_foreign = match rate.unit.quantity {
         Quantity::Rate {
@@ -168,6 +164,7 @@ fn relative_price(
     same_frequency(RER, home_price, rate)?;
     all_positive(RER, "the exchange rate", rate)?;
     let sides = [home_price, foreign_price, rate];
+    let extent = overlap(RER, &sides)?;
     Ok(map_together(unit, extent, &sides, |v| {
         if home_per_foreign {
             v[0] / (v[2] * v[1])

@@ -97,7 +97,7 @@ pub fn link(target: &Series, other: &Series, over: Option<Span>) -> Result<Linke
     const LINK: &str = "link";
     same_frequency(LINK, target, other)?;
     linkable(&target.unit, &other.unit)?;
-    let (start, len) = overlap(LINK, target, other)?;
+    let (start, len) = overlap(LINK, &[target, other])?;
     let common: Vec<(Period, f64, f64)> = (0..len)
         .filter_map(|n| {
             let period = start.plus(i32::try_from(n).ok()?)?;

@@ -18,6 +18,17 @@ mod index;
 mod money;
 mod span;
 
+#[cfg(test)]
+mod examples;
+#[cfg(test)]
+mod properties;
+#[cfg(test)]
+mod reference;
+#[cfg(test)]
+mod refusals;
+#[cfg(test)]
+pub(crate) mod samples;
+
 pub use aggregate::{Aggregated, Ends, Incomplete, Method, aggregate};
 pub use arithmetic::{add, divide, geometric_mean, multiply, negate, subtract};
 pub use effective::{
@@ -92,22 +103,32 @@ fn same_frequency(
     }
 }
 
-/// First period and number of periods that two series of one frequency both reach.
-fn overlap(
-    operation: &'static str,
-    left: &Series,
-    right: &Series,
-) -> Result<(Period, usize), AlgebraError> {
-    let none = || AlgebraError::NoOverlap {
-        operation,
-        left: extent(left),
-        right: extent(right),
-    };
-    let start = left.start.max(right.start);
-    let end = left.end().zip(right.end()).ok_or_else(none)?;
-    usize::try_from(end.0.min(end.1).ordinal() - start.ordinal())
-        .map(|n| (start, n + 1))
-        .map_err(|_| none())
+/// First period and number of periods that all sides, of one frequency, reach.
+fn overlap(operation: &'static str, sides: &[&Series]) -> Result<(Period, usize), AlgebraError> {
+    let mut common: Option<(Period, Period)> = None;
+    for side in sides {
+        let narrowed = side.end().map(|end| match common {
+            None => (side.start, end),
+            Some((first, last)) => (first.max(side.start), last.min(end)),
+        });
+        common = narrowed.filter(|(first, last)| first <= last);
+        if common.is_none() {
+            return Err(AlgebraError::NoOverlap {
+                operation,
+                left: extent(sides[0]),
+                right: extent(side),
+            });
+        }
+    }
+    let n = common.and_then(|(a, b)| usize::try_from(b.ordinal() - a.ordinal()).ok());
+    common
+        .zip(n)
+        .map(|((first, _), n)| (first, n + 1))
+        .ok_or_else(|| AlgebraError::Argument {
+            name: "series",
+            found: "none".to_owned(),
+            expected: "at least one".to_owned(),
+        })
 }
 
 /// First and last period for messages.

@@ -23,7 +23,7 @@ pub fn deflate(
     const DEFLATE: &str = "deflate";
     let unit = deflated_unit(&nominal.unit, &index.unit, deflator, reference)?;
     same_frequency(DEFLATE, nominal, index)?;
-    overlap(DEFLATE, nominal, index)?;
+    overlap(DEFLATE, &[nominal, index])?;
     all_positive(DEFLATE, "the price index", index)?;
     let level = reference_level(DEFLATE, index, reference)?;
     let extent = (nominal.start, nominal.len());
@@ -123,7 +123,7 @@ pub fn convert(
         return Ok(map_together(unit, extent, &[amount], |v| apply(v[0], rate)));
     }
     same_frequency(CONVERT, amount, rates)?;
-    overlap(CONVERT, amount, rates)?;
+    overlap(CONVERT, &[amount, rates])?;
     all_positive(CONVERT, "the exchange rate", rates)?;
     Ok(map_together(unit, extent, &[amount, rates], |v| {
         apply(v[0], v[1])

@@ -135,7 +135,7 @@ impl Cluster {
     pub fn start(options: &ClusterOptions) -> Result<Self, ClusterError> {
         let folder = DataFolder::open(&options.folder)?;
         let cluster = folder.cluster();
-        let binaries = find_binaries(options, &cluster)?;
+        let binaries = find_binaries(options)?;
         let owner = Owner::of(&cluster)?;
         Owner::check_reach(owner.as_ref(), folder.path())?;
         Owner::check_reach(owner.as_ref(), &binaries.folder)?;
@@ -220,7 +220,7 @@ impl Drop for Cluster {
 /// Programs missing, or a folder that cannot be read.
 pub fn whereabouts(options: &ClusterOptions) -> Result<Whereabouts, ClusterError> {
     let folder = DataFolder::open(&options.folder)?;
-    let binaries = find_binaries(options, &folder.cluster())?;
+    let binaries = find_binaries(options)?;
     let address = running(&server_of(&folder)?);
     let holder = match folder.lock_if_free()? {
         Some(_) => None,
@@ -274,8 +274,14 @@ pub fn stop(folder: &Path) -> Result<Stopped, ClusterError> {
     })
 }
 
-fn find_binaries(options: &ClusterOptions, cluster: &Path) -> Result<Binaries, ClusterError> {
-    Binaries::find(options.binaries.as_deref(), &options.search_path, cluster)
+/// Finds the server's programs: those that made the cluster, where there is one.
+///
+/// # Errors
+/// None that fit.
+pub fn find_binaries(options: &ClusterOptions) -> Result<Binaries, ClusterError> {
+    let folder = DataFolder::open(&options.folder)?;
+    let setting = options.binaries.as_deref();
+    Binaries::find(setting, &options.search_path, &folder.cluster())
 }
 
 fn server_of(folder: &DataFolder) -> Result<Server, ClusterError> {

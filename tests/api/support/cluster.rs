@@ -1,9 +1,20 @@
-//! The one cluster of a test run. Statics are never dropped: the keeper ends the server and removes its folder
-//! when this process is gone, however it went.
+//! The one cluster of a test run, and the program run as a user would.
+//!
+//! Statics are never dropped: the keeper ends the server and removes its folder when this process is gone,
+//! however it went.
 
+use nix::sys::signal::{Signal, kill};
+use nix::unistd::{Pid, User, geteuid};
 use realterms::config::Settings;
 use realterms::store::cluster::{Cluster, ClusterOptions, fresh_folder};
+use std::io::{BufRead, BufReader};
+use std::os::unix::fs::{PermissionsExt, chown};
+use std::os::unix::process::CommandExt;
+use std::path::{Path, PathBuf};
+use std::process::{Child, ChildStdout, Command, ExitStatus, Stdio};
 use std::sync::OnceLock;
+use std::thread::sleep;
+use std::time::{Duration, Instant};
 
 /// The cluster, started by the first test that asks.
 pub(crate) fn shared() -> &'static Cluster {
@@ -24,4 +35,195 @@ pub(crate) fn forgetful() -> ClusterOptions {
         disposable: true,
         ..settings.cluster("a test").expect("a folder is set")
     }
+}
+
+/// Who runs the program: the user of this process, or `nobody` for one who is not root.
+#[derive(Clone, Debug)]
+pub(crate) struct As(Option<User>);
+
+/// Root and an ordinary user where this process is root, else the user that it is.
+pub(crate) fn users() -> Vec<As> {
+    if !geteuid().is_root() {
+        return vec![As(None)];
+    }
+    let nobody = User::from_name("nobody").expect("users can be looked up");
+    assert!(
+        nobody.is_some(),
+        "root needs a user `nobody` for these tests"
+    );
+    vec![As(None), As(nobody)]
+}
+
+/// A folder of one test, directly under the temp folder so that every user reaches it, with a copy of the program
+/// (the build folder may be out of reach). Removed with this value.
+pub(crate) struct Place {
+    pub(crate) root: PathBuf,
+    user: As,
+}
+
+impl Place {
+    pub(crate) fn new(user: &As) -> Self {
+        let root = fresh_folder(&std::env::temp_dir()).expect("the temp folder takes a folder");
+        std::fs::set_permissions(&root, PermissionsExt::from_mode(0o755)).expect("it is ours");
+        let root = root.canonicalize().expect("it is there");
+        std::fs::copy(env!("CARGO_BIN_EXE_realterms"), root.join("realterms"))
+            .expect("the program can be copied");
+        if let Some(user) = &user.0 {
+            chown(&root, Some(user.uid.as_raw()), Some(user.gid.as_raw())).expect("we are root");
+        }
+        let user = user.clone();
+        Self { root, user }
+    }
+
+    /// The data folder; the program makes it.
+    pub(crate) fn data(&self) -> PathBuf {
+        self.root.join("data")
+    }
+
+    /// The program with these arguments, on the data folder, in an environment without settings.
+    pub(crate) fn program(&self, arguments: &[&str]) -> Command {
+        let mut command = Command::new(self.root.join("realterms"));
+        command.args(arguments).current_dir("/");
+        for (name, _) in std::env::vars_os() {
+            if name.to_string_lossy().starts_with("REALTERMS_") {
+                command.env_remove(name);
+            }
+        }
+        command.env("REALTERMS_DATA_FOLDER", self.data());
+        if let Some(user) = &self.user.0 {
+            command.uid(user.uid.as_raw()).gid(user.gid.as_raw());
+        }
+        command
+    }
+
+    /// Runs the program to its end: whether it succeeded, its output and its errors.
+    pub(crate) fn run(&self, arguments: &[&str]) -> (bool, String, String) {
+        finish(self.program(arguments))
+    }
+
+    /// Starts `database start` and waits until it says how to connect.
+    pub(crate) fn start(&self) -> Held {
+        let mut child = self
+            .program(&["database", "start"])
+            .stdout(Stdio::piped())
+            .spawn()
+            .expect("the program runs");
+        let mut says = BufReader::new(child.stdout.take().expect("it is piped"));
+        let mut line = String::new();
+        says.read_line(&mut line).expect("it is text");
+        let connect = line
+            .strip_prefix("connect   ")
+            .expect("it says how to connect");
+        let sockets = connect.split([' ', '=']).nth(1).expect("it names the host");
+        Held {
+            sockets: sockets.into(),
+            child,
+            _says: says,
+        }
+    }
+
+    /// The processes that name the data folder, as (number, command).
+    pub(crate) fn processes(&self) -> Vec<(i32, String)> {
+        let data = self.data().display().to_string();
+        let mut all = processes();
+        all.retain(|(_, command)| command.contains(&data));
+        all
+    }
+
+    /// The one process that names the data folder and this text.
+    pub(crate) fn process(&self, text: &str) -> i32 {
+        let mut all = self.processes();
+        all.retain(|(_, command)| command.contains(text));
+        assert_eq!(all.len(), 1, "{text}: {all:?}");
+        all[0].0
+    }
+
+    pub(crate) fn postmaster(&self) -> i32 {
+        self.process("postgres -D ")
+    }
+
+    pub(crate) fn keeper(&self) -> i32 {
+        self.process("keep-cluster")
+    }
+}
+
+impl Drop for Place {
+    /// Whatever a failed test left running is ended by number.
+    fn drop(&mut self) {
+        for (pid, _) in self.processes() {
+            kill_hard(pid);
+        }
+        let _ = std::fs::remove_dir_all(&self.root);
+    }
+}
+
+/// A running `database start`.
+pub(crate) struct Held {
+    pub(crate) sockets: PathBuf,
+    pub(crate) child: Child,
+    _says: BufReader<ChildStdout>,
+}
+
+impl Held {
+    pub(crate) fn pid(&self) -> i32 {
+        i32::try_from(self.child.id()).expect("a process number is small")
+    }
+
+    /// Asks it to end and waits until it has.
+    pub(crate) fn stop(mut self) -> ExitStatus {
+        kill(Pid::from_raw(self.pid()), Signal::SIGTERM).expect("it runs");
+        self.child.wait().expect("it is our child")
+    }
+}
+
+pub(crate) fn finish(mut command: Command) -> (bool, String, String) {
+    let output = command.output().expect("the program runs");
+    let text = |bytes: Vec<u8>| String::from_utf8(bytes).expect("it prints text");
+    (
+        output.status.success(),
+        text(output.stdout),
+        text(output.stderr),
+    )
+}
+
+pub(crate) fn kill_hard(pid: i32) {
+    let _ = kill(Pid::from_raw(pid), Signal::SIGKILL);
+}
+
+/// Waits until something holds, for at most 30 s.
+pub(crate) fn wait_until(what: &str, holds: impl Fn() -> bool) {
+    let patience = Instant::now() + Duration::from_secs(30);
+    while !holds() {
+        assert!(Instant::now() < patience, "{what}: not within 30 s");
+        sleep(Duration::from_millis(20));
+    }
+}
+
+pub(crate) fn is_running(pid: i32) -> bool {
+    processes().iter().any(|(other, _)| *other == pid)
+}
+
+/// All processes as (number, command); not those that have ended and wait to be collected.
+fn processes() -> Vec<(i32, String)> {
+    if !cfg!(target_os = "linux") {
+        let mut ps = Command::new("ps");
+        ps.args(["-A", "-ww", "-o", "pid=,stat=,command="]);
+        let (_, listed, _) = finish(ps);
+        let split = |line: &str| {
+            let (pid, rest) = line.trim_start().split_once(' ')?;
+            let (state, command) = rest.trim_start().split_once(' ')?;
+            (!state.starts_with('Z')).then(|| Some((pid.parse().ok()?, command.to_owned())))?
+        };
+        return listed.lines().filter_map(split).collect();
+    }
+    let entries = Path::new("/proc").read_dir().expect("/proc is there");
+    entries
+        .flatten()
+        .filter_map(|entry| {
+            let pid = entry.file_name().to_str()?.parse().ok()?;
+            let command = std::fs::read(entry.path().join("cmdline")).ok()?;
+            let command = String::from_utf8_lossy(&command).replace('\0', " ");
+            (!command.is_empty()).then_some((pid, command))
+        })
+        .collect()
 }

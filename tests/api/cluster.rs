@@ -1,0 +1,255 @@
+//! The private cluster under SIGKILL: of the service, the keeper and the server, during a query, as root and as an
+//! ordinary user. What was committed is there at the next start, what was not is not, and nothing keeps running.
+
+use crate::support::cluster::{Held, Place, is_running, kill_hard, users, wait_until};
+use nix::sys::signal::{Signal, kill};
+use nix::unistd::{Pid, geteuid};
+use realterms::store::cluster::SUPERUSER;
+use sqlx::postgres::{PgConnectOptions, PgSslMode};
+use sqlx::{Connection, PgConnection};
+use std::fs;
+use std::path::Path;
+use std::time::Duration;
+
+async fn connect(sockets: &Path) -> sqlx::Result<PgConnection> {
+    let options = PgConnectOptions::new_without_pgpass()
+        .ssl_mode(PgSslMode::Disable)
+        .socket(sockets)
+        .username(SUPERUSER)
+        .database(SUPERUSER);
+    PgConnection::connect_with(&options).await
+}
+
+/// Connects, waiting while the server is started again.
+async fn reconnect(sockets: &Path) -> PgConnection {
+    for _ in 0..600 {
+        if let Ok(mut connection) = connect(sockets).await
+            && connection.ping().await.is_ok()
+        {
+            return connection;
+        }
+        tokio::time::sleep(Duration::from_millis(50)).await;
+    }
+    panic!("no server in {} within 30 s", sockets.display());
+}
+
+/// Three backends at work: one sleeps in a query, one holds an uncommitted row, one computes without ever looking
+/// up. Their process numbers; the row 1 is committed.
+async fn put_to_work(sockets: &Path) -> Vec<i32> {
+    let mut first = connect(sockets).await.unwrap();
+    sqlx::query("CREATE TABLE IF NOT EXISTS kept (n int PRIMARY KEY)")
+        .execute(&mut first)
+        .await
+        .unwrap();
+    sqlx::query("INSERT INTO kept VALUES (1) ON CONFLICT DO NOTHING")
+        .execute(&mut first)
+        .await
+        .unwrap();
+    let mut pids = Vec::new();
+    for work in [
+        "SELECT pg_sleep(600)",
+        "BEGIN; INSERT INTO kept VALUES (2); SELECT pg_sleep(600)",
+        "SELECT count(*) FROM generate_series(1, 100000) a, generate_series(1, 10000000) b",
+    ] {
+        let mut connection = connect(sockets).await.unwrap();
+        pids.push(
+            sqlx::query_scalar("SELECT pg_backend_pid()")
+                .fetch_one(&mut connection)
+                .await
+                .unwrap(),
+        );
+        tokio::spawn(async move { sqlx::raw_sql(work).execute(&mut connection).await });
+    }
+    let at_work = "SELECT count(*) FROM pg_stat_activity WHERE state = 'active' AND pid = ANY($1)";
+    loop {
+        let active: i64 = sqlx::query_scalar(at_work)
+            .bind(&pids)
+            .fetch_one(&mut first)
+            .await
+            .unwrap();
+        if active == 3 {
+            return pids;
+        }
+    }
+}
+
+async fn committed(sockets: &Path) -> Vec<i32> {
+    let mut connection = reconnect(sockets).await;
+    sqlx::query_scalar("SELECT n FROM kept ORDER BY n")
+        .fetch_all(&mut connection)
+        .await
+        .unwrap()
+}
+
+fn assert_all_ended(place: &Place, backends: &[i32]) {
+    wait_until("everything ends", || {
+        place.processes().is_empty() && !backends.iter().any(|pid| is_running(*pid))
+    });
+}
+
+/// Starts again, finds what was committed, and ends in good order.
+async fn assert_next_start(place: &Place) {
+    let held = place.start();
+    assert_eq!(committed(&held.sockets).await, [1]);
+    let sockets = held.sockets.clone();
+    assert!(held.stop().success());
+    assert_all_ended(place, &[]);
+    assert!(!sockets.exists(), "the folder of the socket is removed");
+}
+
+#[tokio::test(flavor = "multi_thread")]
+async fn a_killed_service_takes_its_server_along() {
+    for user in users() {
+        let place = Place::new(&user);
+        let mut held = place.start();
+        let backends = put_to_work(&held.sockets).await;
+        held.child.kill().unwrap();
+        held.child.wait().unwrap();
+        assert_all_ended(&place, &backends);
+        assert!(!held.sockets.exists());
+        assert_next_start(&place).await;
+    }
+}
+
+#[tokio::test(flavor = "multi_thread")]
+async fn a_killed_keeper_is_replaced() {
+    for user in users() {
+        let place = Place::new(&user);
+        let held = place.start();
+        let backends = put_to_work(&held.sockets).await;
+        let (keeper, postmaster) = (place.keeper(), place.postmaster());
+        kill_hard(keeper);
+        assert_replaced(&place, &held, postmaster, &backends).await;
+        assert_ne!(place.keeper(), keeper);
+        assert!(held.stop().success());
+        assert_next_start(&place).await;
+    }
+}
+
+#[tokio::test(flavor = "multi_thread")]
+async fn a_killed_server_is_replaced() {
+    for user in users() {
+        let place = Place::new(&user);
+        let held = place.start();
+        let backends = put_to_work(&held.sockets).await;
+        let postmaster = place.postmaster();
+        kill_hard(postmaster);
+        assert_replaced(&place, &held, postmaster, &backends).await;
+        assert!(held.stop().success());
+        assert_next_start(&place).await;
+    }
+}
+
+/// The same service offers another server in the same place, with what was committed, and the old one is gone.
+async fn assert_replaced(place: &Place, held: &Held, postmaster: i32, backends: &[i32]) {
+    wait_until("the old server ends", || {
+        !is_running(postmaster) && !backends.iter().any(|pid| is_running(*pid))
+    });
+    assert_eq!(committed(&held.sockets).await, [1]);
+    assert_ne!(place.postmaster(), postmaster);
+}
+
+#[tokio::test(flavor = "multi_thread")]
+async fn a_server_that_lost_service_and_keeper_is_ended_by_the_next_start() {
+    for user in users() {
+        let place = Place::new(&user);
+        let mut held = place.start();
+        let backends = put_to_work(&held.sockets).await;
+        let postmaster = place.postmaster();
+        // Stopped first, so that it cannot see the keeper's end and replace it.
+        kill(Pid::from_raw(held.pid()), Signal::SIGSTOP).unwrap();
+        kill_hard(place.keeper());
+        held.child.kill().unwrap();
+        held.child.wait().unwrap();
+        assert!(is_running(postmaster), "nobody was left to end it");
+        assert_next_start(&place).await;
+        assert!(!is_running(postmaster));
+        assert_all_ended(&place, &backends);
+        assert!(!held.sockets.exists());
+    }
+}
+
+#[tokio::test(flavor = "multi_thread")]
+async fn backends_that_lost_everything_are_ended_by_the_next_start() {
+    for user in users() {
+        let place = Place::new(&user);
+        let mut held = place.start();
+        let backends = put_to_work(&held.sockets).await;
+        let postmaster = place.postmaster();
+        kill(Pid::from_raw(held.pid()), Signal::SIGSTOP).unwrap();
+        kill_hard(place.keeper());
+        kill_hard(postmaster);
+        held.child.kill().unwrap();
+        held.child.wait().unwrap();
+        assert!(is_running(backends[2]), "it computes and sees nothing");
+        // The number in the stale file now belongs to a process of someone else.
+        let file = place.data().join("postgres/postmaster.pid");
+        let text = fs::read_to_string(&file).unwrap();
+        let (_, rest) = text.split_once('\n').unwrap();
+        fs::write(&file, format!("{}\n{rest}", std::process::id())).unwrap();
+        assert_next_start(&place).await;
+        assert_all_ended(&place, &backends);
+    }
+}
+
+#[test]
+fn a_second_process_on_the_folder_is_told_who_holds_it() {
+    for user in users() {
+        let place = Place::new(&user);
+        let held = place.start();
+        let (started, _, error) = place.run(&["database", "start"]);
+        assert!(!started);
+        let who = format!(
+            "in use by process {} (realterms database start)",
+            held.pid()
+        );
+        assert!(error.contains(&who), "{error}");
+        assert!(
+            error.contains("realterms database stop --data-folder"),
+            "{error}"
+        );
+        let (stopped, said, error) = place.run(&["database", "stop"]);
+        assert!(
+            stopped && said.contains("stopped with process"),
+            "{said}{error}"
+        );
+        assert_all_ended(&place, &[]);
+        let (stopped, said, _) = place.run(&["database", "stop"]);
+        assert!(stopped && said.contains("nothing was running"), "{said}");
+    }
+}
+
+#[test]
+fn a_folder_that_the_server_cannot_reach_is_refused_by_its_closed_ancestor() {
+    if !geteuid().is_root() {
+        return; // Only root runs the server as somebody else.
+    }
+    let place = Place::new(&users()[0]);
+    let closed = place.root.join("closed");
+    fs::create_dir(&closed).unwrap();
+    fs::set_permissions(&closed, std::os::unix::fs::PermissionsExt::from_mode(0o700)).unwrap();
+    let mut command = place.program(&["database", "start"]);
+    command.env("REALTERMS_DATA_FOLDER", closed.join("below/data"));
+    let (started, _, error) = crate::support::cluster::finish(command);
+    assert!(!started);
+    let named = format!("{} is closed to it", closed.display());
+    assert!(error.contains(&named), "{error}");
+}
+
+#[test]
+fn a_temp_folder_too_long_for_a_socket_is_refused_with_the_limit() {
+    let place = Place::new(&users()[0]);
+    let long = place.root.join("x".repeat(90));
+    fs::create_dir(&long).unwrap();
+    let mut command = place.program(&["database", "start"]);
+    command.env("TMPDIR", &long);
+    let (started, _, error) = crate::support::cluster::finish(command);
+    assert!(!started);
+    assert!(error.contains("this system allows 10"), "{error}");
+    assert!(error.contains("TMPDIR"), "{error}");
+    assert_eq!(
+        fs::read_dir(&long).unwrap().count(),
+        0,
+        "nothing is left in it"
+    );
+}
