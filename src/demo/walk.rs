@@ -41,8 +41,7 @@ pub async fn walk(base: &str, out: &mut dyn Write) -> anyhow::Result<Walked> {
         let answer = send(&client, file).await?;
         let rows = number(&answer, "/report/understood/rows_accepted")?;
         let new = number(&answer, "/report/observations/new")?;
-        let series = number(&answer, "/report/series_changed/count")?
-            + number(&answer, "/report/series_created/count")?;
+        let series = number(&answer, "/report/series_changed/count")?;
         writeln!(
             out,
             "  sent      {:<24} {rows:>5} rows, {new:>5} new observations in {series} series",
