@@ -9,6 +9,7 @@ use crate::demo;
 use crate::http::openapi;
 use crate::store::cluster;
 use crate::telemetry;
+use clap::error::{ContextKind, ContextValue};
 use clap::{CommandFactory, Parser, Subcommand};
 use std::process::ExitCode;
 
@@ -51,7 +52,10 @@ enum Command {
 /// Runs the command that the arguments name; errors go to standard error.
 #[must_use]
 pub fn main() -> ExitCode {
-    let cli = Cli::parse();
+    let cli = match Cli::try_parse() {
+        Ok(cli) => cli,
+        Err(error) => name_variable(error).exit(),
+    };
     if let Command::KeepCluster { order } = &cli.command {
         let kept = cluster::keep(order);
         return if kept {
@@ -67,6 +71,23 @@ pub fn main() -> ExitCode {
             ExitCode::FAILURE
         }
     }
+}
+
+/// Adds the variable to the flag that an error names: either may hold the wrong value.
+fn name_variable(mut error: clap::Error) -> clap::Error {
+    let Some(ContextValue::String(flag)) = error.get(ContextKind::InvalidArg) else {
+        return error;
+    };
+    let mut command = Cli::command();
+    command.build();
+    let argument = command
+        .get_arguments()
+        .find(|argument| argument.to_string() == *flag);
+    if let Some(variable) = argument.and_then(clap::Arg::get_env) {
+        let both = format!("{flag} ({})", variable.display());
+        error.insert(ContextKind::InvalidArg, ContextValue::String(both));
+    }
+    error
 }
 
 fn run(cli: Cli) -> anyhow::Result<()> {
