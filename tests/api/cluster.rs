@@ -112,6 +112,32 @@ async fn a_killed_service_takes_its_server_along() {
 }
 
 #[tokio::test(flavor = "multi_thread")]
+async fn a_service_killed_while_it_makes_its_cluster_starts_afresh() {
+    let halves = |place: &Place| -> usize {
+        let entries = fs::read_dir(place.data()).into_iter().flatten().flatten();
+        entries
+            .filter(|entry| {
+                entry
+                    .file_name()
+                    .to_string_lossy()
+                    .starts_with("postgres.new-")
+            })
+            .count()
+    };
+    for user in users() {
+        let place = Place::new(&user);
+        let mut child = place.program(&["database", "start"]).spawn().unwrap();
+        wait_until("the cluster is being made", || halves(&place) == 1);
+        child.kill().unwrap();
+        child.wait().unwrap();
+        assert_all_ended(&place, &[]);
+        assert!(!place.data().join("postgres").exists());
+        assert!(place.start().stop().success());
+        assert_eq!(halves(&place), 0);
+    }
+}
+
+#[tokio::test(flavor = "multi_thread")]
 async fn a_killed_keeper_is_replaced() {
     for user in users() {
         let place = Place::new(&user);
