@@ -5,7 +5,7 @@ use std::collections::BTreeSet;
 use super::column::{Column, YEARS};
 use super::describe::{Bound, Described, Texts, describe};
 use super::fault::{Fatal, Rejects};
-use super::gather::{Gather, Observation};
+use super::gather::{Gather, Observation, Terms};
 use super::header::Layout;
 use super::number::{self, NumberFault};
 use super::report::{UnderstoodColumn, UnderstoodPeriods};
@@ -196,7 +196,8 @@ impl Rows {
             self.opening.push_str(&text[..=record.ends[b]]);
             self.opening_ends.extend_from_slice(&record.ends[..=b]);
         }
-        let slot = match self.gather.find(&self.cells) {
+        let current = self.current.take().and_then(Result::ok);
+        let slot = match self.gather.find(&self.cells, current) {
             Some(slot) => Ok(slot),
             None => self.describe(text).map(|described| {
                 self.note(&described);
@@ -256,9 +257,12 @@ impl Rows {
     }
 
     fn observe(&mut self, text: &str, line: u32, slot: u32) -> Result<Observation, Box<Finding>> {
-        let described = self.gather.described(slot);
-        let (bound, multiplier) = (described.bound, described.multiplier);
-        let period = self.period(&self.cell(text, self.layout.period)?, described.frequency)?;
+        let Terms {
+            frequency,
+            multiplier,
+            bound,
+        } = self.gather.terms(slot);
+        let period = self.period(&self.cell(text, self.layout.period)?, frequency)?;
         let cell = self.cell(text, self.layout.value)?;
         let stated = match self.layout.status {
             Some(i) => status(&self.cell(text, i)?)?,
