@@ -219,8 +219,8 @@ impl Reader {
         Ok(Intake {
             pieces: rows.gather.take(),
             understood,
+            findings: rows.findings(),
             rejects: rows.rejects.kept,
-            findings: rows.findings,
         })
     }
 }
