@@ -2,6 +2,8 @@
 
 #![expect(clippy::unwrap_used, reason = "a failed unwrap is a failed test")]
 
+mod architecture;
 mod cluster;
 mod command;
 mod support;
+mod uploads;
