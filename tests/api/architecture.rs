@@ -172,22 +172,29 @@ fn pure_rooms_know_no_world() {
             }
         }
     }
-    assert!(wrong.is_empty(), "pure rooms that are not:\n{}", wrong.join("\n"));
+    assert!(
+        wrong.is_empty(),
+        "pure rooms that are not:\n{}",
+        wrong.join("\n")
+    );
 }
 
 /// Whether code names a path as such, not as part of a longer word.
 fn names(code: &str, path: &str) -> bool {
     let inside = |c: char| c.is_ascii_alphanumeric() || c == '_';
-    code.match_indices(path).any(|(i, _)| {
-        !code[..i].ends_with(inside) && !code[i + path.len()..].starts_with(inside)
-    })
+    code.match_indices(path)
+        .any(|(i, _)| !code[..i].ends_with(inside) && !code[i + path.len()..].starts_with(inside))
 }
 
 #[test]
 fn only_the_store_names_the_database_library() {
     for path in files_under(&root().join("src"), "rs") {
         if room(&path) != "store" {
-            assert!(!names(&code(&path), "sqlx"), "{} names sqlx", path.display());
+            assert!(
+                !names(&code(&path), "sqlx"),
+                "{} names sqlx",
+                path.display()
+            );
         }
     }
 }
@@ -210,7 +217,11 @@ fn no_file_is_too_long_to_read() {
 fn migrations_say_what_they_do_and_name_their_constraints() {
     for path in files_under(&root().join("migrations"), "sql") {
         let text = fs::read_to_string(&path).unwrap();
-        assert!(text.starts_with("--"), "{}: begins without a comment", path.display());
+        assert!(
+            text.starts_with("--"),
+            "{}: begins without a comment",
+            path.display()
+        );
         let bare: Vec<String> = text
             .lines()
             .map(|line| line.split("--").next().unwrap().to_uppercase())
@@ -218,8 +229,16 @@ fn migrations_say_what_they_do_and_name_their_constraints() {
         for (i, line) in bare.iter().enumerate() {
             // A constraint may stand on the line after its name.
             let before = if i > 0 { bare[i - 1].as_str() } else { "" };
-            for kind in ["PRIMARY KEY", "REFERENCES", "FOREIGN KEY", "CHECK (", "UNIQUE (", "EXCLUDE "] {
-                let named = line.contains("CONSTRAINT ") || before.trim().starts_with("CONSTRAINT ");
+            for kind in [
+                "PRIMARY KEY",
+                "REFERENCES",
+                "FOREIGN KEY",
+                "CHECK (",
+                "UNIQUE (",
+                "EXCLUDE ",
+            ] {
+                let named =
+                    line.contains("CONSTRAINT ") || before.trim().starts_with("CONSTRAINT ");
                 let index = line.contains("CREATE UNIQUE INDEX ");
                 assert!(
                     !line.contains(kind) || named || index,
