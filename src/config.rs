@@ -58,6 +58,11 @@ pub struct Settings {
     )]
     pub postgres_bin: Option<PathBuf>,
 
+    /// Whether commits are forced to disk; false is for tests, since a power cut may then ruin the private cluster
+    #[arg(long, global = true, env = "REALTERMS_DURABLE", value_name = "BOOL")]
+    #[arg(default_value_t = true, action = clap::ArgAction::Set)]
+    pub durable: bool,
+
     /// Database connections for everything but uploads
     #[arg(
         long,
@@ -194,7 +199,7 @@ impl Settings {
             temp_folder: std::env::temp_dir(),
             keeper: std::env::current_exe()?,
             holder: holder.to_owned(),
-            durable: true,
+            durable: self.durable,
             disposable: false,
         })
     }

@@ -83,10 +83,11 @@ fn symmetric_upper(p: f64, sf: impl Fn(f64) -> f64) -> f64 {
     // 1 − p is exact for p in (1/2, 1).
     if p > 0.5 {
         -positive_upper(1.0 - p, sf)
-    } else if p == 0.5 {
-        0.0
-    } else {
+    } else if p < 0.5 {
         positive_upper(p, sf)
+    } else {
+        // One half, or NaN.
+        p - 0.5
     }
 }
 

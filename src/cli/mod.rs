@@ -1,10 +1,15 @@
 //! The commands of the program.
 
 mod database;
+mod serve;
+mod token;
 
 use crate::config::{Settings, check_environment};
+use crate::demo;
+use crate::http::openapi;
 use crate::store::cluster;
 use crate::telemetry;
+use clap::error::{ContextKind, ContextValue};
 use clap::{CommandFactory, Parser, Subcommand};
 use std::process::ExitCode;
 
@@ -20,6 +25,19 @@ struct Cli {
 
 #[derive(Debug, Subcommand)]
 enum Command {
+    /// Serve the HTTP API until interrupted
+    Serve,
+    /// Show the whole way on an invented economy: raw files in, constrained growth out
+    Demo {
+        /// Go on serving until interrupted
+        #[arg(long)]
+        keep: bool,
+    },
+    /// Bearer tokens: create, list, revoke
+    #[command(subcommand)]
+    Token(token::TokenCommand),
+    /// Print the OpenAPI document of the API
+    Openapi,
     /// The database: where it is, start, stop, migrate, dump, restore
     #[command(subcommand)]
     Database(database::DatabaseCommand),
@@ -34,7 +52,10 @@ enum Command {
 /// Runs the command that the arguments name; errors go to standard error.
 #[must_use]
 pub fn main() -> ExitCode {
-    let cli = Cli::parse();
+    let cli = match Cli::try_parse() {
+        Ok(cli) => cli,
+        Err(error) => name_variable(error).exit(),
+    };
     if let Command::KeepCluster { order } = &cli.command {
         let kept = cluster::keep(order);
         return if kept {
@@ -52,6 +73,23 @@ pub fn main() -> ExitCode {
     }
 }
 
+/// Adds the variable to the flag that an error names: either may hold the wrong value.
+fn name_variable(mut error: clap::Error) -> clap::Error {
+    let Some(ContextValue::String(flag)) = error.get(ContextKind::InvalidArg) else {
+        return error;
+    };
+    let mut command = Cli::command();
+    command.build();
+    let argument = command
+        .get_arguments()
+        .find(|argument| argument.to_string() == *flag);
+    if let Some(variable) = argument.and_then(clap::Arg::get_env) {
+        let both = format!("{flag} ({})", variable.display());
+        error.insert(ContextKind::InvalidArg, ContextValue::String(both));
+    }
+    error
+}
+
 fn run(cli: Cli) -> anyhow::Result<()> {
     check_environment(&Cli::command())?;
     telemetry::start(&cli.settings.log, cli.settings.log_format)?;
@@ -60,6 +98,16 @@ fn run(cli: Cli) -> anyhow::Result<()> {
         .build()?;
     runtime.block_on(async {
         match cli.command {
+            Command::Serve => serve::serve(&cli.settings).await,
+            Command::Demo { keep } => {
+                let mut out = std::io::stdout();
+                demo::run(&cli.settings, keep, serve::stopped(), &mut out).await
+            }
+            Command::Token(command) => command.run(&cli.settings).await,
+            Command::Openapi => {
+                say(openapi::document().trim_end());
+                Ok(())
+            }
             Command::Database(command) => command.run(&cli.settings).await,
             Command::KeepCluster { .. } => unreachable!("the keeper runs without a runtime"),
         }

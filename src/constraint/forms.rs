@@ -91,9 +91,10 @@ pub enum Form {
     WithRelativePrices,
 }
 
-/// What the forms take from the data, averages over the sample. The two demands carry every
-/// coefficient; growth of prices is relative to import prices (`px = tt`, `pm = 0`), which changes
-/// nothing since one inflation rate in every price cancels.
+/// What the forms take from the data: averages over the sample, and the coefficients.
+///
+/// Growth of prices is relative to import prices (`px = tt`, `pm = 0`), which changes nothing since
+/// one inflation rate in every price cancels.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub struct Economy {
     /// `x`, observed growth of real exports.
@@ -250,9 +251,10 @@ pub fn capital_flows(
     balance(&receipts, &[imports.item(1.0)])
 }
 
-/// Exports pay a share `theta` of imports, and the inflow that pays the rest stays a constant share of
-/// nominal income, whose price grows by `income_price` (Moreno-Brid 1998). It does not test whether
-/// the debt that builds up can be carried.
+/// Exports pay a share `theta` of imports, an inflow tied to nominal income the rest (Moreno-Brid 1998).
+///
+/// The inflow stays a constant share of income, whose price grows by `income_price`. The law does not
+/// test whether the debt that builds up can be carried.
 ///
 /// # Errors
 /// [`ConstraintError`].

@@ -16,7 +16,7 @@ fn list(case: &Value, name: &str) -> Vec<f64> {
     values.iter().map(|v| v.as_f64().unwrap()).collect()
 }
 
-/// One relative price throughout, deflated by the home price: px = p_Y = 0, pm = −r.
+/// One relative price throughout, deflated by the home price: `px = p_Y = 0`, `pm = −r`.
 fn one_price(case: &Value) -> (ExportDemand, ImportDemand) {
     let r = number(case, "rp");
     let exports = ExportDemand {
@@ -317,7 +317,7 @@ proptest! {
                 }
                 let outside = match region {
                     Region::Interval { .. } => low - 1.0,
-                    _ => f64::midpoint(low, high),
+                    Region::Complement { .. } | Region::WholeLine => f64::midpoint(low, high),
                 };
                 prop_assert!(statistic(outside) > t && !region.contains(outside));
             }
@@ -336,7 +336,7 @@ proptest! {
         let joint = covariance(sn, 0.0, 0.0);
         let ends = |m| match ratio.interval(&joint, 2.0, m) {
             Region::Interval { low, high } => (low, high),
-            other => panic!("{other:?}"),
+            other @ (Region::Complement { .. } | Region::WholeLine) => panic!("{other:?}"),
         };
         let (fieller, delta) = (ends(IntervalMethod::Fieller), ends(IntervalMethod::Delta));
         prop_assert!((fieller.0 - delta.0).abs() < 1e-7 && (fieller.1 - delta.1).abs() < 1e-7);

@@ -298,7 +298,7 @@ fn finish(
         }
         Err(problem) => {
             let (status, code) = (problem.status, problem.code.as_str());
-            match &problem.internal {
+            match problem.internal_reason() {
                 Some(reason) => tracing::error!(
                     request.id = %request_id, method, path, status, code, duration_ms, reason, "failed"
                 ),

@@ -33,7 +33,7 @@ pub struct Problem {
     headers: Vec<(&'static str, String)>,
     /// For the log alone.
     #[serde(skip)]
-    pub(super) internal: Option<String>,
+    internal: Option<String>,
 }
 
 impl Problem {
@@ -58,6 +58,18 @@ impl Problem {
         Self::new(StatusCode::BAD_REQUEST, "bad_request", detail).with_errors(errors)
     }
 
+    /// A fault of the program; the reason is for the log alone.
+    pub(super) fn internal(reason: String) -> Self {
+        Self {
+            internal: Some(reason),
+            ..Self::new(
+                StatusCode::INTERNAL_SERVER_ERROR,
+                "internal",
+                "an error of the program; the log has it under the request's number",
+            )
+        }
+    }
+
     pub(super) fn with_errors(mut self, errors: Vec<Finding>) -> Self {
         self.errors = errors;
         self
@@ -66,6 +78,11 @@ impl Problem {
     pub(super) fn with_header(mut self, name: &'static str, value: impl Into<String>) -> Self {
         self.headers.push((name, value.into()));
         self
+    }
+
+    /// What only the log may say.
+    pub(super) fn internal_reason(&self) -> Option<&str> {
+        self.internal.as_deref()
     }
 
     /// The answer; `request_id` goes into the body.
@@ -123,14 +140,7 @@ impl From<Fault> for Problem {
                     "the database did not answer as it should; nothing was changed; try again",
                 )
             },
-            Fault::Internal(reason) => Self {
-                internal: Some(reason),
-                ..Self::new(
-                    StatusCode::INTERNAL_SERVER_ERROR,
-                    "internal",
-                    "an error of the program; the log has it under the request's number",
-                )
-            },
+            Fault::Internal(reason) => Self::internal(reason),
         }
     }
 }

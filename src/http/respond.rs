@@ -192,14 +192,7 @@ impl Call {
 
 /// Serializes an answer.
 pub(super) fn to_json<T: Serialize>(value: &T) -> Result<Vec<u8>, Problem> {
-    serde_json::to_vec(value).map_err(|e| Problem {
-        internal: Some(e.to_string()),
-        ..Problem::new(
-            StatusCode::INTERNAL_SERVER_ERROR,
-            "internal",
-            "the answer could not be written",
-        )
-    })
+    serde_json::to_vec(value).map_err(|e| Problem::internal(e.to_string()))
 }
 
 fn percent_encoded(text: &str) -> String {

@@ -1,5 +1,7 @@
 //! From descriptive cells to the identity and unit of a series.
 
+use std::collections::BTreeSet;
+
 use super::column::Column;
 use super::kind::Kind;
 use super::measure::Form;
@@ -35,8 +37,12 @@ pub(super) struct Described {
     /// The frequency, where stated.
     pub frequency: Option<Frequency>,
     pub bound: Bound,
-    /// What is to be reported once for the area.
-    pub notes: Vec<Finding>,
+    /// The area's own money, where stated or known.
+    pub own: Option<CurrencyCode>,
+    /// The known own money of the area that the row contradicts.
+    pub contradicted: Option<CurrencyCode>,
+    /// The currency that stands in the key because the area's own money is not known.
+    pub unplaced: Option<CurrencyCode>,
 }
 
 /// Values that a measure may take.
@@ -72,8 +78,9 @@ pub(super) fn describe(
     let measure = kind.measures.iter().find(|m| m.name == wanted);
     let measure = measure.unwrap_or(&kind.measures[0]);
 
-    let mut notes = Vec::new();
-    let own = own_money(texts, context, &mut notes);
+    let known = context.own_money.get(texts.get(Column::Area)).copied();
+    let stated = texts.currency(Column::OwnCurrency);
+    let own = stated.or(known);
     let currency = texts.currency(Column::Currency);
     let prices = prices(measure.form, measure.name, texts)?;
     let quantity = match measure.form {
@@ -87,12 +94,7 @@ pub(super) fn describe(
     };
     let place = match (measure.form, currency) {
         (Form::Rate, Some(foreign)) => foreign.to_string(),
-        (_, Some(c)) if Some(c) != own => {
-            if own.is_none() {
-                notes.push(own_money_unknown(texts.get(Column::Area), c));
-            }
-            c.to_string()
-        }
+        (_, Some(c)) if Some(c) != own => c.to_string(),
         _ => String::new(),
     };
     let code = match texts.get(Column::Adjustment) {
@@ -132,44 +134,43 @@ pub(super) fn describe(
             Form::Index(_) | Form::Rate => Bound::Positive,
             Form::Ratio => Bound::Any,
         },
-        notes,
+        own,
+        contradicted: known.filter(|_| own != known),
+        unplaced: currency.filter(|_| own.is_none()),
     })
 }
 
-/// The area's own money: as the row states it, else as it is known.
-fn own_money(texts: &Texts, context: &Context, notes: &mut Vec<Finding>) -> Option<CurrencyCode> {
-    let area = texts.get(Column::Area);
-    let known = context.own_money.get(area).copied();
-    let stated = texts.currency(Column::OwnCurrency);
-    if let (Some(known), Some(stated)) = (known, stated)
-        && known != stated
-    {
-        notes.push(
-            Finding::error(
-                "currency_contradicted",
-                format!(
-                    "the file says that the own money of {area} is {stated}; it is known as {known}"
-                ),
-            )
-            .at_column(Column::OwnCurrency.name())
-            .found(stated.to_string())
-            .expected(known.to_string())
-            .remedy(format!(
-                "correct own_currency, or accept the upload if {area} has changed its money"
-            )),
-        );
-    }
-    stated.or(known)
-}
-
-fn own_money_unknown(area: &str, currency: CurrencyCode) -> Finding {
-    Finding::notice(
-        "own_money_unknown",
-        format!("the own money of {area} is not known, so that {currency} stands in its series keys"),
+/// An area's own money is known as another than the file says.
+pub(super) fn currency_contradicted(area: &str, stated: &str, known: CurrencyCode) -> Finding {
+    Finding::error(
+        "currency_contradicted",
+        format!("the file says that the own money of {area} is {stated}; it is known as {known}"),
     )
     .at_column(Column::OwnCurrency.name())
+    .found(stated)
+    .expected(known.to_string())
     .remedy(format!(
-        "if {currency} is the own money of {area}, withdraw the upload and state own_currency={currency}"
+        "correct own_currency, or accept the upload if {area} has changed its money"
+    ))
+}
+
+/// A currency stands in the keys of areas whose own money is not known: it may be theirs.
+pub(super) fn own_money_unknown(currency: CurrencyCode, areas: &BTreeSet<String>) -> Finding {
+    let mut named: Vec<&str> = areas.iter().take(10).map(String::as_str).collect();
+    if named.len() < areas.len() {
+        named.push("others");
+    }
+    Finding::notice(
+        "own_money_unknown",
+        format!(
+            "{currency} stands in the series keys of {}, whose own money is not known",
+            named.join(", ")
+        ),
+    )
+    .at_column(Column::OwnCurrency.name())
+    .found(format!("{} areas", areas.len()))
+    .remedy(format!(
+        "where {currency} is an area's own money, send its rows with own_currency={currency}"
     ))
 }
 

@@ -5,33 +5,50 @@ use std::collections::HashMap;
 use super::describe::{Bound, Described};
 use crate::finding::Finding;
 use crate::series::{Piece, SeriesKey, Status, Unit};
-use crate::time::Period;
+use crate::time::{Frequency, Period};
 
-/// What the rows with one combination of descriptive cells have in common.
+/// What the rows with one combination of descriptive cells have in common: as much as every row
+/// needs, side by side in memory; the rest stands in [`Described`].
 #[derive(Debug)]
-pub(super) struct Slot {
-    pub described: Described,
+struct Slot {
+    cells: Box<[u8]>,
     /// The series of each frequency met so far.
-    series: [Option<u32>; 6],
+    series: [u32; 6],
+    terms: Terms,
 }
+
+/// How the observation cells of a row are to be read.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Terms {
+    pub frequency: Option<Frequency>,
+    pub multiplier: i32,
+    pub bound: Bound,
+}
+
+/// No series yet.
+const NONE: u32 = u32::MAX;
 
 #[derive(Debug)]
 struct Entry {
     key: SeriesKey,
     unit: Unit,
-    rows: Rows,
 }
 
-#[derive(Debug, Default)]
-struct Rows {
-    periods: Vec<i32>,
-    values: Vec<f64>,
-    status: Vec<Status>,
-    lines: Vec<u32>,
+/// One row, in the order of the file. Rows are told apart by series only when they are given away:
+/// where the series change from row to row, appending to each in turn would wait for memory.
+#[derive(Clone, Copy, Debug)]
+struct Row {
+    value: f64,
+    series: u32,
+    period: i32,
+    line: u32,
+    status: Status,
 }
 
-/// Bytes of one row in [`Rows`].
-const ROW_BYTES: usize = 17;
+/// Rows of one block of memory.
+const BLOCK: usize = 1 << 14;
+/// Bytes of one row held, of its place in the order by series, and of its copy in a [`Piece`].
+const ROW_BYTES: usize = size_of::<Row>() + 4 + 17;
 
 /// One observation of a row.
 #[derive(Clone, Copy, Debug)]
@@ -45,24 +62,38 @@ pub(super) struct Observation {
 #[derive(Debug, Default)]
 pub(super) struct Gather {
     slots: Vec<Slot>,
+    described: Vec<Described>,
     by_cells: HashMap<Box<[u8]>, u32>,
     series: Vec<Entry>,
     by_key: HashMap<SeriesKey, Vec<u32>>,
-    pending_bytes: usize,
+    /// Full blocks but for the last.
+    blocks: Vec<Vec<Row>>,
 }
 
 impl Gather {
-    /// The slot of these raw descriptive cells, if they were met before.
-    pub(super) fn find(&self, cells: &[u8]) -> Option<u32> {
-        self.by_cells.get(cells).copied()
+    /// The slot of these raw descriptive cells, if they were met before. The slot made after the
+    /// `current` one is tried first: in a file sorted by period the series keep their order.
+    pub(super) fn find(&self, cells: &[u8], current: Option<u32>) -> Option<u32> {
+        let next = current.map_or(0, |slot| slot as usize + 1);
+        let next = if next < self.slots.len() { next } else { 0 };
+        match self.slots.get(next) {
+            Some(slot) if *slot.cells == *cells => Some(index(next)),
+            _ => self.by_cells.get(cells).copied(),
+        }
     }
 
     pub(super) fn add(&mut self, cells: &[u8], described: Described) -> u32 {
         let slot = index(self.slots.len());
         self.slots.push(Slot {
-            described,
-            series: [None; 6],
+            cells: cells.into(),
+            series: [NONE; 6],
+            terms: Terms {
+                frequency: described.frequency,
+                multiplier: described.multiplier,
+                bound: described.bound,
+            },
         });
+        self.described.push(described);
         self.by_cells.insert(cells.into(), slot);
         slot
     }
@@ -71,36 +102,35 @@ impl Gather {
         self.slots.len()
     }
 
-    pub(super) fn described(&self, slot: u32) -> &Described {
-        &self.slots[slot as usize].described
+    pub(super) fn terms(&self, slot: u32) -> Terms {
+        self.slots[slot as usize].terms
     }
 
     /// Adds a row to the series that its slot and its period's frequency name.
     pub(super) fn push(&mut self, slot: u32, row: Observation) -> Result<(), Box<Finding>> {
         let frequency = row.period.frequency() as usize;
         let series = match self.slots[slot as usize].series[frequency] {
-            Some(series) => series,
-            None => self.open(slot, row.period)?,
+            NONE => self.open(slot, row.period)?,
+            series => series,
         };
-        let rows = &mut self.series[series as usize].rows;
-        if rows.lines.len() == rows.lines.capacity() {
-            let more = (rows.lines.len() / 2).max(8);
-            rows.periods.reserve_exact(more);
-            rows.values.reserve_exact(more);
-            rows.status.reserve_exact(more);
-            rows.lines.reserve_exact(more);
-            self.pending_bytes += more * ROW_BYTES;
+        if self.blocks.last().is_none_or(|block| block.len() == BLOCK) {
+            self.blocks.push(Vec::with_capacity(BLOCK));
         }
-        rows.periods.push(row.period.ordinal());
-        rows.values.push(row.value);
-        rows.status.push(row.status);
-        rows.lines.push(row.line);
+        if let Some(block) = self.blocks.last_mut() {
+            block.push(Row {
+                value: row.value,
+                series,
+                period: row.period.ordinal(),
+                line: row.line,
+                status: row.status,
+            });
+        }
         Ok(())
     }
 
     /// The series of a slot at a frequency: two slots may differ in their cells and mean one.
     fn open(&mut self, slot: u32, period: Period) -> Result<u32, Box<Finding>> {
-        let Slot { described, series } = &mut self.slots[slot as usize];
+        let described = &self.described[slot as usize];
         let places = described.places.each_ref().map(String::as_str);
         let key = SeriesKey::new(period.frequency(), places)
             .map_err(|e| Box::new(Finding::error("not_a_key", e.to_string())))?;
@@ -116,38 +146,62 @@ impl Gather {
                 self.series.push(Entry {
                     key,
                     unit: described.unit.clone(),
-                    rows: Rows::default(),
                 });
                 i
             }
         };
-        series[period.frequency() as usize] = Some(found);
+        self.slots[slot as usize].series[period.frequency() as usize] = found;
         Ok(found)
     }
 
-    /// Memory of the rows held: what [`Self::take`] gives away.
+    /// Memory that the rows held need until they are given away, [`Self::take`] included.
     pub(super) fn pending_bytes(&self) -> usize {
-        self.pending_bytes
+        self.blocks.len() * BLOCK * ROW_BYTES
     }
 
-    /// Gives away the rows held so far.
+    /// Gives away the rows held so far, each series in the order of the file.
     pub(super) fn take(&mut self) -> Vec<Piece> {
-        self.pending_bytes = 0;
-        self.series
-            .iter_mut()
-            .filter(|entry| !entry.rows.lines.is_empty())
-            .map(|entry| {
-                let rows = std::mem::take(&mut entry.rows);
-                Piece {
-                    key: entry.key.clone(),
-                    unit: entry.unit.clone(),
-                    periods: rows.periods,
-                    values: rows.values,
-                    status: rows.status,
-                    lines: rows.lines,
-                }
-            })
-            .collect()
+        let blocks = std::mem::take(&mut self.blocks);
+        let rows = || blocks.iter().flatten();
+        // Counting sort by series: ends[s] counts, then points at, the places of series s.
+        let mut ends = vec![0_usize; self.series.len()];
+        for row in rows() {
+            ends[row.series as usize] += 1;
+        }
+        let counts = ends.clone();
+        let mut total = 0;
+        for end in &mut ends {
+            total += std::mem::replace(end, total);
+        }
+        let mut order = vec![0_u32; total];
+        for (i, row) in rows().enumerate() {
+            let place = &mut ends[row.series as usize];
+            order[*place] = index(i);
+            *place += 1;
+        }
+        let row = |i: &u32| blocks[*i as usize / BLOCK][*i as usize % BLOCK];
+        let mut pieces = Vec::new();
+        for (entry, (count, end)) in self.series.iter().zip(counts.into_iter().zip(ends)) {
+            if count == 0 {
+                continue;
+            }
+            let mut piece = Piece {
+                key: entry.key.clone(),
+                unit: entry.unit.clone(),
+                periods: Vec::with_capacity(count),
+                values: Vec::with_capacity(count),
+                status: Vec::with_capacity(count),
+                lines: Vec::with_capacity(count),
+            };
+            for row in order[end - count..end].iter().map(row) {
+                piece.periods.push(row.period);
+                piece.values.push(row.value);
+                piece.status.push(row.status);
+                piece.lines.push(row.line);
+            }
+            pieces.push(piece);
+        }
+        pieces
     }
 
     /// Number of different series so far.
@@ -174,5 +228,5 @@ impl Bound {
 }
 
 fn index(n: usize) -> u32 {
-    u32::try_from(n).expect("the limit on series lies far below 2^32")
+    u32::try_from(n).expect("lines are limited to 2^32, and a series or row takes one")
 }

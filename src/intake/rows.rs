@@ -1,18 +1,20 @@
 //! Rows below the header: cells to observations, gathered by series.
 
-use std::collections::BTreeSet;
+use std::collections::{BTreeMap, BTreeSet};
 
 use super::column::{Column, YEARS};
-use super::describe::{Bound, Described, Texts, describe};
+use super::describe::{
+    Bound, Described, Texts, currency_contradicted, describe, own_money_unknown,
+};
 use super::fault::{Fatal, Rejects};
-use super::gather::{Gather, Observation};
+use super::gather::{Gather, Observation, Terms};
 use super::header::Layout;
 use super::number::{self, NumberFault};
 use super::report::{UnderstoodColumn, UnderstoodPeriods};
 use super::settings::{Context, Limits, Settings};
 use super::split::{Record, Scan, content};
 use crate::finding::Finding;
-use crate::series::Status;
+use crate::series::{CurrencyCode, Status};
 use crate::time::{Date, Frequency, Period};
 
 pub(super) struct Rows {
@@ -36,8 +38,9 @@ pub(super) struct Rows {
     opening_ends: Vec<usize>,
     pub gather: Gather,
     pub rejects: Rejects,
-    pub findings: Vec<Finding>,
-    noted: BTreeSet<(String, String)>,
+    findings: Vec<Finding>,
+    contradicted: BTreeSet<(String, String)>,
+    unplaced: BTreeMap<CurrencyCode, BTreeSet<String>>,
     pub read: u64,
     pub accepted: u64,
     scratch: String,
@@ -70,7 +73,8 @@ impl Rows {
             gather: Gather::default(),
             rejects: Rejects::new(limits.max_rejects_kept),
             findings: Vec::new(),
-            noted: BTreeSet::new(),
+            contradicted: BTreeSet::new(),
+            unplaced: BTreeMap::new(),
             read: 0,
             accepted: 0,
             scratch: String::new(),
@@ -196,7 +200,8 @@ impl Rows {
             self.opening.push_str(&text[..=record.ends[b]]);
             self.opening_ends.extend_from_slice(&record.ends[..=b]);
         }
-        let slot = match self.gather.find(&self.cells) {
+        let current = self.current.take().and_then(Result::ok);
+        let slot = match self.gather.find(&self.cells, current) {
             Some(slot) => Ok(slot),
             None => self.describe(text).map(|described| {
                 self.note(&described);
@@ -233,14 +238,29 @@ impl Rows {
         describe(self.settings.kind, &self.measures, &texts, &self.context)
     }
 
-    /// Keeps each note once an area.
+    /// Keeps what is to be said of an area's money, once each.
     fn note(&mut self, described: &Described) {
-        for note in &described.notes {
-            let once = (note.code.clone(), described.places[0].clone());
-            if self.noted.insert(once) {
-                self.findings.push(note.clone());
+        let area = &described.places[0];
+        if let Some(known) = described.contradicted {
+            let stated = described.own.map_or(String::new(), |c| c.to_string());
+            if self.contradicted.insert((area.clone(), stated.clone())) {
+                let finding = currency_contradicted(area, &stated, known);
+                self.findings.push(finding);
             }
         }
+        if let Some(currency) = described.unplaced {
+            self.unplaced
+                .entry(currency)
+                .or_default()
+                .insert(area.clone());
+        }
+    }
+
+    /// Findings on the file as a whole.
+    pub(super) fn findings(&self) -> Vec<Finding> {
+        let unplaced = self.unplaced.iter();
+        let notices = unplaced.map(|(currency, areas)| own_money_unknown(*currency, areas));
+        self.findings.iter().cloned().chain(notices).collect()
     }
 
     fn cell<'a>(&self, text: &'a str, i: usize) -> Result<std::borrow::Cow<'a, str>, Box<Finding>> {
@@ -256,9 +276,12 @@ impl Rows {
     }
 
     fn observe(&mut self, text: &str, line: u32, slot: u32) -> Result<Observation, Box<Finding>> {
-        let described = self.gather.described(slot);
-        let (bound, multiplier) = (described.bound, described.multiplier);
-        let period = self.period(&self.cell(text, self.layout.period)?, described.frequency)?;
+        let Terms {
+            frequency,
+            multiplier,
+            bound,
+        } = self.gather.terms(slot);
+        let period = self.period(&self.cell(text, self.layout.period)?, frequency)?;
         let cell = self.cell(text, self.layout.value)?;
         let stated = match self.layout.status {
             Some(i) => status(&self.cell(text, i)?)?,

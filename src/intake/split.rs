@@ -30,46 +30,47 @@ impl Record {
     /// and without line feeds, are known already. `last` says that the text is all there is.
     pub(super) fn scan(&mut self, text: &[u8], from: usize, delimiter: u8, last: bool) -> Scan {
         self.lines = 0;
-        let mut i = from;
+        let mut begin = from;
+        let (mut at, mut marks) = (from, marks(text, from, delimiter));
         loop {
-            if text.get(i) == Some(&b'"') {
-                i += 1;
+            // A quoted cell: on to the quote that closes it, which no other quote follows.
+            if text.get(begin) == Some(&b'"') {
+                let mut i = begin + 1;
                 loop {
                     match text.get(i) {
                         None if last => return Scan::Unclosed,
                         None => return Scan::Partial,
                         Some(b'"') if text.get(i + 1) == Some(&b'"') => i += 2,
-                        // Whether this quote closes the cell is known only from the next byte,
-                        // which the loop below asks for.
-                        Some(b'"') => break i += 1,
+                        Some(b'"') => break,
                         Some(b) => {
                             self.lines += u64::from(*b == b'\n');
                             i += 1;
                         }
                     }
                 }
+                (at, marks) = (i + 1, self::marks(text, i + 1, delimiter));
             }
-            loop {
-                match text.get(i) {
-                    Some(&b) if b == delimiter => {
-                        self.ends.push(i);
-                        break;
+            while marks == 0 {
+                at += 8;
+                if at >= text.len() {
+                    if !last {
+                        return Scan::Partial;
                     }
-                    Some(b'\n') => {
-                        self.close(text, i);
-                        self.length = i + 1;
-                        return Scan::Whole;
-                    }
-                    Some(_) => i += 1,
-                    None if last => {
-                        self.close(text, i);
-                        self.length = i;
-                        return Scan::Whole;
-                    }
-                    None => return Scan::Partial,
+                    self.close(text, text.len());
+                    self.length = text.len();
+                    return Scan::Whole;
                 }
+                marks = self::marks(text, at, delimiter);
             }
-            i += 1;
+            let end = at + marks.trailing_zeros() as usize / 8;
+            marks &= marks - 1;
+            if text[end] == b'\n' {
+                self.close(text, end);
+                self.length = end + 1;
+                return Scan::Whole;
+            }
+            self.ends.push(end);
+            begin = end + 1;
         }
     }
 
@@ -87,6 +88,7 @@ impl Record {
     }
 
     /// First byte of a cell.
+    #[inline]
     pub(super) fn start(&self, cell: usize) -> usize {
         if cell == 0 {
             0
@@ -96,13 +98,38 @@ impl Record {
     }
 
     /// A cell as it stands in the record, quotes included.
+    #[inline]
     pub(super) fn raw<'a>(&self, text: &'a str, cell: usize) -> &'a str {
         &text[self.start(cell)..self.ends[cell]]
     }
 }
 
+/// The highest bit of each of the eight bytes from `at` on that is a delimiter or a line feed.
+///
+/// Of a byte `x`, `(x & 0x7f) + 0x7f` and `x` itself have their highest bit unset only if `x` is
+/// zero, and no carry leaves the byte (Warren, Hacker's Delight, 2nd ed., section 6-1).
+fn marks(text: &[u8], at: usize, delimiter: u8) -> u64 {
+    const ONES: u64 = u64::from_le_bytes([1; 8]);
+    const LOW: u64 = u64::from_le_bytes([0x7f; 8]);
+    let mut bytes = [0; 8];
+    match text.get(at..at + 8) {
+        Some(eight) => bytes.copy_from_slice(eight),
+        None => {
+            let rest = text.get(at..).unwrap_or_default();
+            bytes[..rest.len()].copy_from_slice(rest);
+        }
+    }
+    let word = u64::from_le_bytes(bytes);
+    let equal = |byte: u8| {
+        let x = word ^ (ONES * u64::from(byte));
+        !(((x & LOW) + LOW) | x | LOW)
+    };
+    equal(delimiter) | equal(b'\n')
+}
+
 /// The content of a raw cell: quotes undone, blanks around it dropped; `None` where text follows
 /// the closing quote.
+#[inline]
 pub(super) fn content(raw: &str) -> Option<Cow<'_, str>> {
     let Some(inner) = raw.strip_prefix('"') else {
         return Some(Cow::Borrowed(raw.trim_ascii()));

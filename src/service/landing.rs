@@ -9,7 +9,7 @@ use std::collections::{BTreeMap, BTreeSet, HashMap};
 
 use super::Fault;
 use super::views::{ObservationCounts, SeriesList};
-use crate::finding::{Finding, Severity};
+use crate::finding::Finding;
 use crate::series::screening;
 use crate::series::vintage::{Changes, State, Statement, difference, merge};
 use crate::store::change::{self, Action, Revision};
@@ -31,12 +31,6 @@ pub(super) struct Landing {
     /// Segments that had no observations, in series that had some in another segment.
     pub(super) opened: Vec<StoredSegment>,
     pub(super) findings: Vec<Finding>,
-}
-
-impl Landing {
-    pub(super) fn holds(&self) -> bool {
-        self.findings.iter().any(|f| f.severity == Severity::Error)
-    }
 }
 
 /// Applies the stored fragments of an upload to their segments and writes the vintages that result.

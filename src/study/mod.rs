@@ -6,11 +6,14 @@
 mod document;
 mod equation;
 mod outcome;
+mod reader;
 mod reliability;
 mod run;
 mod sample;
 pub mod text;
 
+#[cfg(test)]
+mod reference_tests;
 #[cfg(test)]
 mod tests;
 

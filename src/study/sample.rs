@@ -3,7 +3,7 @@
 use std::collections::BTreeMap;
 
 use super::document::{Document, Kind, Role};
-use crate::finding::Finding;
+use crate::finding::{Finding, Severity};
 use crate::series::{IndexKind, Prices, Quantity, Series, SeriesKey, Status, Timing};
 use crate::time::Period;
 
@@ -58,10 +58,11 @@ pub(super) fn gather(
             ));
             continue;
         }
-        match check_unit(&role, series) {
-            Err(finding) => faults.push(place(finding)),
-            Ok(Some(finding)) => notices.push(place(finding)),
-            Ok(None) => {}
+        match check_unit(&role, series).map(place) {
+            Some(fault) if fault.severity == Severity::Error => faults.push(fault),
+            // A series may stand in several roles; one notice is enough.
+            Some(notice) if !spans.contains_key(role.key) => notices.push(notice),
+            Some(_) | None => {}
         }
         if spans.contains_key(role.key) {
             continue;
@@ -200,7 +201,7 @@ fn share(part: usize, whole: usize) -> f64 {
 }
 
 /// Whether a series may stand in its role: an error, a notice, or nothing to say.
-fn check_unit(role: &Role<'_>, series: &Series) -> Result<Option<Finding>, Finding> {
+fn check_unit(role: &Role<'_>, series: &Series) -> Option<Finding> {
     let unit = &series.unit;
     let wrong = |expected: &str| {
         let message = format!("{} is {unit}; expected {expected}", role.key);
@@ -214,33 +215,33 @@ fn check_unit(role: &Role<'_>, series: &Series) -> Result<Option<Finding>, Findi
             | Quantity::Index {
                 kind: IndexKind::Price | IndexKind::UnitValue | IndexKind::ExchangeRate,
                 ..
-            } => Ok(None),
+            } => None,
             Quantity::Index { .. }
             | Quantity::Money { .. }
             | Quantity::Rate { .. }
             | Quantity::Growth { .. }
             | Quantity::Physical { .. }
-            | Quantity::Count => Err(wrong("a ratio or an index of relative prices")),
+            | Quantity::Count => Some(wrong("a ratio or an index of relative prices")),
         },
         Kind::Volume => {
             let expected = "an amount at constant prices, a volume index, a quantity or a count";
             if unit.timing == Timing::FlowYearToDate {
-                return Err(wrong("an amount per period, not one since the year began"));
+                return Some(wrong("an amount per period, not one since the year began"));
             }
             match &unit.quantity {
                 Quantity::Money { .. } if unit.prices == Prices::PreviousYear => {
-                    Err(wrong(expected))
+                    Some(wrong(expected))
                 }
                 Quantity::Money { .. } if unit.prices == Prices::Current => {
                     let message = format!(
                         "{} is at current prices ({unit}): its growth mixes volumes and prices",
                         role.key
                     );
-                    Ok(Some(
+                    Some(
                         Finding::notice("current_price_volume", message)
                             .expected(expected)
                             .remedy("Deflate it first"),
-                    ))
+                    )
                 }
                 Quantity::Money { .. }
                 | Quantity::Index {
@@ -248,11 +249,11 @@ fn check_unit(role: &Role<'_>, series: &Series) -> Result<Option<Finding>, Findi
                     ..
                 }
                 | Quantity::Physical { .. }
-                | Quantity::Count => Ok(None),
+                | Quantity::Count => None,
                 Quantity::Index { .. }
                 | Quantity::Ratio
                 | Quantity::Rate { .. }
-                | Quantity::Growth { .. } => Err(wrong(expected)),
+                | Quantity::Growth { .. } => Some(wrong(expected)),
             }
         }
     }

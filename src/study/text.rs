@@ -10,8 +10,8 @@ use crate::constraint::{Form, IntervalMethod, Region};
 use crate::finding::{Finding, Severity};
 
 const WIDTH: usize = 96;
-const LABEL: usize = 36;
-const CELL: usize = 30;
+const LABEL: usize = 34;
+const CELL: usize = 32;
 
 /// Prints an outcome for a reader. `header_lines` come below the title; with `with_unreliable`,
 /// numbers that should not be relied on are printed, marked by their letter.
@@ -39,8 +39,8 @@ pub fn render(outcome: &Outcome, header_lines: &[String], with_unreliable: bool)
 struct Page<'a> {
     text: String,
     outcome: &'a Outcome,
-    /// Reasons by letter: (a), (b), …; forms with the same reasons share one.
-    notes: Vec<Vec<String>>,
+    /// Reasons against rates, in the order of their letters.
+    notes: Vec<String>,
     with_unreliable: bool,
 }
 
@@ -77,21 +77,25 @@ impl Page<'_> {
         let estimator = estimator_label(outcome.headline.estimator);
         let named = format!("{}, {estimator}", form_label(form.form));
         let sentence = if let Some(reason) = &form.refused {
-            format!("No constrained growth rate exists for the headline ({named}): {reason}.")
+            self.line("Balance-of-payments limit   none");
+            format!("No rate exists for the headline named in advance ({named}): {reason}.")
         } else if let Some(unreliable) = &form.unreliable {
-            let letter = self.note(&unreliable.reasons);
+            let letters = self.note(&describe_all(&unreliable.reasons));
             if let (true, Some(rate)) = (self.with_unreliable, unreliable.numbers.rate) {
                 let rate = compound(rate);
                 self.line(&format!(
-                    "Balance-of-payments limit   {rate:6.2}  unreliable ({letter})"
+                    "Balance-of-payments limit   {rate:6.2}  unreliable {letters}"
                 ));
             } else {
-                self.line(&format!(
-                    "Balance-of-payments limit   unreliable ({letter})"
-                ));
+                self.line(&format!("Balance-of-payments limit   unreliable {letters}"));
             }
+            let first = unreliable
+                .reasons
+                .first()
+                .map_or("", |r| r.message.as_str());
             format!(
-                "The headline named in advance ({named}) gives no rate to rely on: see ({letter}) below."
+                "The headline named in advance ({named}) gives no rate to rely on. {first}: see {letters} \
+                 below."
             )
         } else if let (Some(rate), Some(region)) = (form.numbers.rate, form.numbers.interval) {
             let (rate, region) = (compound(rate), region.map(compound));
@@ -254,9 +258,11 @@ impl Page<'_> {
                 let Some(effect) = &numbers.relative_price_effect else {
                     return Some("-".to_owned());
                 };
-                let p = effect
-                    .p_zero
-                    .map_or(String::new(), |p| format!(" p {p:.2}"));
+                let p = match effect.p_zero {
+                    Some(p) if p < 0.005 => " p <0.01".to_owned(),
+                    Some(p) => format!(" p {p:.2}"),
+                    None => String::new(),
+                };
                 Some(format!(
                     "{:+.2} {}{p}",
                     effect.effect,
@@ -268,17 +274,28 @@ impl Page<'_> {
 
     fn near_identity(&mut self) {
         self.section("How much of the agreement is arithmetic");
-        for result in &self.outcome.estimators {
-            let label = estimator_label(result.estimator);
-            self.paragraph(&format!("{label}: {}", result.near_identity.sentence), "");
+        let headline = self.outcome.headline.estimator;
+        let result = self
+            .outcome
+            .estimators
+            .iter()
+            .find(|e| e.estimator == headline);
+        if let Some(result) = result {
+            self.paragraph(&result.near_identity.sentence, "");
         }
     }
 
     fn findings(&mut self) {
         let outcome = self.outcome;
+        let notes = std::mem::take(&mut self.notes);
         let mut lines: Vec<(Severity, String)> = Vec::new();
+        // Reasons printed under the table are not repeated.
         let mut add = |label: &str, finding: &Finding| {
-            let text = format!("{label}{} [{}]", finding.message, finding.code);
+            let text = describe(finding);
+            if notes.contains(&text) {
+                return;
+            }
+            let text = format!("{label}{text}");
             if !lines.iter().any(|(_, l)| *l == text) {
                 lines.push((finding.severity, text));
             }
@@ -299,7 +316,7 @@ impl Page<'_> {
         if lines.is_empty() {
             return;
         }
-        self.section("Findings (! makes rates unreliable)");
+        self.section("Findings");
         for (severity, line) in lines {
             let mark = if severity == Severity::Error {
                 "!"
@@ -336,46 +353,32 @@ impl Page<'_> {
         show: impl Fn(&FormNumbers) -> Option<String>,
     ) -> String {
         if let Some(reason) = &form.refused {
-            let letter = self.note_text(vec![format!("No rate exists: {reason}.")]);
-            return format!("none ({letter})");
+            let letters = self.note(&[format!("No rate exists: {reason}")]);
+            return format!("none {letters}");
         }
         let Some(unreliable) = &form.unreliable else {
             return show(&form.numbers).unwrap_or_default();
         };
-        let letter = self.note(&unreliable.reasons);
+        let letters = self.note(&describe_all(&unreliable.reasons));
         match show(&unreliable.numbers) {
             Some(cell) if cell == "-" => cell,
-            Some(cell) if self.with_unreliable => format!("{cell} ({letter})"),
-            _ => format!("unreliable ({letter})"),
+            Some(cell) if self.with_unreliable => format!("{cell} {letters}"),
+            _ => format!("unreliable {letters}"),
         }
     }
 
-    fn note(&mut self, reasons: &[Finding]) -> String {
-        self.note_text(
-            reasons
-                .iter()
-                .map(|r| format!("{} [{}]", r.message, r.code))
-                .collect(),
-        )
-    }
-
-    fn note_text(&mut self, note: Vec<String>) -> String {
-        let i = self
-            .notes
-            .iter()
-            .position(|n| *n == note)
-            .unwrap_or_else(|| {
-                self.notes.push(note);
-                self.notes.len() - 1
-            });
-        let mut letters = String::new();
-        let mut rest = i + 1;
-        while rest > 0 {
-            let digit = u8::try_from((rest - 1) % 26).unwrap_or(0);
-            letters.insert(0, char::from(b'a' + digit));
-            rest = (rest - 1) / 26;
+    /// The letters of reasons, in brackets; each reason has one letter on the whole page.
+    fn note(&mut self, reasons: &[String]) -> String {
+        let mut letters = Vec::new();
+        for reason in reasons {
+            let known = self.notes.iter().position(|n| n == reason);
+            let i = known.unwrap_or(self.notes.len());
+            if known.is_none() {
+                self.notes.push(reason.clone());
+            }
+            letters.push(letter(i));
         }
-        letters
+        format!("({})", letters.join(","))
     }
 
     fn print_notes(&mut self) {
@@ -383,10 +386,8 @@ impl Page<'_> {
             return;
         }
         self.text.push('\n');
-        for i in 0..self.notes.len() {
-            let note = self.notes[i].clone();
-            let letter = self.note_text(note.clone());
-            self.paragraph(&format!("({letter}) {}", note.join("; ")), "    ");
+        for (i, note) in self.notes.clone().into_iter().enumerate() {
+            self.paragraph(&format!("({}) {note}", letter(i)), "    ");
         }
     }
 
@@ -403,9 +404,9 @@ impl Page<'_> {
     }
 
     fn row(&mut self, label: &str, cells: &[String]) {
-        let mut line = format!("{label:<LABEL$}");
+        let mut line = format!("{label:<width$} ", width = LABEL - 1);
         for cell in cells {
-            line.push_str(&format!("{cell:<CELL$}"));
+            line.push_str(&format!("{cell:<width$} ", width = CELL - 1));
         }
         self.line(line.trim_end());
     }
@@ -444,6 +445,14 @@ impl Page<'_> {
     }
 }
 
+fn describe_all(findings: &[Finding]) -> Vec<String> {
+    findings.iter().map(describe).collect()
+}
+
+fn describe(finding: &Finding) -> String {
+    format!("{} [{}]", finding.message, finding.code)
+}
+
 /// A form's numbers, reliable or not.
 fn numbers(form: &FormResult) -> &FormNumbers {
     form.unreliable
@@ -471,7 +480,7 @@ fn estimator_label(estimator: Estimator) -> &'static str {
 fn interval(region: Region) -> String {
     match region {
         Region::Interval { low, high } => format!("[{}, {}]", end(low), end(high)),
-        Region::Complement { low, high } => format!("up to {} or from {}", end(low), end(high)),
+        Region::Complement { low, high } => format!("<{} or >{}", end(low), end(high)),
         Region::WholeLine => "any rate".to_owned(),
     }
 }
@@ -484,6 +493,17 @@ fn end(value: f64) -> String {
     } else {
         "below -1000".to_owned()
     }
+}
+
+/// a to z, then aa, ab, …
+fn letter(i: usize) -> String {
+    let own = char::from(b'a' + u8::try_from(i % 26).unwrap_or(0));
+    let before = if i < 26 {
+        String::new()
+    } else {
+        letter(i / 26 - 1)
+    };
+    format!("{before}{own}")
 }
 
 /// What actual growth beside the interval says.

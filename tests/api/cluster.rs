@@ -49,7 +49,7 @@ async fn put_to_work(sockets: &Path) -> Vec<i32> {
     for work in [
         "SELECT pg_sleep(600)",
         "BEGIN; INSERT INTO kept VALUES (2); SELECT pg_sleep(600)",
-        "SELECT count(*) FROM generate_series(1, 100000) a, generate_series(1, 10000000) b",
+        "SELECT count(*) FROM generate_series(1, 10000) a, generate_series(1, 10000) b, generate_series(1, 10000) c",
     ] {
         let mut connection = connect(sockets).await.unwrap();
         pids.push(
@@ -108,6 +108,32 @@ async fn a_killed_service_takes_its_server_along() {
         assert_all_ended(&place, &backends);
         assert!(!held.sockets.exists());
         assert_next_start(&place).await;
+    }
+}
+
+#[tokio::test(flavor = "multi_thread")]
+async fn a_service_killed_while_it_makes_its_cluster_starts_afresh() {
+    let halves = |place: &Place| -> usize {
+        let entries = fs::read_dir(place.data()).into_iter().flatten().flatten();
+        entries
+            .filter(|entry| {
+                entry
+                    .file_name()
+                    .to_string_lossy()
+                    .starts_with("postgres.new-")
+            })
+            .count()
+    };
+    for user in users() {
+        let place = Place::new(&user);
+        let mut child = place.program(&["database", "start"]).spawn().unwrap();
+        wait_until("the cluster is being made", || halves(&place) == 1);
+        child.kill().unwrap();
+        child.wait().unwrap();
+        assert_all_ended(&place, &[]);
+        assert!(!place.data().join("postgres").exists());
+        assert!(place.start().stop().success());
+        assert_eq!(halves(&place), 0);
     }
 }
 
@@ -190,6 +216,29 @@ async fn backends_that_lost_everything_are_ended_by_the_next_start() {
         assert_next_start(&place).await;
         assert_all_ended(&place, &backends);
     }
+}
+
+#[tokio::test(flavor = "multi_thread")]
+async fn the_shipped_cluster_forces_commits_to_disk() {
+    let place = Place::new(&users()[0]);
+    let mut command = place.program(&["database", "start"]);
+    command.env_remove("REALTERMS_DURABLE");
+    let held = Place::start_by(command);
+    let mut connection = connect(&held.sockets).await.unwrap();
+    for setting in [
+        "fsync",
+        "synchronous_commit",
+        "full_page_writes",
+        "data_checksums",
+    ] {
+        let value: String = sqlx::query_scalar("SELECT current_setting($1)")
+            .bind(setting)
+            .fetch_one(&mut connection)
+            .await
+            .unwrap();
+        assert_eq!(value, "on", "{setting}");
+    }
+    assert!(held.stop().success());
 }
 
 #[test]

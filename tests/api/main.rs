@@ -1,4 +1,7 @@
 //! Tests through the real HTTP interface on a real Postgres.
 
+#![expect(clippy::unwrap_used, reason = "a failed unwrap is a failed test")]
+
 mod cluster;
+mod command;
 mod support;

@@ -42,12 +42,9 @@ const SETTINGS: [&str; 17] = [
     "password_encryption=scram-sha-256",
 ];
 
-/// Settings of a server whose data may be lost with the machine.
-const FORGETFUL: [&str; 3] = [
-    "fsync=off",
-    "full_page_writes=off",
-    "synchronous_commit=off",
-];
+/// The setting of a server whose data may be lost with the machine. What is committed still survives every
+/// SIGKILL: the system has it, and commits and full pages are written as ever.
+const FORGETFUL: [&str; 1] = ["fsync=off"];
 
 /// What a keeper is told to hold, as the one argument of its command.
 #[derive(Clone, Debug, Serialize, Deserialize)]
@@ -272,7 +269,7 @@ impl Order {
         let text = fs::read(&log).unwrap_or_default();
         let text = String::from_utf8_lossy(&text);
         let lines: Vec<&str> = text.lines().collect();
-        let tail = lines[lines.len().saturating_sub(8)..].join("\n  ");
+        let tail = lines[lines.len().saturating_sub(4)..].join("\n  ");
         ClusterError::Failed(format!(
             "the server in {} {what} ({how}); {} ends with:\n  {tail}",
             self.folder.cluster().display(),

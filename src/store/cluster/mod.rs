@@ -150,14 +150,13 @@ impl Cluster {
             disposable: options.disposable,
         };
         let program = options.keeper.clone();
-        let (mut keeper, pipe) = Keeper::spawn(&program, &order)?;
-        let link = Arc::new(Mutex::new(Link(Some(pipe))));
-        if let Err(error) = keeper.wait_until_ready() {
-            hold(&link).0 = None;
-            let _ = keeper.child.wait();
-            let _ = fs::remove_dir_all(sockets);
-            return Err(error);
+        let started = Keeper::spawn(&program, &order)
+            .and_then(|(mut keeper, pipe)| keeper.wait_until_ready().map(|()| (keeper, pipe)));
+        if started.is_err() {
+            let _ = fs::remove_dir_all(&sockets);
         }
+        let (keeper, pipe) = started?;
+        let link = Arc::new(Mutex::new(Link(Some(pipe))));
         let shared = Arc::clone(&link);
         let supervisor = thread::Builder::new()
             .name("cluster".to_owned())

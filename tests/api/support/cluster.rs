@@ -27,11 +27,11 @@ pub(crate) fn forgetful() -> ClusterOptions {
     let folder = fresh_folder(&std::env::temp_dir()).expect("the temp folder takes a folder");
     let settings = Settings {
         data_folder: Some(folder),
+        durable: false,
         ..Settings::default()
     };
     ClusterOptions {
         keeper: env!("CARGO_BIN_EXE_realterms").into(),
-        durable: false,
         disposable: true,
         ..settings.cluster("a test").expect("a folder is set")
     }
@@ -80,7 +80,7 @@ impl Place {
         self.root.join("data")
     }
 
-    /// The program with these arguments, on the data folder, in an environment without settings.
+    /// The program with these arguments, on the data folder; nothing else is set but that disks are spared.
     pub(crate) fn program(&self, arguments: &[&str]) -> Command {
         let mut command = Command::new(self.root.join("realterms"));
         command.args(arguments).current_dir("/");
@@ -90,6 +90,7 @@ impl Place {
             }
         }
         command.env("REALTERMS_DATA_FOLDER", self.data());
+        command.env("REALTERMS_DURABLE", "false");
         if let Some(user) = &self.user.0 {
             command.uid(user.uid.as_raw()).gid(user.gid.as_raw());
         }
@@ -103,8 +104,12 @@ impl Place {
 
     /// Starts `database start` and waits until it says how to connect.
     pub(crate) fn start(&self) -> Held {
-        let mut child = self
-            .program(&["database", "start"])
+        Self::start_by(self.program(&["database", "start"]))
+    }
+
+    /// As [`Place::start`], by a command of the test's own.
+    pub(crate) fn start_by(mut command: Command) -> Held {
+        let mut child = command
             .stdout(Stdio::piped())
             .spawn()
             .expect("the program runs");
@@ -117,6 +122,7 @@ impl Place {
         let sockets = connect.split([' ', '=']).nth(1).expect("it names the host");
         Held {
             sockets: sockets.into(),
+            _guard: Guard::of(&child),
             child,
             _says: says,
         }
@@ -162,6 +168,30 @@ pub(crate) struct Held {
     pub(crate) sockets: PathBuf,
     pub(crate) child: Child,
     _says: BufReader<ChildStdout>,
+    _guard: Guard,
+}
+
+/// Kills a process when this process is gone, however it went.
+pub(crate) struct Guard(Child);
+
+impl Guard {
+    pub(crate) fn of(child: &Child) -> Self {
+        let guard = Command::new("sh")
+            .args(["-c", "read -r _; kill -9 \"$0\"", &child.id().to_string()])
+            .process_group(0)
+            .stdin(Stdio::piped())
+            .spawn()
+            .expect("the shell runs");
+        Self(guard)
+    }
+}
+
+impl Drop for Guard {
+    /// Lets go of the process.
+    fn drop(&mut self) {
+        let _ = self.0.kill();
+        let _ = self.0.wait();
+    }
 }
 
 impl Held {

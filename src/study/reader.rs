@@ -1,0 +1,229 @@
+//! Reading a study's document from JSON, with a pointer for every fault.
+
+use serde::de::DeserializeOwned;
+use serde_json::{Map, Value};
+
+use super::document::{
+    CrossCovariance, Demand, Document, Headline, Interval, SampleBounds, default_level,
+};
+use crate::constraint::IntervalMethod;
+use crate::finding::Finding;
+
+/// Reads JSON objects field by field, so that every fault has its pointer.
+#[derive(Default)]
+pub(super) struct Reader {
+    findings: Vec<Finding>,
+}
+
+impl Reader {
+    /// The document, or every fault found.
+    pub(super) fn read(value: &Value) -> Result<Document, Vec<Finding>> {
+        let mut reader = Self::default();
+        match reader.document(value) {
+            Some(document) if reader.findings.is_empty() => Ok(document),
+            _ => Err(reader.findings),
+        }
+    }
+
+    fn document(&mut self, value: &Value) -> Option<Document> {
+        let known = [
+            "title",
+            "area",
+            "frequency",
+            "headline",
+            "forms",
+            "estimators",
+            "sample",
+            "activity",
+            "actual",
+            "import_demand",
+            "export_demand",
+            "terms_of_trade",
+            "covariance",
+            "lags",
+            "small_sample",
+            "interval",
+        ];
+        let map = self.object(value, "", &known)?;
+        // Every field is read before any fault returns, so that all faults are reported at once.
+        let title = self.field(map, "", "title");
+        let area = self.field(map, "", "area");
+        let frequency = self.field(map, "", "frequency");
+        let headline = self.headline(map);
+        let forms = self.list(map, "forms");
+        let estimators = self.list(map, "estimators");
+        let sample = self.sample(map);
+        let activity = self.field(map, "", "activity");
+        let actual = self.field(map, "", "actual");
+        let import_demand = self.demand(map, "import_demand");
+        let export_demand = self.demand(map, "export_demand");
+        let terms_of_trade = self.field(map, "", "terms_of_trade");
+        let covariance = self.field(map, "", "covariance");
+        let lags = self.field(map, "", "lags");
+        let small_sample = self.field(map, "", "small_sample");
+        let interval = self.interval(map);
+        Some(Document {
+            title: title?,
+            area: area?,
+            frequency: frequency?,
+            headline: headline?,
+            forms: forms?,
+            estimators: estimators?,
+            sample: sample?,
+            activity: activity?,
+            actual: actual?,
+            import_demand: import_demand?,
+            export_demand: export_demand?,
+            terms_of_trade: terms_of_trade?,
+            covariance: covariance?,
+            lags: lags?,
+            small_sample: small_sample?,
+            interval: interval?,
+        })
+    }
+
+    fn headline(&mut self, map: &Map<String, Value>) -> Option<Headline> {
+        let map = self.part(map, "headline", &["form", "estimator"])?;
+        let form = self.field(map, "/headline", "form");
+        let estimator = self.field(map, "/headline", "estimator");
+        Some(Headline {
+            form: form?,
+            estimator: estimator?,
+        })
+    }
+
+    fn sample(&mut self, map: &Map<String, Value>) -> Option<SampleBounds> {
+        if map.get("sample").is_none_or(Value::is_null) {
+            return Some(SampleBounds::default());
+        }
+        let map = self.part(map, "sample", &["from", "to"])?;
+        let from = self.field(map, "/sample", "from");
+        let to = self.field(map, "/sample", "to");
+        Some(SampleBounds {
+            from: from?,
+            to: to?,
+        })
+    }
+
+    fn demand(&mut self, map: &Map<String, Value>, name: &str) -> Option<Demand> {
+        let map = self.part(map, name, &["volume", "activity", "relative_price"])?;
+        let pointer = format!("/{name}");
+        let volume = self.field(map, &pointer, "volume");
+        let activity = self.field(map, &pointer, "activity");
+        let relative_price = self.field(map, &pointer, "relative_price");
+        Some(Demand {
+            volume: volume?,
+            activity: activity?,
+            relative_price: relative_price?,
+        })
+    }
+
+    fn interval(&mut self, map: &Map<String, Value>) -> Option<Interval> {
+        if map.get("interval").is_none_or(Value::is_null) {
+            return Some(Interval::default());
+        }
+        let map = self.part(map, "interval", &["method", "level", "cross_covariance"])?;
+        let method = self.field::<Option<IntervalMethod>>(map, "/interval", "method");
+        let level = self.field::<Option<f64>>(map, "/interval", "level");
+        let cross = self.field::<Option<CrossCovariance>>(map, "/interval", "cross_covariance");
+        Some(Interval {
+            method: method?.unwrap_or_default(),
+            level: level?.unwrap_or_else(default_level),
+            cross_covariance: cross?.unwrap_or_default(),
+        })
+    }
+
+    /// A list that holds at least one element.
+    fn list<T: DeserializeOwned>(
+        &mut self,
+        map: &Map<String, Value>,
+        name: &str,
+    ) -> Option<Vec<T>> {
+        let list: Vec<Value> = self.field(map, "", name)?;
+        if list.is_empty() {
+            let message = format!("{name} is empty");
+            let finding = Finding::error("invalid_value", message).at_pointer(format!("/{name}"));
+            self.findings.push(finding);
+            return None;
+        }
+        let items: Vec<Option<T>> = list
+            .iter()
+            .enumerate()
+            .map(|(i, v)| self.value(v, &format!("/{name}/{i}")))
+            .collect();
+        items.into_iter().collect()
+    }
+
+    /// An object inside the document.
+    fn part<'a>(
+        &mut self,
+        map: &'a Map<String, Value>,
+        name: &str,
+        known: &[&str],
+    ) -> Option<&'a Map<String, Value>> {
+        let Some(value) = map.get(name) else {
+            self.missing(&format!("/{name}"), name);
+            return None;
+        };
+        self.object(value, &format!("/{name}"), known)
+    }
+
+    fn object<'a>(
+        &mut self,
+        value: &'a Value,
+        pointer: &str,
+        known: &[&str],
+    ) -> Option<&'a Map<String, Value>> {
+        let Some(map) = value.as_object() else {
+            let finding = Finding::error("invalid_value", "An object is expected here")
+                .at_pointer(pointer)
+                .expected(format!("an object with {}", known.join(", ")));
+            self.findings.push(finding);
+            return None;
+        };
+        for name in map.keys().filter(|name| !known.contains(&name.as_str())) {
+            let escaped = name.replace('~', "~0").replace('/', "~1");
+            let finding = Finding::error("unknown_field", format!("There is no field '{name}'"))
+                .at_pointer(format!("{pointer}/{escaped}"))
+                .found(name.clone())
+                .expected(format!("one of {}", known.join(", ")));
+            self.findings.push(finding);
+        }
+        Some(map)
+    }
+
+    /// A field; an absent one reads as null, which optional types take.
+    fn field<T: DeserializeOwned>(
+        &mut self,
+        map: &Map<String, Value>,
+        pointer: &str,
+        name: &str,
+    ) -> Option<T> {
+        let pointer = format!("{pointer}/{name}");
+        match map.get(name) {
+            Some(value) => self.value(value, &pointer),
+            None => serde_json::from_value(Value::Null).ok().or_else(|| {
+                self.missing(&pointer, name);
+                None
+            }),
+        }
+    }
+
+    fn value<T: DeserializeOwned>(&mut self, value: &Value, pointer: &str) -> Option<T> {
+        match serde_json::from_value(value.clone()) {
+            Ok(value) => Some(value),
+            Err(error) => {
+                let finding = Finding::error("invalid_value", error.to_string())
+                    .at_pointer(pointer)
+                    .found(value.to_string());
+                self.findings.push(finding);
+                None
+            }
+        }
+    }
+
+    fn missing(&mut self, pointer: &str, name: &str) {
+        let finding = Finding::error("missing_field", format!("The field '{name}' is required"));
+        self.findings.push(finding.at_pointer(pointer));
+    }
+}

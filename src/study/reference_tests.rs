@@ -1,0 +1,150 @@
+//! Studies on real data, against figures computed elsewhere.
+
+use serde_json::{Value, json};
+
+use super::tests::{Inputs, close, document, insert, parse};
+use super::*;
+
+fn numbers(value: &Value) -> Vec<f64> {
+    let values = value.as_array().unwrap();
+    values.iter().map(|v| v.as_f64().unwrap()).collect()
+}
+
+/// Twelve countries of the Penn World Table 9.1, against a general-purpose statistics library: both
+/// demand equations and the growth rates in levels and differences, with the delta method, no
+/// covariance across equations, and export growth as given.
+#[test]
+fn twelve_countries_of_the_penn_world_table() {
+    let text = include_str!("../../fixtures/reference/pwt91-trade.json");
+    let countries: Value = serde_json::from_str(text).unwrap();
+    let mut value = document();
+    value["covariance"] = json!("classical");
+    value["interval"] = json!({"method": "delta", "cross_covariance": "zero"});
+    let document = parse(&value);
+    for (area, country) in countries.as_object().unwrap() {
+        let mut inputs = Inputs::new();
+        // The file's relative prices are the other way up: Rm = 1/rpm, Rx = 1/rpx.
+        for (name, measure, sign) in [
+            ("ln_m", "imports_real", 1.0),
+            ("ln_y", "gdp_real", 1.0),
+            ("ln_rpm", "import_relative_price", -1.0),
+            ("ln_x", "exports_real", 1.0),
+            ("ln_z", "foreign_income", 1.0),
+            ("ln_rpx", "export_relative_price", -1.0),
+        ] {
+            let values = numbers(&country["series"][name]);
+            let levels = values.iter().map(|v| (sign * v).exp()).collect();
+            insert(&mut inputs, measure, "1960", levels);
+        }
+        let tt = numbers(&country["terms_of_trade"]);
+        insert(&mut inputs, "terms_of_trade", "1960", tt);
+        let outcome = run(&document, &inputs).unwrap();
+
+        let bop = &country["bop"];
+        let mean = |name: &str| bop[name].as_f64().unwrap();
+        close(outcome.actual_growth / 100.0, mean("y_mean_dlog"), area);
+        close(outcome.growth.exports / 100.0, mean("x_mean_dlog"), area);
+        close(
+            outcome.growth.foreign_income / 100.0,
+            mean("z_mean_dlog"),
+            area,
+        );
+        let rm = outcome.growth.import_relative_price.unwrap();
+        close(rm / 100.0, -mean("ln_rpm_mean_dlog"), area);
+        let rx = outcome.growth.export_relative_price.unwrap();
+        close(rx / 100.0, -mean("ln_rpx_mean_dlog"), area);
+
+        for (result, name) in outcome.estimators.iter().zip(["levels", "dlog"]) {
+            let estimates = &bop["estimates"][name];
+            let wanted = |key: &str| estimates[key].as_f64().unwrap();
+            let what = format!("{area} {name}");
+            close(result.import_income_elasticity.value, wanted("pi"), &what);
+            close(
+                result.import_income_elasticity.std_error,
+                wanted("pi_se"),
+                &what,
+            );
+            close(result.export_income_elasticity.value, wanted("eps"), &what);
+            close(
+                result.export_income_elasticity.std_error,
+                wanted("eps_se"),
+                &what,
+            );
+            // psi = −η and eta = +η* in the file.
+            close(
+                result.import_price_elasticity.unwrap().value,
+                -wanted("psi"),
+                &what,
+            );
+            close(
+                result.export_price_elasticity.unwrap().value,
+                wanted("eta"),
+                &what,
+            );
+            for (found, side) in [
+                (&result.import_demand, "import"),
+                (&result.export_demand, "export"),
+            ] {
+                let equation = &country[format!("{side}_{name}")];
+                check_equation(found, equation, &format!("{what} {side}"));
+            }
+            for (i, key) in [(0, "yb_weak"), (2, "yb_strong"), (3, "yb_relative_prices")] {
+                let form = &result.forms[i];
+                let numbers = form
+                    .unreliable
+                    .as_ref()
+                    .map_or(&form.numbers, |u| &u.numbers);
+                close(numbers.rate.unwrap() / 100.0, wanted(key), &what);
+                let error = match key {
+                    "yb_weak" => wanted("yb_weak_se_x_fixed"),
+                    "yb_strong" => wanted("yb_strong_se_cov0"),
+                    _ => continue,
+                };
+                close(numbers.std_error.unwrap() / 100.0, error, &what);
+            }
+        }
+    }
+}
+
+fn check_equation(found: &EquationResult, wanted: &Value, what: &str) {
+    let value = |key: &str| wanted[key].as_f64().unwrap();
+    assert_eq!(
+        Some(u64::from(found.observations)),
+        wanted["n"].as_u64(),
+        "{what}"
+    );
+    close(found.r_squared.unwrap(), value("rsquared"), what);
+    close(
+        found.adjusted_r_squared.unwrap(),
+        value("rsquared_adj"),
+        what,
+    );
+    close(found.durbin_watson.unwrap(), value("durbin_watson"), what);
+    close(found.residual_std_dev, value("s2").sqrt(), what);
+    for (j, coefficient) in found.coefficients.iter().enumerate() {
+        // The relative prices are the other way up; with them nothing but their own sign changes.
+        let sign = if j == 2 { -1.0 } else { 1.0 };
+        close(
+            coefficient.estimate,
+            sign * numbers(&wanted["params"])[j],
+            what,
+        );
+        close(
+            coefficient.std_error_classical,
+            numbers(&wanted["bse"])[j],
+            what,
+        );
+        let robust = numbers(&wanted["hac_L0_corr"]["bse"])[j];
+        close(coefficient.std_error_newey_west, robust, what);
+        close(
+            coefficient.t.unwrap(),
+            sign * numbers(&wanted["t"])[j],
+            what,
+        );
+    }
+    assert_eq!(
+        Some(u64::from(found.lags)),
+        wanted["hac_L0"]["lag"].as_u64(),
+        "{what}"
+    );
+}
