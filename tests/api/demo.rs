@@ -1,0 +1,109 @@
+//! The demo: its walk through the API, and the command that a stranger pastes.
+
+use std::process::Command;
+
+use realterms::config::Settings;
+use realterms::demo::economy::{
+    EXPORT_INCOME_ELASTICITY, EXPORT_PRICE_ELASTICITY, IMPORT_INCOME_ELASTICITY,
+    IMPORT_PRICE_ELASTICITY,
+};
+use realterms::demo::{NAME, walk};
+use realterms::http::Application;
+use serde_json::Value;
+
+use crate::support::db::TestDb;
+
+#[tokio::test]
+async fn the_estimates_recover_the_known_elasticities_within_their_intervals() {
+    let db = TestDb::create();
+    let settings = Settings {
+        listen: ([127, 0, 0, 1], 0).into(),
+        ..Settings::default()
+    };
+    let application = Application::build(&settings, db.open().await)
+        .await
+        .unwrap();
+    let base = format!("http://{}", application.address());
+    let handle = application.handle();
+    let server = tokio::spawn(application.run_until_stopped());
+
+    let mut told = Vec::new();
+    let walked = walk(&base, &mut told).await.unwrap();
+    let told = String::from_utf8(told).unwrap();
+    for line in [
+        "held      exports_revised.csv",
+        "level_ratio",
+        "withdrawn exports_revised.csv",
+    ] {
+        assert!(told.contains(line), "{line} is not told:\n{told}");
+    }
+    assert!(told.contains(walked.table.trim_end()));
+
+    let get = async |path: String| -> Value {
+        let response = reqwest::get(format!("{base}{path}")).await.unwrap();
+        assert_eq!(response.status(), 200, "{path}");
+        response.json().await.unwrap()
+    };
+    let run = get(format!("/v1/studies/{NAME}/runs/{}", walked.run)).await;
+    let result = &run["result"];
+    // Student's t at 95 %, for 36 degrees of freedom in differences and 37 in levels.
+    const T: f64 = 2.03;
+    let estimators = result["estimators"].as_array().unwrap();
+    assert_eq!(estimators.len(), 2);
+    for estimator in estimators {
+        for (name, truth) in [
+            ("import_income_elasticity", IMPORT_INCOME_ELASTICITY),
+            ("import_price_elasticity", IMPORT_PRICE_ELASTICITY),
+            ("export_income_elasticity", EXPORT_INCOME_ELASTICITY),
+            ("export_price_elasticity", EXPORT_PRICE_ELASTICITY),
+        ] {
+            let number = |field: &str| estimator[name][field].as_f64().unwrap();
+            let (value, error) = (number("value"), number("std_error"));
+            assert!(
+                (value - truth).abs() < T * error,
+                "{name}: {value} ({error}), true {truth}"
+            );
+        }
+    }
+    // The headline's interval holds the rate that the true elasticities give.
+    let headline = estimators[0]["forms"].as_array().unwrap();
+    let strong = headline
+        .iter()
+        .find(|f| f["form"] == "strong_form")
+        .unwrap();
+    let z = result["growth"]["foreign_income"].as_f64().unwrap();
+    let truth = EXPORT_INCOME_ELASTICITY * z / IMPORT_INCOME_ELASTICITY;
+    let bound = |name: &str| strong["interval"][name].as_f64().unwrap();
+    assert!(
+        bound("low") < truth && truth < bound("high"),
+        "{strong} {truth}"
+    );
+    assert!(
+        strong["unreliable"].is_null() && strong["rate"].is_f64(),
+        "{strong}"
+    );
+
+    // What was mislabelled left no trace in what is served: no revision since the first file.
+    let exports = get("/v1/series/Q.XAA.exports/observations".to_owned()).await;
+    assert_eq!(exports["released"], "2020-03-31");
+    handle.stop(true).await;
+    server.await.unwrap().unwrap();
+}
+
+#[test]
+fn the_command_prints_the_table_and_ends_with_0() {
+    let output = Command::new(env!("CARGO_BIN_EXE_realterms"))
+        .arg("demo")
+        .output()
+        .unwrap();
+    let text = String::from_utf8(output.stdout).unwrap();
+    let errors = String::from_utf8_lossy(&output.stderr);
+    assert!(output.status.success(), "{text}\n{errors}");
+    for part in [
+        "Growth that the balance of payments allows XAA",
+        "strong form",
+        "curl -s",
+    ] {
+        assert!(text.contains(part), "no '{part}' in:\n{text}");
+    }
+}
