@@ -135,6 +135,8 @@ impl Application {
         let outcome = self.server.await;
         sweeper.abort();
         let _ = sweeper.await;
+        // Workers that are still ending may hold the database a moment longer.
+        self.shared.database.disconnect().await;
         if let Ok(shared) = Arc::try_unwrap(self.shared) {
             shared.database.close().await;
         }
@@ -255,7 +257,7 @@ async fn admit(
                 .or_else(|| v.strip_prefix("bearer "))
         })
         .map(str::trim);
-    let unauthorised = |code: &str, detail: &str| {
+    let unauthorised = |code: &'static str, detail: &str| {
         Err(Problem::new(StatusCode::UNAUTHORIZED, code, detail)
             .with_header("WWW-Authenticate", "Bearer realm=\"realterms\""))
     };
@@ -297,7 +299,7 @@ fn finish(
             response
         }
         Err(problem) => {
-            let (status, code) = (problem.status, problem.code.as_str());
+            let (status, code) = (problem.status.as_u16(), problem.code);
             match problem.internal_reason() {
                 Some(reason) => tracing::error!(
                     request.id = %request_id, method, path, status, code, duration_ms, reason, "failed"

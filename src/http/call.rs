@@ -38,6 +38,10 @@ impl Call {
         principal: Principal,
     ) -> Result<Self, Problem> {
         let known = route.parameters();
+        #[expect(
+            clippy::disallowed_types,
+            reason = "this is the one place that reads queries"
+        )]
         let pairs = web::Query::<Vec<(String, String)>>::from_query(request.query_string())
             .map_err(|e| {
                 Problem::bad_request(format!("the query string cannot be read: {e}"), vec![])

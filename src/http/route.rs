@@ -10,7 +10,7 @@ use utoipa::ToSchema;
 use utoipa::openapi::{RefOr, Schema};
 
 use super::call::Call;
-use super::problem::Problem;
+use super::problem::{Problem, ProblemView};
 use crate::finding::Finding;
 use crate::service::tokens::Role;
 use crate::time::Date;
@@ -298,7 +298,7 @@ impl Route {
                     "description": description,
                     "headers": headers_object(headers),
                     "content": content_object(
-                        &[("application/problem+json", schema::<Problem>)], schemas),
+                        &[("application/problem+json", schema::<ProblemView>)], schemas),
                 }),
             );
         }

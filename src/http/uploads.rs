@@ -118,7 +118,7 @@ pub(super) fn routes() -> Vec<Route> {
             body: &[],
             successes: || vec![json::<KindSpec>(200, "the kind").or("text/csv", text)],
             problems: &[404, 406],
-            handler: |call| Box::pin(get_kind(call)),
+            handler: |call| Box::pin(async move { get_kind(&call) }),
         },
         Route {
             method: Method::Post,
@@ -257,7 +257,7 @@ pub(super) fn routes() -> Vec<Route> {
     ]
 }
 
-async fn get_kind(call: Call) -> Answer {
+fn get_kind(call: &Call) -> Answer {
     let name = call.segment("kind").to_owned();
     let Some(kind) = intake::kinds().into_iter().find(|k| k.name == name) else {
         return Err(Problem::new(

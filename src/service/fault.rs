@@ -65,6 +65,23 @@ pub enum Fault {
     Internal(String),
 }
 
+impl std::fmt::Display for Fault {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        match self {
+            Self::BadRequest { detail, .. }
+            | Self::Invalid { detail, .. }
+            | Self::Refused { detail, .. }
+            | Self::Conflict { detail, .. }
+            | Self::PreconditionFailed { detail }
+            | Self::TooLarge { detail }
+            | Self::TooSlow { detail } => f.write_str(detail),
+            Self::NotFound { what } => write!(f, "there is no {what}"),
+            Self::Store(error) => write!(f, "the database failed: {error}"),
+            Self::Internal(reason) => write!(f, "an error of the program: {reason}"),
+        }
+    }
+}
+
 impl From<store::Error> for Fault {
     fn from(error: store::Error) -> Self {
         Self::Store(error)

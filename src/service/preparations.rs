@@ -291,9 +291,12 @@ fn statement(run: i64, series: &Series) -> Statement {
         origins: series
             .status
             .iter()
-            .map(|s| match s {
-                Status::Absent => Origin::Absent,
-                _ => Origin::Run { id: run },
+            .map(|s| {
+                if *s == Status::Absent {
+                    Origin::Absent
+                } else {
+                    Origin::Run { id: run }
+                }
             })
             .collect(),
         scope: Scope::Replace,

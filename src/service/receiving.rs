@@ -258,7 +258,7 @@ async fn store_and_land(
         first += BATCH;
         let fragments: Vec<Fragment> = groups
             .into_iter()
-            .filter_map(|pieces| Fragment::settle(pieces))
+            .filter_map(Fragment::settle)
             .map(|(fragment, duplicates)| {
                 parts.add_duplicates(&fragment.key, &duplicates);
                 fragment

@@ -142,7 +142,7 @@ pub fn text(run: &StudyRun, with_unreliable: bool) -> String {
         .unwrap_or("-");
     let header = [
         format!(
-            "Study {} version {}, run {} (its {}. run; {}, by {})",
+            "Study {} version {}, run {} (number {} of this study; {}, by {})",
             run.study, run.version, run.id, run.runs_so_far, run.recorded, run.author
         ),
         format!(
