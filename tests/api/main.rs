@@ -5,5 +5,6 @@
 mod architecture;
 mod cluster;
 mod command;
+mod reading;
 mod support;
 mod uploads;
