@@ -5,5 +5,6 @@
 mod architecture;
 mod cluster;
 mod command;
+mod open_data;
 mod support;
 mod uploads;
