@@ -8,7 +8,8 @@ use super::call::Call;
 use super::problem::Problem;
 use super::respond::{Media, location};
 use super::route::{
-    Answer, Form, Method, Parameter, Route, Success, empty, json, object, optional, paging, text,
+    Answer, Form, Method, Parameter, Route, Success, empty, json, json_list, object, optional,
+    paging, text,
 };
 use super::series::{moment, moment_parameters};
 use crate::preparation::Plan;
@@ -74,7 +75,7 @@ macro_rules! document_routes {
                 parameters: paging,
                 headers: &[],
                 body: &[],
-                successes: || vec![json::<Vec<DocumentView>>(200, "a page")],
+                successes: || vec![json_list::<DocumentView>(200, "a page")],
                 problems: &[],
                 handler: |call| {
                     Box::pin(async move {
@@ -172,7 +173,7 @@ macro_rules! document_routes {
                 parameters: paging,
                 headers: &[],
                 body: &[],
-                successes: || vec![json::<Vec<RunLine>>(200, "a page")],
+                successes: || vec![json_list::<RunLine>(200, "a page")],
                 problems: &[404],
                 handler: |call| {
                     Box::pin(async move {

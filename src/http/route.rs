@@ -35,6 +35,11 @@ pub(super) fn schema<T: ToSchema>(schemas: &mut Schemas) -> serde_json::Value {
     serde_json::json!({ "$ref": format!("#/components/schemas/{}", T::name()) })
 }
 
+/// A list of `T`. Written out where it is used: the library names every list `Vec`, whatever it holds.
+fn list_schema<T: ToSchema>(schemas: &mut Schemas) -> serde_json::Value {
+    serde_json::json!({ "type": "array", "items": schema::<T>(schemas) })
+}
+
 /// Plain text.
 pub(super) fn text(_: &mut Schemas) -> serde_json::Value {
     serde_json::json!({ "type": "string" })
@@ -172,6 +177,16 @@ pub(super) fn json<T: ToSchema>(status: u16, description: &'static str) -> Succe
         status,
         description,
         content: vec![("application/json", schema::<T>)],
+        headers: vec![],
+    }
+}
+
+/// A success with a JSON list of `T`.
+pub(super) fn json_list<T: ToSchema>(status: u16, description: &'static str) -> Success {
+    Success {
+        status,
+        description,
+        content: vec![("application/json", list_schema::<T>)],
         headers: vec![],
     }
 }

@@ -7,7 +7,9 @@ use futures_util::TryStreamExt;
 use super::call::Call;
 use super::problem::Problem;
 use super::respond::Media;
-use super::route::{Answer, Form, Method, Parameter, Route, json, optional, paging, text};
+use super::route::{
+    Answer, Form, Method, Parameter, Route, json, json_list, optional, paging, text,
+};
 use crate::clock;
 use crate::intake::{self, KindSpec, Reject};
 use crate::series::vintage::Scope;
@@ -97,7 +99,7 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: Vec::new,
             headers: &[],
             body: &[],
-            successes: || vec![json::<Vec<KindSpec>>(200, "the kinds")],
+            successes: || vec![json_list::<KindSpec>(200, "the kinds")],
             problems: &[],
             handler: |call| Box::pin(async move { call.json(StatusCode::OK, &intake::kinds()) }),
         },
@@ -149,7 +151,7 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: list_parameters,
             headers: &[],
             body: &[],
-            successes: || vec![json::<Vec<UploadView>>(200, "a page")],
+            successes: || vec![json_list::<UploadView>(200, "a page")],
             problems: &[],
             handler: |call| Box::pin(list(call)),
         },
@@ -223,7 +225,7 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: paging,
             headers: &[],
             body: &[],
-            successes: || vec![json::<Vec<Reject>>(200, "a page")],
+            successes: || vec![json_list::<Reject>(200, "a page")],
             problems: &[404],
             handler: |call| {
                 Box::pin(async move {

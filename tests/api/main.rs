@@ -5,6 +5,7 @@
 mod architecture;
 mod cluster;
 mod command;
+mod open_data;
 mod reading;
 mod support;
 mod uploads;
