@@ -93,7 +93,8 @@ impl Problem {
         for (name, value) in &self.headers {
             response.insert_header((*name, value.as_str()));
         }
-        let body = serde_json::to_string(&self).unwrap_or_default();
+        let mut body = serde_json::to_string(&self).unwrap_or_default();
+        body.push('\n');
         response.content_type("application/problem+json").body(body)
     }
 }
@@ -127,11 +128,10 @@ impl From<Fault> for Problem {
                 "precondition_failed",
                 detail,
             ),
-            Fault::TooLarge { detail } => {
-                Self::new(StatusCode::PAYLOAD_TOO_LARGE, "too_large", detail)
+            Fault::TooLarge { detail, errors } => {
+                Self::new(StatusCode::PAYLOAD_TOO_LARGE, "too_large", detail).with_errors(errors)
             }
-            Fault::TooSlow { detail } => Self::new(StatusCode::REQUEST_TIMEOUT, "too_slow", detail)
-                .with_header("Connection", "close"),
+            Fault::TooSlow { detail } => Self::new(StatusCode::REQUEST_TIMEOUT, "too_slow", detail),
             Fault::Store(error) => Self {
                 internal: Some(error.to_string()),
                 ..Self::new(

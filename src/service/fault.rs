@@ -53,6 +53,8 @@ pub enum Fault {
     TooLarge {
         /// Which limit.
         detail: String,
+        /// What was expected, and what to do.
+        errors: Vec<Finding>,
     },
     /// The body came too slowly.
     TooSlow {
