@@ -2,8 +2,12 @@
 
 #![expect(clippy::unwrap_used, reason = "a failed unwrap is a failed test")]
 
+mod access;
 mod architecture;
 mod cluster;
 mod command;
+mod contract;
+mod conventions;
+mod representations;
 mod support;
 mod uploads;
