@@ -72,7 +72,7 @@ impl Application {
         }
         let shared = Arc::new(Shared {
             database,
-            gate: Gate::default(),
+            gate: Gate::new(loopback),
             limits: limits(settings),
         });
         let routes: &'static [Route] = Box::leak(super::routes().into_boxed_slice());
@@ -252,11 +252,9 @@ async fn admit(
         .headers()
         .get("Authorization")
         .and_then(|v| v.to_str().ok())
-        .and_then(|v| {
-            v.strip_prefix("Bearer ")
-                .or_else(|| v.strip_prefix("bearer "))
-        })
-        .map(str::trim);
+        .and_then(|v| v.split_once(' '))
+        .filter(|(scheme, _)| scheme.eq_ignore_ascii_case("Bearer"))
+        .map(|(_, token)| token.trim());
     let unauthorised = |code: &'static str, detail: &str| {
         Err(Problem::new(StatusCode::UNAUTHORIZED, code, detail)
             .with_header("WWW-Authenticate", "Bearer realm=\"realterms\""))

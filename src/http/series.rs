@@ -6,7 +6,7 @@ use super::call::Call;
 use super::problem::Problem;
 use super::respond::{Media, to_json};
 use super::route::{
-    Answer, Form, Method, Parameter, Route, empty, json, json_list, optional, paging, text,
+    self, Answer, Form, Method, Parameter, Route, empty, json, optional, paging, text,
 };
 use crate::series::SeriesKey;
 use crate::service::lineage::{LineageView, lineage};
@@ -109,7 +109,7 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: list_parameters,
             headers: &[],
             body: &[],
-            successes: || vec![json_list::<SeriesView>(200, "a page")],
+            successes: || vec![route::list::<SeriesView>(200, "a page")],
             problems: &[],
             handler: |call| Box::pin(list(call)),
         },
@@ -161,7 +161,7 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: Vec::new,
             headers: &[],
             body: &[],
-            successes: || vec![json_list::<VintageView>(200, "the vintages")],
+            successes: || vec![route::list::<VintageView>(200, "the vintages")],
             problems: &[404],
             handler: |call| {
                 Box::pin(async move {

@@ -466,6 +466,7 @@ pub fn too_large(limit: u64) -> Fault {
             "an upload may have at most {limit} bytes (setting REALTERMS_MAX_UPLOAD_BYTES); split the \
              file or compress it"
         ),
+        errors: vec![],
     }
 }
 
@@ -473,6 +474,7 @@ fn unreadable(fatal: &Fatal) -> Fault {
     match fatal {
         Fatal::TooLarge(_) => Fault::TooLarge {
             detail: fatal.to_string(),
+            errors: fatal.findings().to_vec(),
         },
         Fatal::Refused(findings) => Fault::invalid("unreadable_file", findings.clone()),
     }

@@ -2,10 +2,14 @@
 
 #![expect(clippy::unwrap_used, reason = "a failed unwrap is a failed test")]
 
+mod access;
 mod architecture;
 mod cluster;
 mod command;
+mod contract;
+mod conventions;
 mod open_data;
 mod reading;
+mod representations;
 mod support;
 mod uploads;
