@@ -137,10 +137,10 @@ pub struct Settings {
     #[arg(default_value_t = 30)]
     pub refused_days: u32,
 
-    /// What to log: a level, or directives for parts of the program
+    /// What to log: a level, or directives for parts of the program [default: info,sqlx=warn; error for the demo]
     #[arg(long, global = true, env = "REALTERMS_LOG", value_name = "FILTER")]
-    #[arg(default_value = "info,sqlx=warn", value_parser = parse_filter)]
-    pub log: String,
+    #[arg(value_parser = parse_filter)]
+    pub log: Option<String>,
 
     /// How to log, on standard error
     #[arg(

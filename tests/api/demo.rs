@@ -81,7 +81,7 @@ fn the_command_prints_the_table_and_ends_with_0() {
     let errors = String::from_utf8_lossy(&output.stderr);
     assert!(output.status.success(), "{text}\n{errors}");
     for part in [
-        "Growth that the balance of payments allows XAA",
+        "Growth that the balance of payments allows",
         "strong form",
         "curl -s",
     ] {
