@@ -72,7 +72,7 @@ impl Application {
         }
         let shared = Arc::new(Shared {
             database,
-            gate: Gate::default(),
+            gate: Gate::new(loopback),
             limits: limits(settings),
         });
         let routes: &'static [Route] = Box::leak(super::routes().into_boxed_slice());
@@ -135,6 +135,8 @@ impl Application {
         let outcome = self.server.await;
         sweeper.abort();
         let _ = sweeper.await;
+        // Workers that are still ending may hold the database a moment longer.
+        self.shared.database.disconnect().await;
         if let Ok(shared) = Arc::try_unwrap(self.shared) {
             shared.database.close().await;
         }
@@ -250,12 +252,10 @@ async fn admit(
         .headers()
         .get("Authorization")
         .and_then(|v| v.to_str().ok())
-        .and_then(|v| {
-            v.strip_prefix("Bearer ")
-                .or_else(|| v.strip_prefix("bearer "))
-        })
-        .map(str::trim);
-    let unauthorised = |code: &str, detail: &str| {
+        .and_then(|v| v.split_once(' '))
+        .filter(|(scheme, _)| scheme.eq_ignore_ascii_case("Bearer"))
+        .map(|(_, token)| token.trim());
+    let unauthorised = |code: &'static str, detail: &str| {
         Err(Problem::new(StatusCode::UNAUTHORIZED, code, detail)
             .with_header("WWW-Authenticate", "Bearer realm=\"realterms\""))
     };
@@ -297,7 +297,7 @@ fn finish(
             response
         }
         Err(problem) => {
-            let (status, code) = (problem.status, problem.code.as_str());
+            let (status, code) = (problem.status.as_u16(), problem.code);
             match problem.internal_reason() {
                 Some(reason) => tracing::error!(
                     request.id = %request_id, method, path, status, code, duration_ms, reason, "failed"

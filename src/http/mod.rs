@@ -18,7 +18,6 @@ mod state;
 mod uploads;
 
 pub use application::Application;
-pub use problem::Problem;
 
 /// All operations.
 fn routes() -> Vec<route::Route> {

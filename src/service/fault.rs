@@ -53,6 +53,8 @@ pub enum Fault {
     TooLarge {
         /// Which limit.
         detail: String,
+        /// What was expected, and what to do.
+        errors: Vec<Finding>,
     },
     /// The body came too slowly.
     TooSlow {
@@ -63,6 +65,23 @@ pub enum Fault {
     Store(store::Error),
     /// A fault of the program.
     Internal(String),
+}
+
+impl std::fmt::Display for Fault {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        match self {
+            Self::BadRequest { detail, .. }
+            | Self::Invalid { detail, .. }
+            | Self::Refused { detail, .. }
+            | Self::Conflict { detail, .. }
+            | Self::PreconditionFailed { detail }
+            | Self::TooLarge { detail, .. }
+            | Self::TooSlow { detail } => f.write_str(detail),
+            Self::NotFound { what } => write!(f, "there is no {what}"),
+            Self::Store(error) => write!(f, "the database failed: {error}"),
+            Self::Internal(reason) => write!(f, "an error of the program: {reason}"),
+        }
+    }
 }
 
 impl From<store::Error> for Fault {

@@ -76,7 +76,7 @@ struct StoredResult {
 const KIND: DocumentKind = DocumentKind::Preparation;
 
 fn parse(body: &str) -> Result<Document, Fault> {
-    Document::parse(body).map_err(|errors| Fault::invalid("bad_preparation", errors))
+    Document::parse(body).map_err(|errors| documents::refused("bad_preparation", errors))
 }
 
 /// Stores a preparation after checking it. Where its inputs are stored already, units are checked too.
@@ -291,9 +291,12 @@ fn statement(run: i64, series: &Series) -> Statement {
         origins: series
             .status
             .iter()
-            .map(|s| match s {
-                Status::Absent => Origin::Absent,
-                _ => Origin::Run { id: run },
+            .map(|s| {
+                if *s == Status::Absent {
+                    Origin::Absent
+                } else {
+                    Origin::Run { id: run }
+                }
             })
             .collect(),
         scope: Scope::Replace,

@@ -258,7 +258,7 @@ async fn store_and_land(
         first += BATCH;
         let fragments: Vec<Fragment> = groups
             .into_iter()
-            .filter_map(|pieces| Fragment::settle(pieces))
+            .filter_map(Fragment::settle)
             .map(|(fragment, duplicates)| {
                 parts.add_duplicates(&fragment.key, &duplicates);
                 fragment
@@ -466,6 +466,7 @@ pub fn too_large(limit: u64) -> Fault {
             "an upload may have at most {limit} bytes (setting REALTERMS_MAX_UPLOAD_BYTES); split the \
              file or compress it"
         ),
+        errors: vec![],
     }
 }
 
@@ -473,6 +474,7 @@ fn unreadable(fatal: &Fatal) -> Fault {
     match fatal {
         Fatal::TooLarge(_) => Fault::TooLarge {
             detail: fatal.to_string(),
+            errors: fatal.findings().to_vec(),
         },
         Fatal::Refused(findings) => Fault::invalid("unreadable_file", findings.clone()),
     }

@@ -2,12 +2,18 @@
 
 #![expect(clippy::unwrap_used, reason = "a failed unwrap is a failed test")]
 
+mod access;
 mod architecture;
 mod bulk;
 mod cluster;
 mod command;
+mod contract;
+mod conventions;
 mod held;
 mod hostile;
+mod open_data;
+mod reading;
+mod representations;
 mod support;
 mod uploads;
 mod vintages;
