@@ -4,14 +4,19 @@
 
 mod access;
 mod architecture;
+mod bulk;
 mod cluster;
 mod command;
 mod contract;
 mod conventions;
 mod demo;
+mod held;
+mod hostile;
 mod open_data;
 mod reading;
 mod readme;
 mod representations;
 mod support;
 mod uploads;
+mod vintages;
+mod wrong_input;

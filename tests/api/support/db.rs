@@ -91,7 +91,7 @@ fn options(name: &str) -> DatabaseOptions {
             "postgres://{SUPERUSER}@{sockets}:{port}/{name}?sslmode=disable"
         )),
         connections: 4,
-        upload_connections: 2,
+        upload_connections: 8,
     }
 }
 
