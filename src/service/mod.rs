@@ -20,7 +20,7 @@ mod views;
 pub use fault::Fault;
 pub use views::*;
 
-use crate::store::Database;
+pub use crate::store::Database;
 
 /// Runs pure work on a blocking thread, in the current span.
 async fn blocking<T: Send + 'static>(

@@ -10,6 +10,7 @@ use super::landing::{self, Landing};
 use super::receiving::Request;
 use super::views::{ObservationCounts, OpenedSegment, Page, SeriesList, UploadReport, UploadView};
 use super::{Fault, preview};
+use crate::clock;
 use crate::finding::{Finding, Severity};
 use crate::intake::{Intake, Reject, Understood};
 use crate::series::vintage::Scope;
@@ -331,6 +332,17 @@ pub async fn withdraw(database: &Database, id: i64, author: &str) -> Result<Uplo
     }
     store::commit(transaction).await?;
     get(database, id).await
+}
+
+/// Erases refused uploads recorded more than so many days ago.
+///
+/// # Errors
+/// [`Fault::Store`].
+pub async fn erase_old_refused(database: &Database, days: u32) -> Result<u64, Fault> {
+    match clock::now().checked_sub_days(chrono::Days::new(u64::from(days))) {
+        Some(before) => sweep_refused(database, before).await,
+        None => Ok(0),
+    }
 }
 
 /// Erases refused uploads that are older than the retention allows.

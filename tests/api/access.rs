@@ -94,7 +94,9 @@ async fn a_service_that_others_reach_never_works_without_a_token() {
     let db = TestDb::create();
     let mut settings = Settings::default();
     everywhere(&mut settings);
-    let refused = Application::build(&settings, db.open().await).await.err();
+    let refused = Application::build(settings.serving(), db.open().await)
+        .await
+        .err();
     let refused = refused.expect("it does not start").to_string();
     assert!(refused.contains("realterms token create"), "{refused}");
 

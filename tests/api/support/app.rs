@@ -113,7 +113,7 @@ impl TestApp {
         };
         settings.workers = std::num::NonZeroUsize::new(1);
         change(&mut settings);
-        let application = Application::build(&settings, db.open().await)
+        let application = Application::build(settings.serving(), db.open().await)
             .await
             .expect("the service starts");
         let mut address = application.address();
