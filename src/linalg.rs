@@ -53,6 +53,15 @@ impl Matrix {
         self.0.clone().cholesky().map(|c| Self(c.l()))
     }
 
+    /// The x with `self · x = b`, `self` lower triangular; none where a diagonal element is zero.
+    #[must_use]
+    pub fn solve_lower(&self, b: &[f64]) -> Option<Vec<f64>> {
+        let solution = self
+            .0
+            .solve_lower_triangular(&DVector::from_column_slice(b))?;
+        Some(solution.as_slice().to_vec())
+    }
+
     /// Inverse of a symmetric positive definite matrix, scaled to a unit diagonal first so that units
     /// do not matter; none where it is singular to working precision.
     #[must_use]

@@ -1,6 +1,6 @@
 //! Diagnostics of a fitted equation: each a statistic, its distribution, a p-value and a sentence.
 //!
-//! Start reading at [`diagnose`]. Durbin and Watson's test stands apart, in [`super::durbin_watson`].
+//! Start reading at [`diagnose`]. Durbin and Watson's test stands apart, in [`super::durbin_watson()`].
 
 use super::ols::{as_f64, columns, dot, is_constant};
 use super::outcome::{Distribution, TestResult};

@@ -73,7 +73,7 @@ fn pilot_lags(n: usize, power: f64) -> usize {
 /// Bandwidth for the scores `x_t e_t` of an equation, without prewhitening.
 ///
 /// With `σ_j = n⁻¹ Σ_t h_t h_{t−j}`, h the sum of the scores of all regressors but the constant:
-/// * Newey & West (1994, equations 3.8 to 3.15): `s_q = 2 Σ_{j≤m} j^q σ_j`, `s_0 = σ_0 + 2 Σ_{j≤m} σ_j`,
+/// * Newey & West (1994, section 3): `s_q = 2 Σ_{j≤m} j^q σ_j`, `s_0 = σ_0 + 2 Σ_{j≤m} σ_j`,
 ///   `m = ⌊4 (n/100)^a⌋`, a = 2/9, 4/25, 2/25; `γ = c ((s_q/s_0)²)^(1/(2q+1))`; then `⌊γ n^(1/(2q+1))⌋`
 ///   lags, so a bandwidth of one more, for Bartlett and Parzen, `γ n^(1/5)` for the quadratic spectral.
 /// * Andrews (1991, equations 5.2, 6.4): `c (α(q) n)^(1/(2q+1))`, α from least squares of each score on its

@@ -1,24 +1,38 @@
 //! Estimators: plain vectors and matrices in, structs out.
 //!
-//! Start reading at [`Ols::fit`]; [`covariance`] gives standard errors, within one equation and
-//! across equations that share a sample.
+//! Start reading at [`Ols::fit`]; [`covariance()`] gives standard errors, within one equation and
+//! across equations that share a sample, and [`diagnose`] what can be wrong with a fit. Estimators beside
+//! it: [`weighted()`], [`restricted`], [`autoregressive()`], [`two_stage`], [`seemingly_unrelated`].
+//! Stability: [`recursive_residuals`] and the sums of them, [`chow`], [`unknown_break`],
+//! [`hansen_1992()`], [`rolling`].
 
+mod autoregressive;
+mod breaks;
 mod covariance;
 mod criteria;
 mod deterministic;
 mod diagnostics;
 mod durbin_watson;
+mod hansen_1992;
+mod instrumental;
 mod kernel;
 mod ols;
 mod outcome;
+mod recursive;
 mod restriction;
+mod system;
+mod weak_instruments;
 mod weighted;
 
 #[cfg(test)]
 mod recomputed_tests;
 #[cfg(test)]
 mod reference_tests;
+#[cfg(test)]
+mod systems_tests;
 
+pub use autoregressive::{Autoregressive, FirstObservation, autoregressive};
+pub use breaks::{UnknownBreak, chow, unknown_break};
 pub use covariance::{CovarianceKind, Hc, covariance};
 pub use criteria::{Criteria, criteria};
 pub use diagnostics::{
@@ -26,12 +40,23 @@ pub use diagnostics::{
     diagnose, jarque_bera, ljung_box, reset, white,
 };
 pub use durbin_watson::{DurbinWatson, DurbinWatsonBounds, durbin_watson, durbin_watson_bounds};
+pub use hansen_1992::{
+    CointegratingScores, Deterministic, Instability, InstabilityTest, hansen_1992, instability,
+    instability_null,
+};
+pub use instrumental::{InstrumentedEquation, Overidentification, TwoStage, two_stage};
 pub use kernel::{BandwidthRule, Kernel, bandwidth, rule_of_thumb_lags};
 pub use ols::{Ols, Regressor};
 pub use outcome::{Distribution, TestResult};
+pub use recursive::{
+    Cusum, RecursiveResiduals, Window, cusum_of_squares, cusum_ols, cusum_recursive, recursive,
+    recursive_residuals, rolling,
+};
 pub use restriction::{
     LinearTest, Restricted, Restriction, likelihood_ratio, restricted, test_linear,
 };
+pub use system::{System, SystemEquation, seemingly_unrelated};
+pub use weak_instruments::{ConfidenceSet, EffectiveF, anderson_rubin, effective_f};
 pub use weighted::{Weighted, weighted};
 
 /// Why an equation cannot be estimated.

@@ -132,6 +132,7 @@ fn check_diagnostics(name: &str, fit: &Ols, expected: &Value, tolerance: f64) {
         Some(_) => auxiliary("white", &white(fit).unwrap()),
         None => assert!(white(fit).is_err()),
     }
+    single("ols_cusum_ddof_k", "stat", "p", &cusum_ols(fit).test);
     single("jarque_bera", "jb", "p", &jarque_bera(fit));
     single("reset_fitted_2", "f", "p", &reset(fit, 2).unwrap());
     if name == "Longley" {

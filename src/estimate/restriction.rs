@@ -57,7 +57,7 @@ pub struct LinearTest {
 ///
 /// With the classical V of least squares the F form equals
 /// `[(ssr_r − ssr)/q] / [ssr/(n − k)]` exactly; with a robust one F is an approximation.
-/// Source: Greene 2012, equations 5-14 to 5-16.
+/// Source: Greene 2012, chapter 5.
 ///
 /// # Errors
 /// An unknown name, a redundant restriction, or a singular covariance of `Rb`.
@@ -156,7 +156,7 @@ pub struct Restricted {
 }
 
 /// Refits an equation under restrictions, by elimination of coefficients and QR of what is left.
-/// Source: Greene 2012, section 5.5.
+/// Source: Greene 2012, chapter 5.
 ///
 /// # Errors
 /// An unknown name or a redundant restriction.

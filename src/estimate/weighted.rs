@@ -5,8 +5,8 @@ use super::{EstimateError, Ols, Regressor};
 /// An equation estimated by weighted least squares.
 #[derive(Clone, Debug)]
 pub struct Weighted {
-    /// Least squares of `√w y` on `√w X`: coefficients, degrees of freedom, `s2 = Σ w e²/(n − k)`; give it to
-    /// [`super::covariance`]. Its R² and likelihood are those of the transformed data.
+    /// Least squares of `√w y` on `√w X`: coefficients, degrees of freedom, `s2 = Σ w e²/(n − k)`; give
+    /// it to [`super::covariance()`]. Its R² and likelihood are those of the transformed data.
     pub transformed: Ols,
     /// `y − X β`, in the units of y.
     pub residuals: Vec<f64>,
@@ -16,8 +16,8 @@ pub struct Weighted {
     pub log_likelihood: f64,
 }
 
-/// Fits `y = X β + e`, var `e_t = σ²/w_t`, by least squares of `√w y` on `√w X` (Greene 2012, section
-/// 9.6.1). Weights are used as given: their scale moves s² but neither coefficients nor standard
+/// Fits `y = X β + e`, var `e_t = σ²/w_t`, by least squares of `√w y` on `√w X` (Greene 2012, chapter
+/// 9). Weights are used as given: their scale moves s² but neither coefficients nor standard
 /// errors. Equal weights give ordinary least squares. A missing value is an error.
 ///
 /// # Errors
