@@ -29,9 +29,10 @@ pub struct Autoregressive {
 
 const MOST_ROUNDS: usize = 2000;
 
-/// Fits `y = X β + u`, `u_t = ρ u_{t−1} + ε_t`, alternating between β by least squares of `y_t − ρ
-/// y_{t−1}` on `x_t − ρ x_{t−1}` and `ρ = Σ u_t u_{t−1} / Σ u_{t−1}²` (t from 2), from ρ = 0 until ρ
-/// moves by less than 1e-13.
+/// Fits `y = X β + u`, `u_t = ρ u_{t−1} + ε_t`.
+///
+/// Alternates between β by least squares of `y_t − ρ y_{t−1}` on `x_t − ρ x_{t−1}` and
+/// `ρ = Σ u_t u_{t−1} / Σ u_{t−1}²` (t from 2), from ρ = 0 until ρ moves by less than 1e-13.
 ///
 /// A missing value is an error: the rows must be consecutive. Source: Greene 2012, chapter 20.
 /// Reference: Danish money demand, ρ = 0.9600977 (kept), 0.9739956 (dropped), `estimation.json`.

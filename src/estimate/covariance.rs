@@ -31,7 +31,7 @@ pub enum CovarianceKind {
     },
 }
 
-/// Weight of squared residuals in a covariance robust to heteroskedasticity (MacKinnon & White 1985).
+/// Weight of squared residuals in a covariance robust to heteroskedasticity (`MacKinnon` & White 1985).
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum Hc {
     /// `e²` (White 1980).
@@ -54,7 +54,8 @@ pub enum Hc {
 /// diagonal blocks are the equations' own covariances.
 ///
 /// # Errors
-/// [`EstimateError::SampleDiffers`] and [`EstimateError::TooManyLags`].
+/// [`EstimateError::SampleDiffers`], [`EstimateError::TooManyLags`], and [`EstimateError::Setting`] for a
+/// bandwidth that is none.
 pub fn covariance(equations: &[&Ols], kind: CovarianceKind) -> Result<Matrix, EstimateError> {
     let n = equations.first().map_or(0, |e| e.n);
     if let Some(other) = equations.iter().find(|e| e.n != n) {
@@ -95,6 +96,12 @@ pub fn covariance(equations: &[&Ols], kind: CovarianceKind) -> Result<Matrix, Es
                 let sum = long_run(&scores[r], &scores[c], Kernel::Bartlett, as_f64(lags + 1));
                 small_sample_factor(small_sample, first, second) * sum
             })
+        }
+        CovarianceKind::Kernel { bandwidth, .. } if !(0.0..1e6).contains(&bandwidth) => {
+            return Err(EstimateError::Setting {
+                setting: "bandwidth",
+                allowed: "a number of at least 0 and below a million",
+            });
         }
         CovarianceKind::Kernel {
             kernel,
@@ -235,6 +242,12 @@ mod tests {
         assert!(covariance(&[&first, &second], CovarianceKind::Classical).is_err());
         let kind = CovarianceKind::NeweyWest {
             lags: 30,
+            small_sample: false,
+        };
+        assert!(covariance(&[&first], kind).is_err());
+        let kind = CovarianceKind::Kernel {
+            kernel: Kernel::Parzen,
+            bandwidth: f64::NAN,
             small_sample: false,
         };
         assert!(covariance(&[&first], kind).is_err());

@@ -82,8 +82,9 @@ pub fn breusch_godfrey(fit: &Ols, lags: usize) -> Result<AuxiliaryTest, Estimate
     ))
 }
 
-/// Ljung & Box (1978): `Q = n (n + 2) Σ_{j≤lags} r_j²/(n − j)`, χ²(lags), r_j the autocorrelations of the
-/// residuals about their mean. Not valid with lagged dependent variables. Reference: Danish money
+/// Ljung & Box (1978): `Q = n (n + 2) Σ_{j≤lags} r_j²/(n − j)`, χ²(lags).
+///
+/// `r_j` are the autocorrelations of the residuals about their mean. Not valid with lagged dependent variables. Reference: Danish money
 /// demand, 20.45895 (1 lag), statsmodels 0.15.0.
 ///
 /// # Errors
@@ -162,8 +163,9 @@ pub fn breusch_pagan(fit: &Ols) -> Result<TestResult, EstimateError> {
     ))
 }
 
-/// White (1980): squared residuals on the regressors, their squares and cross products; `LM = n R²`,
-/// χ²(distinct columns − 1). Columns equal to an earlier one (squares of dummies) are left out.
+/// White (1980): squared residuals on the regressors, their squares and cross products.
+///
+/// `LM = n R²`, χ²(distinct columns − 1). Columns equal to an earlier one (squares of dummies) are left out.
 /// Reference: Danish money demand, 10.78770.
 ///
 /// # Errors

@@ -88,8 +88,9 @@ pub fn durbin_watson(fit: &Ols, lagged_dependent: bool) -> Result<DurbinWatson, 
     })
 }
 
-/// Bounds at level `alpha` for n observations, a constant and k further regressors: the same quantile with
-/// the n − k − 1 smallest, and with the largest, of `2 (1 − cos(πi/n))`, i = 1 … n − 1 (Durbin & Watson
+/// Bounds at level `alpha` for n observations, a constant and k further regressors.
+///
+/// The same quantile with the n − k − 1 smallest, and with the largest, of `2 (1 − cos(πi/n))`, i = 1 … n − 1 (Durbin & Watson
 /// 1950, theorem 3). To 1e-9. Reference: fixtures/reference/durbin-watson-computed.csv, met to its four
 /// digits.
 #[must_use]

@@ -43,8 +43,9 @@ pub struct InstabilityTest {
     pub sup_f: TestResult,
 }
 
-/// The statistics of Hansen 1992 (Journal of Business & Economic Statistics 10(3)), with
-/// `S_t = Σ_{j≤t} s_j`, `M_t = Σ_{j≤t} x_j x_j'`, dates from `⌈0.15 n⌉` to `⌊0.85 n⌋`. Reference: plain
+/// The statistics of Hansen 1992 (Journal of Business & Economic Statistics 10(3)).
+///
+/// With `S_t = Σ_{j≤t} s_j`, `M_t = Σ_{j≤t} x_j x_j'`, dates from `⌈0.15 n⌉` to `⌊0.85 n⌋`. Reference: plain
 /// numpy on Danish money demand with least-squares scores, `estimation.json`.
 ///
 /// # Errors
@@ -112,8 +113,10 @@ pub enum Deterministic {
     Trend,
 }
 
-/// Draws of the statistics under the null: least squares of white noise on the deterministic part and
-/// `integrated` independent random walks, n observations, error variance known. Replication i draws from
+/// One draw of the statistics under the null.
+///
+/// Least squares of white noise on the deterministic part and `integrated` independent random walks, n
+/// observations, error variance known. Replication i draws from
 /// stream i, whatever the thread.
 ///
 /// # Errors

@@ -55,7 +55,7 @@ pub struct Overidentification {
 /// exogenous variables. Covariance `(X̂'X̂)⁻¹ Ω (X̂'X̂)⁻¹` with structural residuals in Ω.
 ///
 /// Durbin–Wu–Hausman in regression form: first-stage residuals added to least squares, F(q, n − k − q).
-/// Sources: Wooldridge 2010, sections 5.1, 6.2; Davidson & MacKinnon 2004, section 8.7. Reference:
+/// Sources: Wooldridge 2010, sections 5.1, 6.2; Davidson & `MacKinnon` 2004, section 8.7. Reference:
 /// linearmodels 7.1, `estimation.json`. With the endogenous regressors as their own instruments the
 /// coefficients are those of ordinary least squares.
 ///

@@ -97,8 +97,9 @@ pub enum ConfidenceSet {
     Line,
 }
 
-/// The set of `b` that Anderson & Rubin's (1949) test does not reject at `level` (0.95), whatever the
-/// strength of the instruments: F(instruments, n − exogenous − instruments) of the instruments in the
+/// The set of `b` that Anderson & Rubin's (1949) test does not reject at `level` (0.95).
+///
+/// It holds whatever the strength of the instruments: F(instruments, n − exogenous − instruments) of the instruments in the
 /// regression of `y − b Y` on all exogenous variables, homoskedastic errors. Solved as a quadratic
 /// inequality, so it may be unbounded or empty.
 ///

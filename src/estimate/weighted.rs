@@ -10,14 +10,15 @@ pub struct Weighted {
     pub transformed: Ols,
     /// `y − X β`, in the units of y.
     pub residuals: Vec<f64>,
-    /// `1 − Σ w e² / Σ w (y − ȳ_w)²`, ȳ_w the weighted mean.
+    /// `1 − Σ w e² / Σ w (y − ȳ_w)²`, `ȳ_w` the weighted mean.
     pub r2: f64,
     /// Gaussian log-likelihood of y at variances `(Σ w e²/n)/w_t`.
     pub log_likelihood: f64,
 }
 
-/// Fits `y = X β + e`, var `e_t = σ²/w_t`, by least squares of `√w y` on `√w X` (Greene 2012, chapter
-/// 9). Weights are used as given: their scale moves s² but neither coefficients nor standard
+/// Fits `y = X β + e`, var `e_t = σ²/w_t`, by least squares of `√w y` on `√w X` (Greene 2012, chapter 9).
+///
+/// Weights are used as given: their scale moves s² but neither coefficients nor standard
 /// errors. Equal weights give ordinary least squares. A missing value is an error.
 ///
 /// # Errors
