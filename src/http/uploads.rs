@@ -360,24 +360,17 @@ async fn create(mut call: Call) -> Answer {
     };
     let view = receive(&call.shared.database, &call.shared.limits, request, payload)
         .await
-        .map_err(|fault| match fault {
-            Fault::Invalid {
-                code,
-                detail,
-                mut errors,
-            } if kind_of_body.starts_with("application/x-www-form-urlencoded") => {
+        .map_err(|mut fault| {
+            if let Fault::Invalid { errors, .. } = &mut fault
+                && kind_of_body.starts_with("application/x-www-form-urlencoded")
+            {
                 let message = "the body came as a form, whose line ends may be lost";
                 errors.push(
                     Finding::notice("sent_as_form", message)
                         .remedy("with curl send it by --data-binary @FILE; -d drops line ends"),
                 );
-                Fault::Invalid {
-                    code,
-                    detail,
-                    errors,
-                }
             }
-            other => other,
+            fault
         })?;
     let status = if view.dry_run || view.recognised {
         StatusCode::OK

@@ -25,7 +25,7 @@ async fn every_operation_asks_for_its_role() {
     for (path, method, operation) in operations() {
         let method: Method = method.to_uppercase().parse().unwrap();
         // An unknown parameter is refused after the role was asked for and before anything is done.
-        let path = path.replace('{', "").replace('}', "") + "?nonesuch=1";
+        let path = path.replace(['{', '}'], "") + "?nonesuch=1";
         let description = operation["description"].as_str().unwrap_or_default();
         let least = Role::ALL
             .into_iter()

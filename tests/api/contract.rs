@@ -98,7 +98,7 @@ fn references_resolve(value: &Value) {
             map.values().for_each(references_resolve);
         }
         Value::Array(list) => list.iter().for_each(references_resolve),
-        _ => {}
+        Value::Null | Value::Bool(_) | Value::Number(_) | Value::String(_) => {}
     }
 }
 
