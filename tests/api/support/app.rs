@@ -81,14 +81,14 @@ impl Answer {
         self.headers.get(name).and_then(|v| v.to_str().ok())
     }
 
-    /// Fails unless the status is this one, showing the body.
+    /// Fails unless the status is this one, showing the beginning of the body.
     #[track_caller]
     pub(crate) fn expect(self, status: u16) -> Self {
         assert_eq!(
             self.status,
             status,
             "{}",
-            String::from_utf8_lossy(&self.bytes)
+            String::from_utf8_lossy(&self.bytes[..self.bytes.len().min(2000)])
         );
         self
     }
