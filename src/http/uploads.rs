@@ -221,7 +221,7 @@ pub(super) fn routes() -> Vec<Route> {
             method: Method::Get,
             path: "/v1/uploads/{id}/rejects",
             name: "list_rejects",
-            summary: "Rows that could not be taken, with what was found and expected",
+            summary: "Rows that could not be taken, with what was found and expected; the first ten thousand",
             role: Some(Role::Read),
             parameters: paging,
             headers: &[],
