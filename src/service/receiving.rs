@@ -13,6 +13,7 @@ use super::groups::Source;
 use super::uploads::{self, ReportParts};
 use super::views::UploadView;
 use super::{Fault, body, currencies, landing, preview};
+use crate::clock;
 use crate::finding::Finding;
 use crate::intake::{self, Reader};
 use crate::series::provenance::Origin;
@@ -53,8 +54,6 @@ pub struct Request {
     pub gzip_declared: bool,
     /// Release date, if stated.
     pub released: Option<Date>,
-    /// Today, the release date unless stated.
-    pub today: Date,
     /// Title.
     pub title: String,
     /// Publisher.
@@ -100,6 +99,25 @@ pub fn too_large(limit: u64) -> Fault {
     }
 }
 
+/// The date of release: today unless stated, and never later.
+fn release_date(stated: Option<Date>) -> Result<Date, Fault> {
+    let today = clock::today();
+    match stated {
+        Some(date) if date > today => {
+            let detail = "'released' lies in the future".to_owned();
+            let finding = Finding::error("released_in_future", detail.as_str())
+                .at_parameter("released")
+                .found(date.to_string())
+                .expected(format!("a date until today, {today}"));
+            Err(Fault::BadRequest {
+                detail,
+                errors: vec![finding],
+            })
+        }
+        stated => Ok(stated.unwrap_or(today)),
+    }
+}
+
 /// Receives an upload.
 ///
 /// # Errors
@@ -113,7 +131,7 @@ pub async fn receive<E: std::fmt::Display>(
 ) -> Result<UploadView, Fault> {
     let parameters = uploads::parameters(&request);
     let parameters_json = serde_json::json!(parameters);
-    let released = request.released.unwrap_or(request.today);
+    let released = release_date(request.released)?;
     let mut transaction = database.begin_upload().await?;
     let context = currencies::context(&mut transaction).await?;
     let reader = Reader::new(

@@ -276,7 +276,11 @@ async fn the_client_chooses_the_representation() {
         )
         .await
         .expect(201);
-    assert!(made.text().contains("its 2. run"), "{}", made.text());
+    assert!(
+        made.text().contains("number 2 of this study"),
+        "{}",
+        made.text()
+    );
     let template = app
         .get("/v1/kinds/trade?format=csv")
         .await
