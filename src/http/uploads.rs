@@ -10,7 +10,6 @@ use super::respond::Media;
 use super::route::{
     self, Answer, Form, Method, Parameter, Route, Success, empty, json, optional, paging, text,
 };
-use crate::clock;
 use crate::finding::Finding;
 use crate::intake::{self, KindSpec, Reject};
 use crate::series::vintage::Scope;
@@ -221,7 +220,7 @@ pub(super) fn routes() -> Vec<Route> {
             method: Method::Get,
             path: "/v1/uploads/{id}/rejects",
             name: "list_rejects",
-            summary: "Rows that could not be taken, with what was found and expected",
+            summary: "Rows that could not be taken, with what was found and expected; the first ten thousand",
             role: Some(Role::Read),
             parameters: paging,
             headers: &[],
@@ -321,22 +320,11 @@ async fn create(mut call: Call) -> Answer {
         let detail = errors.first().map_or("", |f| f.message.as_str()).to_owned();
         Problem::bad_request(detail, errors)
     })?;
-    let today = clock::today();
-    let released = call.date("released");
-    if released.is_some_and(|r| r > today) {
-        let message = "'released' lies in the future";
-        let finding = Finding::error("released_in_future", message)
-            .at_parameter("released")
-            .found(call.parameter("released").unwrap_or_default())
-            .expected(format!("a date until today, {today}"));
-        return Err(Problem::bad_request(message, vec![finding]));
-    }
     let or_empty = |name: &str| call.parameter(name).unwrap_or_default().to_owned();
     let request = Request {
         settings,
         gzip_declared,
-        released,
-        today,
+        released: call.date("released"),
         title: or_empty("title"),
         publisher: or_empty("publisher"),
         note: or_empty("note"),

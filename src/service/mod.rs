@@ -3,9 +3,11 @@
 //! A route calls one function here; a function here calls `store` and the pure rooms. Work that would
 //! hold up the event loop runs on a blocking thread.
 
+mod body;
 pub mod currencies;
 pub mod documents;
 mod fault;
+mod groups;
 mod landing;
 pub mod lineage;
 pub mod preparations;

@@ -80,7 +80,7 @@ impl ReportParts {
     }
 
     pub(super) fn add_duplicates(&mut self, key: &SeriesKey, duplicates: &[Duplicate]) {
-        const KEPT: usize = 1000;
+        const KEPT: usize = 10_000;
         self.duplicate_count += duplicates.len() as u64;
         let room = KEPT.saturating_sub(self.duplicates.len());
         self.duplicates.extend(
@@ -93,6 +93,12 @@ impl ReportParts {
 
     pub(super) fn add_landing(&mut self, landing: &Landing, opened: Vec<OpenedSegment>) {
         self.landing_findings.clone_from(&landing.findings);
+        if landing.more_findings > 0 {
+            self.landing_findings.push(Finding::error(
+                "more_findings",
+                format!("{} more series have such findings", landing.more_findings),
+            ));
+        }
         self.opened = opened;
     }
 

@@ -14,7 +14,7 @@ use crate::wrong_input::{answer, head, speak};
 async fn quotes_line_breaks_and_odd_spaces_keep_lines_right() {
     let app = start().await;
     // A mark of byte order, CRLF, blank lines, quoted cells, and a line break inside a bad one.
-    let file = "\u{feff}\"area\";Measure; \"currency\" ;PERIOD;\"value\"\r\n\r\n\
+    let file = "\u{feff}\"area\";Measure; currency ;PERIOD;\"value\"\r\n\r\n\
         \"XAA\";exports;XAD;2018;\"1.5\"\r\n\
         \"XA\r\nA;\"\"x\";exports;XAD;2019;2\r\n\
          XAA ;\"exports\";XAD;\"2019\";2.5\r\n\r\n\
