@@ -6,5 +6,6 @@ mod architecture;
 mod cluster;
 mod command;
 mod reading;
+mod storing;
 mod support;
 mod uploads;
