@@ -137,7 +137,7 @@ pub(super) fn routes() -> Vec<Route> {
                         .header("Location"),
                 ]
             },
-            problems: &[408, 409, 413, 415, 422],
+            problems: &[408, 409, 413, 415, 422, 503],
             handler: |call| Box::pin(create(call)),
         },
         Route {

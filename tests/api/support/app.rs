@@ -32,6 +32,19 @@ pub(crate) struct Answer {
 }
 
 impl Answer {
+    /// Reads a response to its end.
+    pub(crate) async fn of(response: reqwest::Response) -> Self {
+        Self {
+            status: response.status().as_u16(),
+            headers: response.headers().clone(),
+            bytes: response
+                .bytes()
+                .await
+                .expect("the body comes whole")
+                .to_vec(),
+        }
+    }
+
     /// The body as text.
     pub(crate) fn text(&self) -> String {
         String::from_utf8(self.bytes.clone()).expect("the body is text")
@@ -162,16 +175,7 @@ impl TestApp {
         if let Some(body) = body {
             request = request.body(body);
         }
-        let response = request.send().await.expect("the service answers");
-        let answer = Answer {
-            status: response.status().as_u16(),
-            headers: response.headers().clone(),
-            bytes: response
-                .bytes()
-                .await
-                .expect("the body comes whole")
-                .to_vec(),
-        };
+        let answer = Answer::of(request.send().await.expect("the service answers")).await;
         contract::check(&method, path, headers, sent.as_deref(), &answer);
         answer
     }

@@ -4,3 +4,4 @@ pub(crate) mod app;
 pub(crate) mod cluster;
 pub(crate) mod contract;
 pub(crate) mod db;
+pub(crate) mod program;
