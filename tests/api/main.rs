@@ -5,6 +5,7 @@
 mod architecture;
 mod cluster;
 mod command;
+mod ending;
 mod kill;
 mod reading;
 mod storing;
