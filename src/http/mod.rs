@@ -17,7 +17,7 @@ mod series;
 mod state;
 mod uploads;
 
-pub use application::Application;
+pub use application::{Application, Options};
 
 /// All operations.
 fn routes() -> Vec<route::Route> {

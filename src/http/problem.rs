@@ -106,7 +106,8 @@ impl Problem {
             errors: &self.errors,
             upload: self.upload.as_deref(),
         };
-        let body = serde_json::to_string(&view).unwrap_or_default();
+        let mut body = serde_json::to_string(&view).unwrap_or_default();
+        body.push('\n');
         response.content_type("application/problem+json").body(body)
     }
 }
@@ -140,11 +141,10 @@ impl From<Fault> for Problem {
                 "precondition_failed",
                 detail,
             ),
-            Fault::TooLarge { detail } => {
-                Self::new(StatusCode::PAYLOAD_TOO_LARGE, "too_large", detail)
+            Fault::TooLarge { detail, errors } => {
+                Self::new(StatusCode::PAYLOAD_TOO_LARGE, "too_large", detail).with_errors(errors)
             }
-            Fault::TooSlow { detail } => Self::new(StatusCode::REQUEST_TIMEOUT, "too_slow", detail)
-                .with_header("Connection", "close"),
+            Fault::TooSlow { detail } => Self::new(StatusCode::REQUEST_TIMEOUT, "too_slow", detail),
             Fault::Store(error) => Self {
                 internal: Some(error.to_string().into()),
                 ..Self::new(

@@ -53,6 +53,8 @@ pub enum Fault {
     TooLarge {
         /// Which limit.
         detail: String,
+        /// What was expected, and what to do.
+        errors: Vec<Finding>,
     },
     /// The body came too slowly.
     TooSlow {
@@ -75,7 +77,7 @@ impl std::fmt::Display for Fault {
             | Self::Refused { detail, .. }
             | Self::Conflict { detail, .. }
             | Self::PreconditionFailed { detail }
-            | Self::TooLarge { detail }
+            | Self::TooLarge { detail, .. }
             | Self::TooSlow { detail } => f.write_str(detail),
             Self::NotFound { what } => write!(f, "there is no {what}"),
             Self::Store(error) => write!(f, "the database failed: {error}"),

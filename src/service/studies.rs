@@ -40,7 +40,7 @@ pub struct StudyRun {
 const KIND: DocumentKind = DocumentKind::Study;
 
 fn parse(body: &str) -> Result<Document, Fault> {
-    Document::parse(body).map_err(|errors| Fault::invalid("bad_study", errors))
+    Document::parse(body).map_err(|errors| documents::refused("bad_study", errors))
 }
 
 /// Stores a study after checking it.

@@ -20,68 +20,101 @@ pub struct SegmentRow {
     pub number: i32,
 }
 
-/// Finds or creates the segments of these series with these units, and locks the series in the
-/// order of their ids until the transaction ends. Answers in the order of the question.
+/// Series looked up in one statement.
+const BATCH: usize = 10_000;
+
+/// Finds or creates these series. Answers in the order of the question.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn ensure(connection: &mut PgConnection, keys: &[&SeriesKey]) -> Result<Vec<i64>, Error> {
+    // Everybody creates in the order of keys and before locking anything: two uploads that create the
+    // same series wait for each other one way only.
+    let mut order: Vec<usize> = (0..keys.len()).collect();
+    order.sort_unstable_by_key(|i| keys[*i]);
+    let mut ids = vec![0; keys.len()];
+    for batch in order.chunks(BATCH) {
+        let mut columns: [Vec<String>; 8] = Default::default();
+        for i in batch {
+            columns[0].push(keys[*i].frequency().code().to_owned());
+            for (column, place) in columns[1..].iter_mut().zip(keys[*i].places()) {
+                column.push(place.clone());
+            }
+        }
+        let [
+            frequency,
+            area,
+            measure,
+            partner,
+            product,
+            currency,
+            source,
+            adjustment,
+        ] = &columns;
+        sqlx::query!(
+            "INSERT INTO series (frequency, area, measure, partner, product, currency, source, adjustment)
+             SELECT a, b, c, d, e, f, g, h FROM unnest($1::text[], $2::text[], $3::text[], $4::text[],
+                 $5::text[], $6::text[], $7::text[], $8::text[]) WITH ORDINALITY
+                 AS q(a, b, c, d, e, f, g, h, i)
+             ORDER BY i
+             ON CONFLICT DO NOTHING",
+            frequency, area, measure, partner, product, currency, source, adjustment
+        )
+        .execute(&mut *connection)
+        .await?;
+        let found = sqlx::query_scalar!(
+            r#"SELECT s.id FROM unnest($1::text[], $2::text[], $3::text[], $4::text[], $5::text[],
+                 $6::text[], $7::text[], $8::text[]) WITH ORDINALITY AS q(a, b, c, d, e, f, g, h, i)
+               JOIN series s ON (s.area, s.measure, s.frequency, s.partner, s.product, s.currency,
+                 s.source, s.adjustment) = (q.b, q.c, q.a, q.d, q.e, q.f, q.g, q.h)
+               ORDER BY q.i"#,
+            frequency,
+            area,
+            measure,
+            partner,
+            product,
+            currency,
+            source,
+            adjustment
+        )
+        .fetch_all(&mut *connection)
+        .await?;
+        for (i, id) in batch.iter().zip(found) {
+            ids[*i] = id;
+        }
+    }
+    Ok(ids)
+}
+
+/// Locks these series, in the order of their ids, until the transaction ends.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn lock(connection: &mut PgConnection, series: &[i64]) -> Result<(), Error> {
+    sqlx::query_scalar!(
+        "SELECT count(*)
+         FROM (SELECT id FROM series WHERE id = ANY($1) ORDER BY id FOR UPDATE) locked",
+        series
+    )
+    .fetch_one(connection)
+    .await?;
+    Ok(())
+}
+
+/// Finds or creates the segments of these locked series with these units. Answers in the order of the
+/// question.
 ///
 /// # Errors
 /// [`Error::Database`].
 pub async fn ensure_segments(
     connection: &mut PgConnection,
-    wanted: &[(&SeriesKey, &Unit)],
+    wanted: &[(i64, &Unit)],
 ) -> Result<Vec<SegmentRow>, Error> {
-    let mut columns: [Vec<String>; 8] = Default::default();
-    let mut units: Vec<serde_json::Value> = Vec::with_capacity(wanted.len());
-    for (key, unit) in wanted {
-        columns[0].push(key.frequency().code().to_owned());
-        for (column, place) in columns[1..].iter_mut().zip(key.places()) {
-            column.push(place.clone());
-        }
-        units.push(serde_json::to_value(unit).map_err(|e| Error::corrupt(key, e))?);
-    }
-    let [
-        frequency,
-        area,
-        measure,
-        partner,
-        product,
-        currency,
-        source,
-        adjustment,
-    ] = &columns;
-    // In key order, so that two uploads that create the same series wait for each other in one order.
-    sqlx::query!(
-        "INSERT INTO series (frequency, area, measure, partner, product, currency, source, adjustment)
-         SELECT DISTINCT * FROM unnest($1::text[], $2::text[], $3::text[], $4::text[], $5::text[],
-             $6::text[], $7::text[], $8::text[]) AS q(a, b, c, d, e, f, g, h)
-         ORDER BY b, c, a, d, e, f, g, h
-         ON CONFLICT DO NOTHING",
-        frequency, area, measure, partner, product, currency, source, adjustment
-    )
-    .execute(&mut *connection)
-    .await?;
-    let ids: Vec<i64> = sqlx::query_scalar!(
-        r#"SELECT s.id FROM unnest($1::text[], $2::text[], $3::text[], $4::text[], $5::text[],
-             $6::text[], $7::text[], $8::text[]) WITH ORDINALITY AS q(a, b, c, d, e, f, g, h, i)
-           JOIN series s ON (s.area, s.measure, s.frequency, s.partner, s.product, s.currency,
-             s.source, s.adjustment) = (q.b, q.c, q.a, q.d, q.e, q.f, q.g, q.h)
-           ORDER BY q.i"#,
-        frequency,
-        area,
-        measure,
-        partner,
-        product,
-        currency,
-        source,
-        adjustment
-    )
-    .fetch_all(&mut *connection)
-    .await?;
-    sqlx::query_scalar!(
-        "SELECT id FROM series WHERE id = ANY($1) ORDER BY id FOR UPDATE",
-        &ids
-    )
-    .fetch_all(&mut *connection)
-    .await?;
+    let ids: Vec<i64> = wanted.iter().map(|(id, _)| *id).collect();
+    let units: Vec<serde_json::Value> = wanted
+        .iter()
+        .map(|(id, unit)| serde_json::to_value(unit).map_err(|e| Error::corrupt(id, e)))
+        .collect::<Result<_, _>>()?;
     sqlx::query!(
         "INSERT INTO segment (series_id, number, unit)
          SELECT q.series_id,
@@ -110,17 +143,20 @@ pub async fn ensure_segments(
     Ok(rows)
 }
 
-/// Locks the series of these segments in the order of their ids.
+/// Locks the series that an upload speaks of, as [`lock`] does.
 ///
 /// # Errors
 /// [`Error::Database`].
-pub async fn lock_segments(connection: &mut PgConnection, segments: &[i64]) -> Result<(), Error> {
+pub async fn lock_of_upload(connection: &mut PgConnection, upload: i64) -> Result<(), Error> {
     sqlx::query_scalar!(
-        "SELECT id FROM series
-         WHERE id IN (SELECT series_id FROM segment WHERE id = ANY($1)) ORDER BY id FOR UPDATE",
-        segments
+        "SELECT count(*)
+         FROM (SELECT id FROM series
+               WHERE id IN (SELECT g.series_id FROM fragment f JOIN segment g ON g.id = f.segment_id
+                            WHERE f.upload_id = $1)
+               ORDER BY id FOR UPDATE) locked",
+        upload
     )
-    .fetch_all(connection)
+    .fetch_one(connection)
     .await?;
     Ok(())
 }

@@ -2,33 +2,19 @@
 
 use std::process::Command;
 
-use realterms::config::Settings;
 use realterms::demo::economy::{
     EXPORT_INCOME_ELASTICITY, EXPORT_PRICE_ELASTICITY, IMPORT_INCOME_ELASTICITY,
     IMPORT_PRICE_ELASTICITY,
 };
 use realterms::demo::{NAME, walk};
-use realterms::http::Application;
-use serde_json::Value;
 
-use crate::support::db::TestDb;
+use crate::support::app::TestApp;
 
 #[tokio::test]
 async fn the_estimates_recover_the_known_elasticities_within_their_intervals() {
-    let db = TestDb::create();
-    let settings = Settings {
-        listen: ([127, 0, 0, 1], 0).into(),
-        ..Settings::default()
-    };
-    let application = Application::build(&settings, db.open().await)
-        .await
-        .unwrap();
-    let base = format!("http://{}", application.address());
-    let handle = application.handle();
-    let server = tokio::spawn(application.run_until_stopped());
-
+    let app = TestApp::start().await;
     let mut told = Vec::new();
-    let walked = walk(&base, &mut told).await.unwrap();
+    let walked = walk(&app.base, &mut told).await.unwrap();
     let told = String::from_utf8(told).unwrap();
     for line in [
         "held      exports_revised.csv",
@@ -39,11 +25,7 @@ async fn the_estimates_recover_the_known_elasticities_within_their_intervals() {
     }
     assert!(told.contains(walked.table.trim_end()));
 
-    let get = async |path: String| -> Value {
-        let response = reqwest::get(format!("{base}{path}")).await.unwrap();
-        assert_eq!(response.status(), 200, "{path}");
-        response.json().await.unwrap()
-    };
+    let get = async |path: String| app.get(&path).await.expect(200).json();
     let run = get(format!("/v1/studies/{NAME}/runs/{}", walked.run)).await;
     let result = &run["result"];
     // Student's t at 95 %, for 36 degrees of freedom in differences and 37 in levels.
@@ -86,8 +68,7 @@ async fn the_estimates_recover_the_known_elasticities_within_their_intervals() {
     // What was mislabelled left no trace in what is served: no revision since the first file.
     let exports = get("/v1/series/Q.XAA.exports/observations".to_owned()).await;
     assert_eq!(exports["released"], "2020-03-31");
-    handle.stop(true).await;
-    server.await.unwrap().unwrap();
+    app.stop().await;
 }
 
 #[test]
@@ -100,7 +81,7 @@ fn the_command_prints_the_table_and_ends_with_0() {
     let errors = String::from_utf8_lossy(&output.stderr);
     assert!(output.status.success(), "{text}\n{errors}");
     for part in [
-        "Growth that the balance of payments allows XAA",
+        "Growth that the balance of payments allows",
         "strong form",
         "curl -s",
     ] {

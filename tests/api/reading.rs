@@ -51,7 +51,7 @@ async fn reading_a_series_is_one_indexed_row_and_at_most_two_queries() {
     let opened = realterms::store::Database::open_without_migrating(&database)
         .await
         .unwrap();
-    let reader = realterms::http::Application::build(&settings, opened)
+    let reader = realterms::http::Application::build(settings.serving(), opened)
         .await
         .unwrap();
     let (address, stop) = (reader.address(), reader.handle());

@@ -5,3 +5,5 @@ pub(crate) mod cluster;
 pub(crate) mod contract;
 pub(crate) mod db;
 pub(crate) mod program;
+pub(crate) mod sample;
+pub(crate) mod wire;
