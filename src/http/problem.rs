@@ -153,6 +153,15 @@ impl From<Fault> for Problem {
                     "the database did not answer as it should; nothing was changed; try again",
                 )
             },
+            Fault::OutcomeUnknown(error) => Self {
+                internal: Some(error.to_string().into()),
+                ..Self::new(
+                    StatusCode::SERVICE_UNAVAILABLE,
+                    "outcome_unknown",
+                    "the database went away while it committed: all of this was done, or nothing; look \
+                     which, or send the same again, which is safe for uploads and documents",
+                )
+            },
             Fault::Internal(reason) => Self::internal(reason),
         }
     }

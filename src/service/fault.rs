@@ -63,6 +63,8 @@ pub enum Fault {
     },
     /// The database failed.
     Store(store::Error),
+    /// The database went away while it committed: all was done, or nothing.
+    OutcomeUnknown(store::Error),
     /// A fault of the program.
     Internal(String),
 }
@@ -79,6 +81,9 @@ impl std::fmt::Display for Fault {
             | Self::TooSlow { detail } => f.write_str(detail),
             Self::NotFound { what } => write!(f, "there is no {what}"),
             Self::Store(error) => write!(f, "the database failed: {error}"),
+            Self::OutcomeUnknown(error) => {
+                write!(f, "all was done, or nothing; look which: {error}")
+            }
             Self::Internal(reason) => write!(f, "an error of the program: {reason}"),
         }
     }
@@ -86,7 +91,10 @@ impl std::fmt::Display for Fault {
 
 impl From<store::Error> for Fault {
     fn from(error: store::Error) -> Self {
-        Self::Store(error)
+        match error {
+            store::Error::OutcomeUnknown(_) => Self::OutcomeUnknown(error),
+            store::Error::Database(_) | store::Error::Corrupt { .. } => Self::Store(error),
+        }
     }
 }
 

@@ -39,6 +39,19 @@ pub(crate) struct Answer {
 }
 
 impl Answer {
+    /// Reads a response to its end.
+    pub(crate) async fn of(response: reqwest::Response) -> Self {
+        Self {
+            status: response.status().as_u16(),
+            headers: response.headers().clone(),
+            bytes: response
+                .bytes()
+                .await
+                .expect("the body comes whole")
+                .to_vec(),
+        }
+    }
+
     /// The body without its coding.
     pub(crate) fn plain(&self) -> Vec<u8> {
         let Some(coding) = self.header("content-encoding") else {
@@ -195,16 +208,7 @@ impl TestApp {
         if let Some(body) = body {
             request = request.body(body);
         }
-        let response = request.send().await.expect("the service answers");
-        let answer = Answer {
-            status: response.status().as_u16(),
-            headers: response.headers().clone(),
-            bytes: response
-                .bytes()
-                .await
-                .expect("the body comes whole")
-                .to_vec(),
-        };
+        let answer = Answer::of(request.send().await.expect("the service answers")).await;
         let met = contract::check(&method, path, headers, sent.as_deref(), &answer);
         self.met.lock().expect("no panic").extend(met);
         answer
