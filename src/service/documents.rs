@@ -82,7 +82,8 @@ fn check_name(name: &str) -> Result<(), Fault> {
 /// Reads JSON into a type that refuses unknown fields; `known` are listed where one is met.
 ///
 /// # Errors
-/// As [`refused`].
+/// As `refused` says: [`Fault::BadRequest`] for a text that is no JSON, [`Fault::Invalid`] for another
+/// shape.
 pub fn parse_json<T: DeserializeOwned>(body: &str, known: &[&str]) -> Result<T, Fault> {
     serde_json::from_str(body).map_err(|e| {
         let mut finding = preparation::json_finding(body, "", &e);

@@ -44,9 +44,11 @@ async fn reading_a_series_is_one_indexed_row_and_at_most_two_queries() {
         reqwest::Client::builder().no_proxy().build().unwrap(),
     );
     // A second service, so that the counts hold its reads alone.
-    let mut settings = realterms::config::Settings::default();
-    settings.listen = ([127, 0, 0, 1], 0).into();
-    settings.workers = std::num::NonZeroUsize::new(1);
+    let settings = realterms::config::Settings {
+        listen: ([127, 0, 0, 1], 0).into(),
+        workers: std::num::NonZeroUsize::new(1),
+        ..Default::default()
+    };
     let before = counts(&app).await;
     let opened = realterms::store::Database::open_without_migrating(&database)
         .await

@@ -382,7 +382,7 @@ async fn what_is_said_of_a_publication_is_kept() {
         .await
         .expect(200);
     assert_eq!(lineage.at("/spans/0/publisher"), "Office of XAA");
-    let tomorrow = chrono::Utc::now().date_naive() + chrono::Days::new(2);
+    let tomorrow = realterms::clock::now().date_naive() + chrono::Days::new(2);
     for query in [
         format!("kind=ratio&released={tomorrow}"),
         "kind=ratio&released=2020-02-30".to_owned(),

@@ -124,13 +124,13 @@ async fn a_release_that_restates_keeps_its_say_when_an_older_one_comes_or_goes()
 async fn the_auditor_sees_what_was_recorded_when() {
     let app = start().await;
     let first = send(&app, "2020-01-31", &[("2019", "1"), ("2020", "")]).await;
-    let between = chrono::Utc::now().to_rfc3339();
+    let between = realterms::clock::now().to_rfc3339();
     let second = send(&app, "2020-01-31", &[("2019", "1.5"), ("2020", "2")]).await;
     let query = |moment: &str| format!("recorded_as_of={}", moment.replace('+', "%2B"));
     let before = observed(&[("2019", 1.0), ("2020", f64::NAN)]);
     let after = observed(&[("2019", 1.5), ("2020", 2.0)]);
     assert_eq!(app.values(KEY, &query(&between)).await, before);
-    let now = chrono::Utc::now().to_rfc3339();
+    let now = realterms::clock::now().to_rfc3339();
     assert_eq!(app.values(KEY, &query(&now)).await, after);
     assert_eq!(app.values(KEY, "").await, after);
     let revision = |u: &Answer| format!("as_of=revision:{}", u.at("/revision"));
@@ -333,7 +333,7 @@ async fn play(app: &TestApp, area: &str, events: &[Event]) {
                 landed.push(said);
             }
         }
-        let now = chrono::Utc::now().to_rfc3339().replace('+', "%2B");
+        let now = realterms::clock::now().to_rfc3339().replace('+', "%2B");
         moments.push((now, landed.clone()));
     }
     for date in DATES {
