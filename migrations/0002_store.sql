@@ -199,7 +199,7 @@ SELECT s.frequency, s.area, s.measure, s.partner, s.product, s.currency, s.sourc
     g.number AS segment, v.released, v.revision,
     period_text(s.frequency, v.start_period + o.position::integer - 1) AS period,
     CASE WHEN o.value = 'NaN' THEN NULL ELSE o.value END AS value,
-    chr(get_byte(v.status, o.position::integer - 1)) AS status
+    o.status
 FROM series s
 JOIN segment g ON g.series_id = s.id
 JOIN LATERAL (
@@ -208,5 +208,7 @@ JOIN LATERAL (
     ORDER BY w.released DESC, w.revision DESC
     LIMIT 1
 ) v ON true
-CROSS JOIN LATERAL unnest(v."values") WITH ORDINALITY AS o (value, position)
-WHERE chr(get_byte(v.status, o.position::integer - 1)) <> '-';
+-- One pass over both lists: picking bytes one by one would unpack the list for each.
+CROSS JOIN LATERAL unnest(v."values", string_to_array(convert_from(v.status, 'LATIN1'), NULL))
+    WITH ORDINALITY AS o (value, status, position)
+WHERE o.status <> '-';
