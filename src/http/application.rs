@@ -5,9 +5,10 @@ use std::net::{SocketAddr, TcpListener};
 use std::sync::Arc;
 use std::time::{Duration, Instant};
 
+use actix_web::body::BoxBody;
 use actix_web::dev::{Server, ServerHandle};
 use actix_web::http::StatusCode;
-use actix_web::http::header::{HeaderName, HeaderValue};
+use actix_web::http::header::{HeaderName, HeaderValue, TRANSFER_ENCODING};
 use actix_web::web::{self, Payload};
 use actix_web::{App, HttpRequest, HttpResponse, HttpServer, guard};
 use anyhow::Context as _;
@@ -17,6 +18,7 @@ use super::call::Call;
 use super::problem::Problem;
 use super::route::{Method, Route};
 use super::state::Shared;
+use super::turn::OneTurnMore;
 use crate::service::Database;
 use crate::service::receiving::Limits;
 use crate::service::tokens::{self, Admission, Gate, Principal, Role};
@@ -26,6 +28,10 @@ const REQUEST_ID: HeaderName = HeaderName::from_static("x-request-id");
 
 /// How long requests under way may take to end when the server stops.
 const GRACE_SECONDS: u64 = 20;
+
+/// How long a body that was answered before it had come is read on and thrown away: many clients send all of
+/// it before they look at the answer.
+const UNREAD: Duration = Duration::from_secs(30);
 
 /// How often old refused uploads are looked for.
 const SWEEP: Duration = Duration::from_secs(3600);
@@ -97,6 +103,7 @@ impl Application {
         })
         .workers(options.workers)
         .shutdown_timeout(GRACE_SECONDS)
+        .client_disconnect_timeout(UNREAD)
         .disable_signals()
         .listen(listener)?
         .run();
@@ -306,6 +313,9 @@ fn finish(
     };
     if let Ok(value) = HeaderValue::from_str(&request_id) {
         response.headers_mut().insert(REQUEST_ID, value);
+    }
+    if request.headers().contains_key(TRANSFER_ENCODING) {
+        response = response.map_body(|_, body| BoxBody::new(OneTurnMore::new(body)));
     }
     response
 }

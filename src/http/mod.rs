@@ -15,6 +15,7 @@ mod respond;
 mod route;
 mod series;
 mod state;
+mod turn;
 mod uploads;
 
 pub use application::{Application, Options};

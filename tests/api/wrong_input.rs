@@ -298,6 +298,48 @@ async fn what_is_known_early_is_answered_before_the_body_has_come() {
 }
 
 #[tokio::test]
+async fn a_client_that_sends_all_before_it_reads_gets_its_answer() {
+    let app = start().await;
+    // More than the buffers on the way can hold.
+    let rows = "XAA,exports,XAD,2019,1\n".repeat(3000);
+    let header = "area,measure,currency,period,vlaue\n";
+    let count = 24_000_000 / rows.len();
+    let whole = header.len() + count * rows.len();
+    for announced in [
+        format!("Content-Length: {whole}"),
+        "Transfer-Encoding: chunked".to_owned(),
+    ] {
+        let address = app.base.strip_prefix("http://").unwrap().to_owned();
+        let chunked = announced.starts_with('T');
+        let head = head("kind=trade", &announced);
+        let rows = rows.clone();
+        let answer = tokio::task::spawn_blocking(move || {
+            let mut stream = TcpStream::connect(address).unwrap();
+            let patience = Some(Duration::from_secs(20));
+            stream.set_write_timeout(patience).unwrap();
+            stream.set_read_timeout(patience).unwrap();
+            stream.write_all(head.as_bytes())?;
+            let mut send = |piece: &str| {
+                let piece = match chunked {
+                    true => format!("{:x}\r\n{piece}\r\n", piece.len()),
+                    false => piece.to_owned(),
+                };
+                stream.write_all(piece.as_bytes())
+            };
+            send(header).and_then(|()| (0..count).try_for_each(|_| send(&rows)))?;
+            if chunked {
+                stream.write_all(b"0\r\n\r\n")?;
+            }
+            std::io::Result::Ok(answer(&mut stream))
+        });
+        let answer = answer.await.unwrap().expect("all could be sent");
+        assert_eq!(answer.status, 422, "{}", answer.text());
+        assert_eq!(answer.at("/errors/0/code"), "unknown_column");
+    }
+    app.stop().await;
+}
+
+#[tokio::test]
 async fn a_body_that_grows_beyond_the_limit_or_stops_coming_is_given_up() {
     let app = TestApp::start_with(|settings| {
         settings.max_upload_bytes = Bytes(10_000);
