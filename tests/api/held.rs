@@ -419,3 +419,26 @@ async fn a_held_upload_leaves_no_vintage_and_no_change() {
     assert_eq!(rows(&database).await, after);
     app.stop().await;
 }
+
+#[tokio::test]
+async fn a_report_shows_a_hundred_findings_and_counts_the_others() {
+    let app = start().await;
+    let table = |value: f64| {
+        let mut file = "period,value,product\n".to_owned();
+        for i in 0..130 {
+            file.push_str(&format!("2019,{value},H{i}\n"));
+        }
+        file
+    };
+    let more = "&area=XAA&measure=exports&currency=XAD";
+    send(&app, "2020-01-01", more, table(5.0)).await.expect(201);
+    let held = send(&app, "2020-01-01", more, table(5e6)).await.expect(202);
+    let findings = held.at("/report/findings");
+    let findings = findings.as_array().unwrap();
+    assert_eq!(findings.len(), 101);
+    assert_eq!(
+        findings[100]["message"],
+        "30 more series have such findings"
+    );
+    app.stop().await;
+}
