@@ -4,13 +4,23 @@
 //! across equations that share a sample.
 
 mod covariance;
+mod deterministic;
+mod long_run;
 mod ols;
+mod series_error;
+mod unit_root;
 
 #[cfg(test)]
 mod reference_tests;
+#[cfg(test)]
+mod test_data;
 
 pub use covariance::{CovarianceKind, covariance, rule_of_thumb_lags};
+pub use deterministic::Deterministic;
+pub use long_run::{LongRunCovariance, automatic_lags, long_run_covariance, long_run_variance};
 pub use ols::{Ols, Regressor};
+pub use series_error::SeriesError;
+pub use unit_root::*;
 
 /// Why an equation cannot be estimated.
 #[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
