@@ -22,7 +22,7 @@ pub fn long_run_variance(u: &[f64], lags: usize) -> f64 {
 /// Automatic lags for the Bartlett kernel: `⌊1.1447 ((s₁/s₀)² n)^(1/3)⌋` with
 /// `s_q = 1[q = 0] γ_0 + 2 Σ_{j=1}^{⌊n^(2/9)⌋} j^q γ_j`, at most n − 1.
 ///
-/// Hobijn, Franses & Ooms 1998, Generalizations of the KPSS-test for stationarity, table 1 (after
+/// Hobijn, Franses & Ooms 1998, Generalizations of the KPSS-test for stationarity (after
 /// Newey & West 1994). Reference value: 4 for the residuals of Danish log real money about its mean.
 #[must_use]
 pub fn automatic_lags(u: &[f64]) -> usize {

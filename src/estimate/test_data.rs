@@ -20,6 +20,17 @@ pub(super) fn crosscheck() -> Value {
     ))
 }
 
+/// What `recompute_dynamics.py` computes with statsmodels 0.15.0 and arch 8.0.0.
+pub(super) fn more() -> Value {
+    json(include_str!("../../fixtures/reference/dynamics-more.json"))
+}
+
+/// A count.
+pub(super) fn count(value: &Value) -> usize {
+    let count = value.as_u64().unwrap_or_else(|| panic!("{value}"));
+    usize::try_from(count).unwrap()
+}
+
 pub(super) fn numbers(value: &Value) -> Vec<f64> {
     let values = value.as_array().unwrap_or_else(|| panic!("{value}"));
     values.iter().map(|v| v.as_f64().unwrap()).collect()

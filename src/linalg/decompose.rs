@@ -64,6 +64,13 @@ pub fn thin_qr(matrix: &Matrix) -> Option<ThinQr> {
     })
 }
 
+/// The upper triangular factor R of a Householder QR without pivoting, rank regardless: as many rows
+/// as the smaller side. Least squares among the columns is the same on R as on the matrix.
+#[must_use]
+pub fn triangular(matrix: &Matrix) -> Matrix {
+    Matrix(matrix.0.clone().qr().r())
+}
+
 /// Solves `R x = b` for every column of b, R upper triangular.
 #[must_use]
 pub fn solve_upper(r: &Matrix, b: &Matrix) -> Option<Matrix> {
@@ -82,7 +89,6 @@ pub struct Singular {
 /// Singular value decomposition; `None` where it does not converge.
 #[must_use]
 pub fn singular(matrix: &Matrix) -> Option<Singular> {
-    // One-sided on the taller orientation loses nothing: sides swap, right vectors are V.
     let svd = matrix.0.clone().try_svd(false, true, f64::EPSILON, 0)?;
     let right = svd.v_t?.transpose();
     let mut order: Vec<usize> = (0..svd.singular_values.len()).collect();

@@ -50,7 +50,7 @@ impl Projector {
         let before = norm(added);
         project(held, added);
         let after = norm(added);
-        if !(after > DEPENDENT * before) {
+        if after.is_nan() || after <= DEPENDENT * before {
             self.basis.truncate(start);
             return None;
         }

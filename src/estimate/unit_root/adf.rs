@@ -16,7 +16,7 @@ pub enum LagCriterion {
     /// From the most lags down, the first whose last lag has |t| ≥ 1.6449 (10 %; Ng & Perron 1995).
     TStatistic,
     /// Smallest `ln σ̂² + 2 (τ_T + p)/T`, `σ̂² = ssr/T`, `τ_T = ρ̂² Σ ỹ²_{t−1}/σ̂²`, ỹ detrended by least
-    /// squares on the common sample (Ng & Perron 2001, eq. 9; Perron & Qu 2007).
+    /// squares on the common sample (Ng & Perron 2001; Perron & Qu 2007).
     ModifiedAic,
 }
 
@@ -54,9 +54,9 @@ pub struct Adf {
     pub max_lags: Option<usize>,
     /// Rows of the final regression, n − p − 1.
     pub observations: usize,
-    /// Asymptotic p-value (MacKinnon 1994), lower tail.
+    /// Asymptotic p-value (`MacKinnon` 1994), lower tail.
     pub p_value: f64,
-    /// Critical values at this number of rows (MacKinnon 2010).
+    /// Critical values at this number of rows (`MacKinnon` 2010).
     pub critical: CriticalValues,
 }
 
@@ -66,7 +66,7 @@ pub struct Adf {
 /// variance `ssr/(T − k)`. Lags are chosen on the common sample n − max − 1 and the equation is then
 /// refitted on all n − p − 1 rows. Missing values are an error.
 ///
-/// Said & Dickey 1984, Biometrika 71(3); p-values and critical values: MacKinnon 1994, 2010. Reference
+/// Said & Dickey 1984, Biometrika 71(3); p-values and critical values: `MacKinnon` 1994, 2010. Reference
 /// value: Danish log real money, constant, AIC of at most 10: τ = −1.2630193206 at 2 lags
 /// (statsmodels 0.15.0).
 ///

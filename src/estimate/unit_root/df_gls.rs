@@ -17,7 +17,9 @@ pub struct DfGls {
     pub observations: usize,
 }
 
-/// Test of a unit root with more power near one: y is detrended by least squares on quasi-differences
+/// Test of a unit root with more power near one than the Dickey–Fuller test.
+///
+/// y is detrended by least squares on quasi-differences
 /// `(1 − ᾱ L)`, `ᾱ = 1 − 7/n` (constant) or `1 − 13.5/n` (trend), first observations kept; then the
 /// Dickey–Fuller regression without deterministic terms.
 ///

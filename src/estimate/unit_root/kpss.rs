@@ -50,7 +50,7 @@ const AROUND_TREND: [f64; 4] = [0.119, 0.146, 0.176, 0.216];
 /// long-run variance (Bartlett, divisor n). Upper tail; the p-value is interpolated between the
 /// published levels and says where it is a bound.
 ///
-/// Kwiatkowski, Phillips, Schmidt & Shin 1992, Journal of Econometrics 54, eq. 13 and table 1. Reference
+/// Kwiatkowski, Phillips, Schmidt & Shin 1992, Journal of Econometrics 54, table 1. Reference
 /// value: Danish log real money around its mean, 4 lags: 0.6445125057 (arch 8.0.0).
 ///
 /// # Errors

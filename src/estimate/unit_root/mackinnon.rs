@@ -1,4 +1,4 @@
-//! MacKinnon's response surfaces: critical values and p-values of Dickey–Fuller and Engle–Granger t
+//! `MacKinnon`'s response surfaces: critical values and p-values of Dickey–Fuller and Engle–Granger t
 //! statistics.
 
 use std::sync::LazyLock;
@@ -56,8 +56,8 @@ fn code(deterministic: Deterministic) -> &'static str {
 ///
 /// `None` where there is no surface: more than 12 series, or no deterministic term and more than one.
 ///
-/// MacKinnon 2010, Critical Values for Cointegration Tests, Queen's Economics Department Working Paper
-/// 1227, tables 2 to 4. The 10 % row with a constant and 7 series repeats the higher terms of the row
+/// `MacKinnon` 2010, Critical Values for Cointegration Tests, Queen's Economics Department Working Paper
+/// 1227. The 10 % row with a constant and 7 series repeats the higher terms of the row
 /// for 6 in the copy that this table was read from.
 #[must_use]
 pub fn mackinnon_critical(
@@ -79,11 +79,12 @@ pub fn mackinnon_critical(
     })
 }
 
-/// Approximate asymptotic p-value of the t statistic of a Dickey–Fuller or Engle–Granger test among
-/// `series` I(1) series (at most 6; `None` above): `Φ(Σ γ_i τ^i)`, with one polynomial up to τ* and
+/// Approximate asymptotic p-value of a Dickey–Fuller or Engle–Granger t statistic.
+///
+/// Among `series` I(1) series (at most 6; `None` above): `Φ(Σ γ_i τ^i)`, with one polynomial up to τ* and
 /// another above; 0 and 1 beyond the range of the approximation.
 ///
-/// MacKinnon 1994, Journal of Business & Economic Statistics 12(2), tables 3 and 4. Reference value:
+/// `MacKinnon` 1994, Journal of Business & Economic Statistics 12(2), tables 3 and 4. Reference value:
 /// τ = −1.2630193206 with a constant gives 0.6459167152.
 #[must_use]
 pub fn mackinnon_p(statistic: f64, deterministic: Deterministic, series: usize) -> Option<f64> {

@@ -17,9 +17,9 @@ pub struct PhillipsPerron {
     pub lags: usize,
     /// Rows T of the regression, n − 1.
     pub observations: usize,
-    /// Asymptotic p-value of `Z_t` (MacKinnon 1994), lower tail.
+    /// Asymptotic p-value of `Z_t` (`MacKinnon` 1994), lower tail.
     pub p_value: f64,
-    /// Critical values of `Z_t` at T rows (MacKinnon 2010).
+    /// Critical values of `Z_t` at T rows (`MacKinnon` 2010).
     pub critical: CriticalValues,
 }
 

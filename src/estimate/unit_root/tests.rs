@@ -2,7 +2,7 @@
 
 use serde_json::Value;
 
-use super::super::test_data::{close, crosscheck, danish, dynamics, us_log, us_trade};
+use super::super::test_data::{close, count, crosscheck, danish, dynamics, more, us_log, us_trade};
 use super::super::{Deterministic, Regressor, SeriesError};
 use super::*;
 
@@ -107,7 +107,7 @@ fn compare(y: &Regressor, expected: &Value) -> usize {
 }
 
 #[test]
-fn all_tests_on_twelve_series() {
+fn all_tests_on_eleven_series() {
     let expected = dynamics();
     let mut compared = 0;
     for name in ["lrm", "lry", "ibo", "ide", "lpy"] {
@@ -116,7 +116,7 @@ fn all_tests_on_twelve_series() {
     for (name, key) in [
         ("realgdp", "realgdp"),
         ("realcons", "realcons"),
-        ("cpi", "cpi_macrodata"),
+        ("cpi_macrodata", "cpi_macrodata"),
     ] {
         compared += compare(&us_log(name), &expected["us_macro"]["unit_roots"][key]);
     }
@@ -162,6 +162,73 @@ fn danish_money_as_an_independent_program_has_it() {
     close("za", found.statistic, number(r, "za_both_lag1"), 1e-8);
 }
 
+/// Choices of lags, quadratic trends and breaks that the other fixture lacks.
+#[test]
+fn further_choices() {
+    let expected = &more()["unit_roots"];
+    for (name, wanted) in expected.as_object().unwrap() {
+        let y = match name.strip_prefix("ln_") {
+            Some(us) => us_log(us),
+            None => danish(name),
+        };
+        let lags_of = |key: &str| count(&wanted[key]["lags"]);
+        let max = Some(count(&wanted["largest"]));
+        for (code, terms) in [
+            ("c", Deterministic::Constant),
+            ("ct", Deterministic::Trend),
+            ("ctt", Deterministic::QuadraticTrend),
+        ] {
+            let what = format!("{name} {code}");
+            let chosen = |by| adf(&y, terms, Lags::Chosen { by, max }).unwrap();
+            let key = format!("adf_{code}_tstat");
+            let found = chosen(LagCriterion::TStatistic);
+            assert_eq!(found.lags, lags_of(&key), "{what}");
+            close(&what, found.statistic, number(&wanted[&key], "stat"), 1e-8);
+            close_p(&what, found.p_value, number(&wanted[&key], "p"));
+            let critical = wanted[&key]["crit"].as_array().unwrap();
+            close(
+                &what,
+                found.critical.one,
+                critical[0].as_f64().unwrap(),
+                1e-8,
+            );
+            close(
+                &what,
+                found.critical.ten,
+                critical[2].as_f64().unwrap(),
+                1e-8,
+            );
+            if code == "ctt" {
+                continue;
+            }
+            let key = format!("adf_{code}_maic");
+            let found = chosen(LagCriterion::ModifiedAic);
+            assert_eq!(found.lags, lags_of(&key), "{what}");
+            close(&what, found.statistic, number(&wanted[&key], "stat"), 1e-8);
+            let key = format!("dfgls_{code}_bic");
+            let by = LagCriterion::Bic;
+            let found = df_gls(&y, terms, Lags::Chosen { by, max }).unwrap();
+            assert_eq!(found.lags, lags_of(&key), "{what}");
+            close(&what, found.statistic, number(&wanted[&key], "stat"), 1e-8);
+        }
+        for (key, kind) in [
+            ("za_mean_lag2", Break::Mean),
+            ("za_trend_lag2", Break::Trend),
+            ("za_both_lag2", Break::Both),
+        ] {
+            let found = zivot_andrews(&y, kind, Lags::Fixed(2), 0.15).unwrap();
+            let wanted = number(wanted, key);
+            let first = y.values.len() * 15 / 100 + 1;
+            if kind == Break::Trend && found.break_after == first {
+                // The library dates a break of the trend one observation earlier and so tries one more here.
+                assert!(wanted < found.statistic);
+            } else {
+                close(&format!("{name} {key}"), found.statistic, wanted, 1e-8);
+            }
+        }
+    }
+}
+
 #[test]
 fn lag_rules_keep_to_their_definitions() {
     let y = danish("lrm");
@@ -171,20 +238,6 @@ fn lag_rules_keep_to_their_definitions() {
     let chosen = adf(&y, Deterministic::Constant, Lags::Chosen { by, max }).unwrap();
     assert_eq!(chosen.max_lags, max);
     assert!(chosen.lags > 0 && chosen.observations == 54 - chosen.lags);
-    // Modified AIC punishes ρ̂ far from zero: an overdifferenced series asks for more lags than AIC.
-    let y = danish("lry");
-    let change = y.values.windows(3).map(|w| w[2] - 2.0 * w[1] + w[0]);
-    let twice = Regressor::new("d2.lry", change.collect());
-    let lags = |by| {
-        adf(
-            &twice,
-            Deterministic::Constant,
-            Lags::Chosen { by, max: Some(8) },
-        )
-        .unwrap()
-        .lags
-    };
-    assert!(lags(LagCriterion::ModifiedAic) > lags(LagCriterion::Bic));
 }
 
 #[test]

@@ -145,7 +145,7 @@ pub(in super::super) fn last_t(
     projector.residuals(&mut x);
     projector.residuals(&mut y);
     let xx = product(&x, &x);
-    if !(xx > 1e-20 * before) {
+    if xx.is_nan() || xx <= 1e-20 * before {
         return None;
     }
     let slope = product(&x, &y) / xx;
