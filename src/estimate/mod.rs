@@ -3,23 +3,36 @@
 //! Start reading at [`Ols::fit`]; [`covariance`] gives standard errors, within one equation and
 //! across equations that share a sample.
 
+mod ardl;
+mod bounds_null;
+mod cointegrating_regression;
 mod covariance;
 mod deterministic;
 mod long_run;
 mod ols;
 mod series_error;
+mod simulation;
 mod unit_root;
 
 #[cfg(test)]
 mod reference_tests;
 #[cfg(test)]
+mod simulation_tests;
+#[cfg(test)]
 mod test_data;
 
+pub use ardl::{
+    Ardl, ArdlData, ArdlOrders, BoundsCase, BoundsStatistics, Candidate, InformationCriterion,
+    LevelRelation, LongRunCoefficient, Multipliers, Selection, select_orders,
+};
+pub use bounds_null::{BoundsDesign, BoundsNull, simulate_unit_root};
+pub use cointegrating_regression::{Dols, DolsCovariance, Fmols, dols, fmols};
 pub use covariance::{CovarianceKind, covariance, rule_of_thumb_lags};
 pub use deterministic::Deterministic;
 pub use long_run::{LongRunCovariance, automatic_lags, long_run_covariance, long_run_variance};
 pub use ols::{Ols, Regressor};
 pub use series_error::SeriesError;
+pub use simulation::{NoStore, NullDistribution, Simulation, SimulationStore, replicate, simulate};
 pub use unit_root::*;
 
 /// Why an equation cannot be estimated.
