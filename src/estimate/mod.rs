@@ -6,6 +6,7 @@
 mod ardl;
 mod bounds_null;
 mod cointegrating_regression;
+mod cointegration;
 mod covariance;
 mod deterministic;
 mod long_run;
@@ -27,6 +28,9 @@ pub use ardl::{
 };
 pub use bounds_null::{BoundsDesign, BoundsNull, simulate_unit_root};
 pub use cointegrating_regression::{Dols, DolsCovariance, Fmols, dols, fmols};
+pub use cointegration::{
+    EngleGranger, Johansen, JohansenCase, LikelihoodRatio, RankTest, Vecm, engle_granger, johansen,
+};
 pub use covariance::{CovarianceKind, covariance, rule_of_thumb_lags};
 pub use deterministic::Deterministic;
 pub use long_run::{LongRunCovariance, automatic_lags, long_run_covariance, long_run_variance};
