@@ -4,6 +4,7 @@
 //! across equations that share a sample.
 
 mod ardl;
+mod blocks;
 mod bounds_null;
 mod cointegrating_regression;
 mod cointegration;
@@ -11,8 +12,10 @@ mod covariance;
 mod deterministic;
 mod long_run;
 mod ols;
+mod product_form;
 mod series_error;
 mod simulation;
+mod system_bootstrap;
 mod unit_root;
 
 #[cfg(test)]
@@ -26,6 +29,7 @@ pub use ardl::{
     Ardl, ArdlData, ArdlOrders, BoundsCase, BoundsStatistics, Candidate, InformationCriterion,
     LevelRelation, LongRunCoefficient, Multipliers, Selection, select_orders,
 };
+pub use blocks::{BlockLength, Blocks, automatic_block_length};
 pub use bounds_null::{BoundsDesign, BoundsNull, simulate_unit_root};
 pub use cointegrating_regression::{Dols, DolsCovariance, Fmols, dols, fmols};
 pub use cointegration::{
@@ -35,8 +39,10 @@ pub use covariance::{CovarianceKind, covariance, rule_of_thumb_lags};
 pub use deterministic::Deterministic;
 pub use long_run::{LongRunCovariance, automatic_lags, long_run_covariance, long_run_variance};
 pub use ols::{Ols, Regressor};
+pub use product_form::{ProductCoefficients, ProductForm, ProductGrowth, ProductRatio};
 pub use series_error::SeriesError;
 pub use simulation::{NoStore, NullDistribution, Simulation, SimulationStore, replicate, simulate};
+pub use system_bootstrap::{Replicate, SystemBootstrap};
 pub use unit_root::*;
 
 /// Why an equation cannot be estimated.
