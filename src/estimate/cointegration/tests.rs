@@ -378,7 +378,7 @@ fn rank_tests_under_the_null() {
         ("trend", JohansenCase::RestrictedTrend),
     ] {
         let simulation = Simulation {
-            draws: 1500,
+            draws: 800,
             seed: 4,
             threads: 2,
         };
@@ -407,7 +407,7 @@ fn rank_tests_under_the_null() {
                 .map(|c| c.parse().unwrap())
                 .collect();
             for (p, wanted) in [0.90, 0.95, 0.99].into_iter().zip(wanted) {
-                let error = null.quantile_error(p) * (1.0_f64 + 1500.0 / 6000.0).sqrt();
+                let error = null.quantile_error(p) * (1.0_f64 + 800.0 / 6000.0).sqrt();
                 let found = null.quantile(p);
                 assert!(
                     (found - wanted).abs() < 3.0 * error + 0.005,
