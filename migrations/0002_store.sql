@@ -90,11 +90,12 @@ CREATE TABLE series (
     source text NOT NULL,
     adjustment text NOT NULL,
     CONSTRAINT series_pk PRIMARY KEY (id),
+    -- The only index on places of the key: beside a shorter one, the planner, which knows nothing yet of
+    -- rows that the same transaction wrote, would take that and filter all series of an area.
     CONSTRAINT series_key_unique
         UNIQUE (area, measure, frequency, partner, product, currency, source, adjustment),
     CONSTRAINT series_frequency_known CHECK (frequency IN ('A', 'S', 'Q', 'M', 'W', 'D'))
 );
-CREATE INDEX series_measure_index ON series (measure, area);
 
 -- A stretch of a series with one unit (price basis, reference period, own money).
 CREATE TABLE segment (
@@ -121,7 +122,7 @@ CREATE TABLE fragment (
     CONSTRAINT fragment_upload_fk FOREIGN KEY (upload_id) REFERENCES upload (id),
     CONSTRAINT fragment_segment_fk FOREIGN KEY (segment_id) REFERENCES segment (id)
 );
-CREATE INDEX fragment_upload_index ON fragment (upload_id);
+CREATE INDEX fragment_upload_index ON fragment (upload_id, segment_id);
 
 -- The state of a segment as released on a date and known from a revision on.
 CREATE TABLE vintage (

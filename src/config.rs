@@ -1,5 +1,8 @@
 //! Settings, read from flags and `REALTERMS_*` in this one place and passed down.
 
+use crate::http;
+use crate::intake;
+use crate::service::receiving::Limits;
 use crate::store::cluster::ClusterOptions;
 use crate::store::{DatabaseOptions, Place};
 use crate::telemetry::LogFormat;
@@ -10,6 +13,7 @@ use std::net::SocketAddr;
 use std::num::NonZeroUsize;
 use std::path::PathBuf;
 use std::str::FromStr;
+use std::time::Duration;
 use tracing_subscriber::EnvFilter;
 
 /// The start of the name of every setting in the environment.
@@ -137,10 +141,10 @@ pub struct Settings {
     #[arg(default_value_t = 30)]
     pub refused_days: u32,
 
-    /// What to log: a level, or directives for parts of the program
+    /// What to log: a level, or directives for parts of the program [default: info,sqlx=warn; error for the demo]
     #[arg(long, global = true, env = "REALTERMS_LOG", value_name = "FILTER")]
-    #[arg(default_value = "info,sqlx=warn", value_parser = parse_filter)]
-    pub log: String,
+    #[arg(value_parser = parse_filter)]
+    pub log: Option<String>,
 
     /// How to log, on standard error
     #[arg(
@@ -180,6 +184,24 @@ impl Settings {
             connections: self.connections,
             upload_connections: self.upload_connections,
         })
+    }
+
+    /// How to serve.
+    #[must_use]
+    pub fn serving(&self) -> http::Options {
+        let cores = || std::thread::available_parallelism().map_or(1, usize::from);
+        http::Options {
+            listen: self.listen,
+            workers: self.workers.map_or_else(cores, usize::from),
+            limits: Limits {
+                max_bytes: self.max_upload_bytes.0,
+                memory_budget: usize::try_from(self.upload_memory.0).unwrap_or(usize::MAX),
+                min_rate: self.min_body_rate.0,
+                patience: Duration::from_secs(self.body_patience),
+                intake: intake::Limits::default(),
+            },
+            refused_days: self.refused_days,
+        }
     }
 
     /// The private cluster that these settings name.

@@ -44,6 +44,75 @@ impl Matrix {
     pub fn times(&self, other: &Self) -> Self {
         Self(&self.0 * &other.0)
     }
+
+    /// The transpose.
+    #[must_use]
+    pub fn transposed(&self) -> Self {
+        Self(self.0.transpose())
+    }
+
+    /// The lower triangular `L` with `L L' = self`; none unless `self` is symmetric and positive
+    /// definite (only the lower triangle is read).
+    #[must_use]
+    pub fn cholesky(&self) -> Option<Self> {
+        self.0.clone().cholesky().map(|c| Self(c.l()))
+    }
+
+    /// The x with `self · x = b`, `self` lower triangular; none where a diagonal element is zero.
+    #[must_use]
+    pub fn solve_lower(&self, b: &[f64]) -> Option<Vec<f64>> {
+        let solution = self
+            .0
+            .solve_lower_triangular(&DVector::from_column_slice(b))?;
+        Some(solution.as_slice().to_vec())
+    }
+
+    /// Inverse of a symmetric positive definite matrix, scaled to a unit diagonal first so that units
+    /// do not matter; none where it is singular to working precision.
+    #[must_use]
+    pub fn inverse_positive_definite(&self) -> Option<Self> {
+        let scale: Vec<f64> = self.0.diagonal().iter().map(|d| d.sqrt().recip()).collect();
+        if !scale.iter().all(|s| s.is_finite() && *s > 0.0) {
+            return None;
+        }
+        let by_scale = |m: &DMatrix<f64>| {
+            DMatrix::from_fn(m.nrows(), m.ncols(), |i, j| m[(i, j)] * scale[i] * scale[j])
+        };
+        let factor = by_scale(&self.0).cholesky()?;
+        let smallest = factor.l_dirty().diagonal().min();
+        (smallest * smallest > RANK_TOLERANCE).then(|| Self(by_scale(&factor.inverse())))
+    }
+
+    /// Eigenvalues of a symmetric matrix, ascending.
+    #[must_use]
+    pub fn symmetric_eigenvalues(&self) -> Vec<f64> {
+        let mut values = self.0.symmetric_eigenvalues().as_slice().to_vec();
+        values.sort_by(f64::total_cmp);
+        values
+    }
+}
+
+/// Diagonal of the hat matrix `X (X'X)⁻¹ X'` as squared row lengths of the orthogonal factor: one value
+/// a row, between 0 and 1, summing to the number of columns. `columns` are of full rank.
+#[must_use]
+pub fn leverages(columns: &[Vec<f64>]) -> Vec<f64> {
+    let rows = columns.first().map_or(0, Vec::len);
+    let scale: Vec<f64> = columns.iter().map(|c| power_of_two_near(c)).collect();
+    let q = DMatrix::from_fn(rows, columns.len(), |i, j| columns[j][i] / scale[j])
+        .col_piv_qr()
+        .q();
+    q.row_iter().map(|row| row.norm_squared()).collect()
+}
+
+/// Largest over smallest singular value of the columns, each scaled to unit length first.
+#[must_use]
+pub fn condition_number(columns: &[Vec<f64>]) -> f64 {
+    let rows = columns.first().map_or(0, Vec::len);
+    let length = |c: &Vec<f64>| c.iter().map(|v| v * v).sum::<f64>().sqrt();
+    let lengths: Vec<f64> = columns.iter().map(length).collect();
+    let unit = DMatrix::from_fn(rows, columns.len(), |i, j| columns[j][i] / lengths[j]);
+    let values = unit.singular_values();
+    values.max() / values.min()
 }
 
 /// Least-squares fit of `y` on the columns of `X` (n rows, k columns of full rank).

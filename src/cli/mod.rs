@@ -92,7 +92,10 @@ fn name_variable(mut error: clap::Error) -> clap::Error {
 
 fn run(cli: Cli) -> anyhow::Result<()> {
     check_environment(&Cli::command())?;
-    telemetry::start(&cli.settings.log, cli.settings.log_format)?;
+    let quiet = matches!(cli.command, Command::Demo { .. });
+    let default = if quiet { "error" } else { "info,sqlx=warn" };
+    let filter = cli.settings.log.as_deref().unwrap_or(default);
+    telemetry::start(filter, cli.settings.log_format)?;
     let runtime = tokio::runtime::Builder::new_multi_thread()
         .enable_all()
         .build()?;

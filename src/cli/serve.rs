@@ -10,7 +10,7 @@ use crate::store::Database;
 /// Serves until interrupted or terminated; requests under way end first.
 pub(super) async fn serve(settings: &Settings) -> anyhow::Result<()> {
     let database = Database::open(&settings.database("realterms serve", false)?).await?;
-    let application = Application::build(settings, database).await?;
+    let application = Application::build(settings.serving(), database).await?;
     say(format!("listening on http://{}", application.address()));
     let handle = application.handle();
     let stopper = tokio::spawn(async move {

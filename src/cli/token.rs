@@ -93,10 +93,5 @@ impl TokenCommand {
 }
 
 fn told(fault: Fault) -> anyhow::Error {
-    match fault {
-        Fault::NotFound { what } => anyhow::anyhow!("there is no {what}"),
-        Fault::Conflict { detail, .. } => anyhow::anyhow!(detail),
-        Fault::Store(error) => anyhow::Error::new(error).context("the database failed"),
-        other => anyhow::anyhow!("{other:?}"),
-    }
+    anyhow::anyhow!("{fault}")
 }

@@ -12,12 +12,13 @@ pub(super) struct Client {
 }
 
 impl Client {
-    /// A client of the service at an address such as `http://127.0.0.1:8640`.
-    pub(super) fn new(base: &str) -> Self {
-        Self {
-            http: reqwest::Client::new(),
+    /// A client of the service at an address such as `http://127.0.0.1:8640`. No proxy of the
+    /// environment comes between: the service is on this machine.
+    pub(super) fn new(base: &str) -> anyhow::Result<Self> {
+        Ok(Self {
+            http: reqwest::Client::builder().no_proxy().build()?,
             base: base.to_owned(),
-        }
+        })
     }
 
     /// Sends a JSON document and reads JSON.

@@ -29,7 +29,7 @@ pub async fn run(
     let mut settings = settings.clone();
     settings.listen = SocketAddr::from((Ipv4Addr::LOCALHOST, 0));
     let database = Database::open(&database_options(&settings)?).await?;
-    let application = Application::build(&settings, database).await?;
+    let application = Application::build(settings.serving(), database).await?;
     let base = format!("http://{}", application.address());
     let handle = application.handle();
     let server = tokio::spawn(application.run_until_stopped());

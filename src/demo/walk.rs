@@ -30,7 +30,7 @@ pub struct Walked {
 /// # Errors
 /// A request that fails, an answer of another shape than expected, or `out` that cannot be written.
 pub async fn walk(base: &str, out: &mut dyn Write) -> anyhow::Result<Walked> {
-    let client = Client::new(base);
+    let client = Client::new(base)?;
     let economy = economy::economy(SEED);
     writeln!(
         out,

@@ -10,7 +10,7 @@ use crate::linalg::Matrix;
 use crate::linalg::decompose::inverse;
 
 /// How the covariance of dynamic least squares is estimated.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+#[derive(Clone, Copy, Debug, PartialEq)]
 pub enum DolsCovariance {
     /// `ω² (Z'Z)⁻¹`, ω² the long-run variance of the residuals (Bartlett, divisor n; Stock & Watson 1993).
     /// Lags by rule of thumb if not given.

@@ -1,14 +1,17 @@
 //! Covariance of coefficients, within one equation and across equations.
 
-use super::ols::as_f64;
+use super::kernel::{Kernel, long_run};
+use super::ols::{as_f64, dot};
 use super::{EstimateError, Ols};
 use crate::linalg::Matrix;
 
 /// How the covariance of coefficients is estimated.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+#[derive(Clone, Copy, Debug, PartialEq)]
 pub enum CovarianceKind {
     /// Independent errors of one variance (and one contemporaneous covariance across equations).
     Classical,
+    /// Robust to heteroskedasticity.
+    Robust(Hc),
     /// Newey & West (1987): robust to heteroskedasticity and to autocorrelation up to `lags`, with
     /// Bartlett weights `1 − j/(lags + 1)`; no prewhitening.
     NeweyWest {
@@ -17,13 +20,28 @@ pub enum CovarianceKind {
         /// Whether to multiply by `n/(n − k)`, as the classical variance does.
         small_sample: bool,
     },
+    /// The same with weights `k(j / bandwidth)` of any kernel.
+    Kernel {
+        /// The kernel.
+        kernel: Kernel,
+        /// Bandwidth; Bartlett weights with L lags are those at L + 1.
+        bandwidth: f64,
+        /// Whether to multiply by `n/(n − k)`.
+        small_sample: bool,
+    },
 }
 
-/// Rule of thumb `⌊4 (n/100)^(2/9)⌋` for the number of lags (Newey & West 1994).
-#[must_use]
-pub fn rule_of_thumb_lags(n: usize) -> usize {
-    let bound = 4.0 * (as_f64(n) / 100.0).powf(2.0 / 9.0);
-    (0..n).take_while(|lags| as_f64(lags + 1) <= bound).count()
+/// Weight of squared residuals in a covariance robust to heteroskedasticity (`MacKinnon` & White 1985).
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Hc {
+    /// `e²` (White 1980).
+    Hc0,
+    /// `e² n/(n − k)`.
+    Hc1,
+    /// `e²/(1 − h)`, h the leverage.
+    Hc2,
+    /// `e²/(1 − h)²`.
+    Hc3,
 }
 
 /// Joint covariance of the stacked coefficients of equations estimated one by one on one sample.
@@ -31,11 +49,13 @@ pub fn rule_of_thumb_lags(n: usize) -> usize {
 /// The block of equations i and j is `A_i⁻¹ Ω_ij A_j⁻¹` with `A_i = X_i'X_i`:
 /// classical `Ω_ij = σ_ij X_i'X_j`, `σ_ij = e_i'e_j / √((n − k_i)(n − k_j))`;
 /// Newey–West `Ω_ij = Γ_0 + Σ_j w_j (Γ_j + Γ_j')` of the stacked scores `x_t e_t`, with the factor
-/// `n / √((n − k_i)(n − k_j))` on request. The result is symmetric and positive semi-definite; its
+/// `n / √((n − k_i)(n − k_j))` on request; robust `Ω_ij = Γ_0` of scores weighted as [`Hc`] says, each
+/// equation by its own leverage. The result is symmetric and positive semi-definite; its
 /// diagonal blocks are the equations' own covariances.
 ///
 /// # Errors
-/// [`EstimateError::SampleDiffers`] and [`EstimateError::TooManyLags`].
+/// [`EstimateError::SampleDiffers`], [`EstimateError::TooManyLags`], and [`EstimateError::Setting`] for a
+/// bandwidth that is none.
 pub fn covariance(equations: &[&Ols], kind: CovarianceKind) -> Result<Matrix, EstimateError> {
     let n = equations.first().map_or(0, |e| e.n);
     if let Some(other) = equations.iter().find(|e| e.n != n) {
@@ -56,29 +76,43 @@ pub fn covariance(equations: &[&Ols], kind: CovarianceKind) -> Result<Matrix, Es
             let sigma = dot(&first.residuals, &second.residuals) / mean_df(first, second);
             sigma * dot(&first.regressors[a].values, &second.regressors[b].values)
         }),
+        CovarianceKind::Robust(hc) => {
+            let scores = scores(equations, &places, |fit| weighted_residuals(fit, hc));
+            let factor = |a, b| small_sample_factor(hc == Hc::Hc1, a, b);
+            Matrix::from_fn(k, k, |r, c| {
+                factor(equations[places[r].0], equations[places[c].0]) * dot(&scores[r], &scores[c])
+            })
+        }
+        CovarianceKind::NeweyWest { lags, .. } if lags >= n => {
+            return Err(EstimateError::TooManyLags {
+                lags,
+                observations: n,
+            });
+        }
         CovarianceKind::NeweyWest { lags, small_sample } => {
-            if lags >= n {
-                return Err(EstimateError::TooManyLags {
-                    lags,
-                    observations: n,
-                });
-            }
-            let scores: Vec<Vec<f64>> = places
-                .iter()
-                .map(|&(e, j)| {
-                    let x = &equations[e].regressors[j].values;
-                    let e = &equations[e].residuals;
-                    x.iter().zip(e).map(|(x, e)| x * e).collect()
-                })
-                .collect();
+            let scores = scores(equations, &places, |fit| fit.residuals.clone());
             Matrix::from_fn(k, k, |r, c| {
                 let (first, second) = (equations[places[r].0], equations[places[c].0]);
-                let factor = if small_sample {
-                    as_f64(n) / mean_df(first, second)
-                } else {
-                    1.0
-                };
-                factor * long_run(&scores[r], &scores[c], lags)
+                let sum = long_run(&scores[r], &scores[c], Kernel::Bartlett, as_f64(lags + 1));
+                small_sample_factor(small_sample, first, second) * sum
+            })
+        }
+        CovarianceKind::Kernel { bandwidth, .. } if !(0.0..1e6).contains(&bandwidth) => {
+            return Err(EstimateError::Setting {
+                setting: "bandwidth",
+                allowed: "a number of at least 0 and below a million",
+            });
+        }
+        CovarianceKind::Kernel {
+            kernel,
+            bandwidth,
+            small_sample,
+        } => {
+            let scores = scores(equations, &places, |fit| fit.residuals.clone());
+            Matrix::from_fn(k, k, |r, c| {
+                let (first, second) = (equations[places[r].0], equations[places[c].0]);
+                let sum = long_run(&scores[r], &scores[c], kernel, bandwidth);
+                small_sample_factor(small_sample, first, second) * sum
             })
         }
     };
@@ -106,19 +140,39 @@ fn mean_df(first: &Ols, second: &Ols) -> f64 {
     }
 }
 
-/// `Σ_t u_t v_t + Σ_j w_j Σ_t (u_t v_{t−j} + u_{t−j} v_t)` with Bartlett weights; sums, not means.
-fn long_run(u: &[f64], v: &[f64], lags: usize) -> f64 {
-    let mut sum = dot(u, v);
-    for j in 1..=lags {
-        let weight = 1.0 - as_f64(j) / as_f64(lags + 1);
-        sum += weight * (dot(&u[j..], v) + dot(u, &v[j..]));
+/// `n / mean_df` on request, else 1.
+fn small_sample_factor(wanted: bool, first: &Ols, second: &Ols) -> f64 {
+    if wanted {
+        as_f64(first.n) / mean_df(first, second)
+    } else {
+        1.0
     }
-    sum
 }
 
-/// Sum of products over the shorter length, in order.
-fn dot(a: &[f64], b: &[f64]) -> f64 {
-    a.iter().zip(b).map(|(a, b)| a * b).sum()
+/// The products `x_t u_t` of each stacked coefficient, u made from each equation's residuals.
+fn scores(
+    equations: &[&Ols],
+    places: &[(usize, usize)],
+    residuals: impl Fn(&Ols) -> Vec<f64>,
+) -> Vec<Vec<f64>> {
+    let residuals: Vec<Vec<f64>> = equations.iter().map(|fit| residuals(fit)).collect();
+    let score = |&(e, j): &(usize, usize)| {
+        let x = &equations[e].regressors[j].values;
+        x.iter().zip(&residuals[e]).map(|(x, e)| x * e).collect()
+    };
+    places.iter().map(score).collect()
+}
+
+fn weighted_residuals(fit: &Ols, hc: Hc) -> Vec<f64> {
+    let by = |weight: fn(f64) -> f64| {
+        let pairs = fit.residuals.iter().zip(fit.leverages());
+        pairs.map(|(e, h)| e * weight(1.0 - h)).collect()
+    };
+    match hc {
+        Hc::Hc0 | Hc::Hc1 => fit.residuals.clone(),
+        Hc::Hc2 => by(|rest| rest.sqrt().recip()),
+        Hc::Hc3 => by(f64::recip),
+    }
 }
 
 #[cfg(test)]
@@ -191,13 +245,11 @@ mod tests {
             small_sample: false,
         };
         assert!(covariance(&[&first], kind).is_err());
-    }
-
-    /// ⌊4 (n/100)^(2/9)⌋ by hand: 2.83 at 21, 3.53 at 57, 4 at 100, 4.67 at 200, 6.67 at 1000.
-    #[test]
-    fn rule_of_thumb() {
-        for (n, lags) in [(21, 2), (57, 3), (100, 4), (200, 4), (1000, 6), (10, 2)] {
-            assert_eq!(rule_of_thumb_lags(n), lags, "{n}");
-        }
+        let kind = CovarianceKind::Kernel {
+            kernel: Kernel::Parzen,
+            bandwidth: f64::NAN,
+            small_sample: false,
+        };
+        assert!(covariance(&[&first], kind).is_err());
     }
 }

@@ -3,7 +3,7 @@
 use std::f64::consts::PI;
 
 use super::EstimateError;
-use crate::linalg::{LeastSquaresError, Matrix, least_squares};
+use crate::linalg::{LeastSquaresError, Matrix, condition_number, least_squares, leverages};
 
 /// A named column of regressors.
 #[derive(Clone, Debug, PartialEq)]
@@ -84,7 +84,16 @@ impl Ols {
         if n <= k {
             return Err(too_few);
         }
-        let columns: Vec<Vec<f64>> = regressors.iter().map(|r| r.values.clone()).collect();
+        let missing = |name: &str, values: &[f64]| {
+            let observation = values.iter().position(|v| !v.is_finite())? + 1;
+            let name = name.to_owned();
+            Some(EstimateError::Missing { name, observation })
+        };
+        let gap = regressors.iter().find_map(|r| missing(&r.name, &r.values));
+        if let Some(error) = gap.or_else(|| missing("the dependent variable", y)) {
+            return Err(error);
+        }
+        let columns = columns(&regressors);
         let fit = least_squares(&columns, y).map_err(|error| match error {
             LeastSquaresError::Shape { .. } => too_few,
             LeastSquaresError::NotFinite => EstimateError::NotFinite,
@@ -98,11 +107,7 @@ impl Ols {
 
         let (count, coefficients, df) = (as_f64(n), as_f64(k), n - k);
         let ssr: f64 = fit.residuals.iter().map(|e| e * e).sum();
-        let has_constant = regressors.iter().any(|r| {
-            r.values
-                .iter()
-                .all(|v| v.to_bits() == r.values[0].to_bits())
-        });
+        let has_constant = regressors.iter().any(|r| is_constant(&r.values));
         let centre = if has_constant {
             y.iter().sum::<f64>() / count
         } else {
@@ -133,6 +138,32 @@ impl Ols {
         })
     }
 
+    /// Leverage of each observation: `h_t = x_t' (X'X)⁻¹ x_t`, summing to k.
+    #[must_use]
+    pub fn leverages(&self) -> Vec<f64> {
+        leverages(&columns(&self.regressors))
+    }
+
+    /// Condition number of X with columns of unit length (Belsley, Kuh & Welsch 1980, section 3.2, who
+    /// see harm above 30).
+    #[must_use]
+    pub fn condition_number(&self) -> f64 {
+        condition_number(&columns(&self.regressors))
+    }
+
+    /// The names of the regressors, in order.
+    #[must_use]
+    pub fn names(&self) -> Vec<String> {
+        self.regressors.iter().map(|r| r.name.clone()).collect()
+    }
+
+    /// The dependent variable.
+    #[must_use]
+    pub fn dependent(&self) -> Vec<f64> {
+        let sum = |(f, e): (&f64, &f64)| f + e;
+        self.fitted.iter().zip(&self.residuals).map(sum).collect()
+    }
+
     /// Position of a regressor by name.
     #[must_use]
     pub fn position(&self, name: &str) -> Option<usize> {
@@ -144,6 +175,21 @@ impl Ols {
     pub fn coefficient(&self, name: &str) -> Option<f64> {
         self.position(name).map(|i| self.coefficients[i])
     }
+}
+
+/// Whether a column holds one value throughout, to the bit.
+pub(super) fn is_constant(values: &[f64]) -> bool {
+    values.iter().all(|v| v.to_bits() == values[0].to_bits())
+}
+
+/// The bare columns of named regressors.
+pub(super) fn columns(regressors: &[Regressor]) -> Vec<Vec<f64>> {
+    regressors.iter().map(|r| r.values.clone()).collect()
+}
+
+/// Sum of products over the shorter length, in order.
+pub(super) fn dot(a: &[f64], b: &[f64]) -> f64 {
+    a.iter().zip(b).map(|(a, b)| a * b).sum()
 }
 
 /// Counts here are far below 2⁵³, so the conversion is exact.

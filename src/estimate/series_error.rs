@@ -3,7 +3,7 @@
 use super::{EstimateError, Ols, Regressor};
 
 /// Why a method on time series has no answer.
-#[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
+#[derive(Clone, Debug, PartialEq, thiserror::Error)]
 pub enum SeriesError {
     /// A missing or infinite value.
     #[error(
@@ -58,6 +58,14 @@ pub enum SeriesError {
         series: String,
         /// The terms that take part in the dependence.
         terms: Vec<String>,
+    },
+    /// Another fault of the equation.
+    #[error("in the equation of {series}: {fault}")]
+    Equation {
+        /// Name of the explained series.
+        series: String,
+        /// The fault.
+        fault: EstimateError,
     },
     /// An option that the method does not have.
     #[error("{method}: {fault}")]
@@ -118,6 +126,19 @@ pub(super) fn regress(
             observations,
             needed,
         },
+        EstimateError::Missing { name, observation } => SeriesError::Missing {
+            series: name,
+            observation,
+        },
+        EstimateError::Constant { name } => SeriesError::Constant { series: name },
+        fault @ (EstimateError::TooShort { .. }
+        | EstimateError::Explosive { .. }
+        | EstimateError::Underidentified { .. }
+        | EstimateError::UnknownRegressor { .. }
+        | EstimateError::RedundantRestriction { .. }
+        | EstimateError::Setting { .. }
+        | EstimateError::SingularCovariance { .. }
+        | EstimateError::NoConvergence { .. }) => SeriesError::Equation { series, fault },
     })
 }
 

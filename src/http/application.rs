@@ -17,12 +17,10 @@ use super::call::Call;
 use super::problem::Problem;
 use super::route::{Method, Route};
 use super::state::Shared;
-use crate::config::Settings;
+use crate::service::Database;
 use crate::service::receiving::Limits;
 use crate::service::tokens::{self, Admission, Gate, Principal, Role};
 use crate::service::uploads;
-use crate::store::Database;
-use crate::{clock, intake};
 
 const REQUEST_ID: HeaderName = HeaderName::from_static("x-request-id");
 
@@ -31,6 +29,19 @@ const GRACE_SECONDS: u64 = 20;
 
 /// How often old refused uploads are looked for.
 const SWEEP: Duration = Duration::from_secs(3600);
+
+/// How to serve.
+#[derive(Clone, Copy, Debug)]
+pub struct Options {
+    /// Address to listen on.
+    pub listen: SocketAddr,
+    /// Threads that answer requests.
+    pub workers: usize,
+    /// Bounds on what one upload may cost.
+    pub limits: Limits,
+    /// Days that refused uploads are kept.
+    pub refused_days: u32,
+}
 
 /// A bound server, not yet running.
 pub struct Application {
@@ -45,25 +56,25 @@ impl Application {
     ///
     /// # Errors
     /// The address is taken; or it is not a loopback address and no token exists.
-    pub async fn build(settings: &Settings, database: Database) -> anyhow::Result<Self> {
+    pub async fn build(options: Options, database: Database) -> anyhow::Result<Self> {
         let open = {
             let mut connection = database.connection().await?;
             !tokens::any(&mut connection)
                 .await
                 .map_err(|fault| anyhow::anyhow!("the tokens cannot be read: {fault:?}"))?
         };
-        let loopback = settings.listen.ip().is_loopback();
+        let loopback = options.listen.ip().is_loopback();
         if open && !loopback {
             anyhow::bail!(
                 "{} can be reached from other machines and no token exists; make one first: realterms \
                  token create --name NAME --role administer",
-                settings.listen
+                options.listen
             );
         }
-        let listener = TcpListener::bind(settings.listen).with_context(|| {
+        let listener = TcpListener::bind(options.listen).with_context(|| {
             format!(
                 "cannot listen on {} (setting REALTERMS_LISTEN)",
-                settings.listen
+                options.listen
             )
         })?;
         let address = listener.local_addr()?;
@@ -72,8 +83,8 @@ impl Application {
         }
         let shared = Arc::new(Shared {
             database,
-            gate: Gate::default(),
-            limits: limits(settings),
+            gate: Gate::new(loopback),
+            limits: options.limits,
         });
         let routes: &'static [Route] = Box::leak(super::routes().into_boxed_slice());
         let for_workers = Arc::clone(&shared);
@@ -84,7 +95,7 @@ impl Application {
                 .configure(|config| mount(config, routes))
                 .default_service(web::route().to(no_such_path))
         })
-        .workers(settings.workers.map_or_else(default_workers, usize::from))
+        .workers(options.workers)
         .shutdown_timeout(GRACE_SECONDS)
         .disable_signals()
         .listen(listener)?
@@ -93,7 +104,7 @@ impl Application {
             server,
             shared,
             address,
-            refused_days: settings.refused_days,
+            refused_days: options.refused_days,
         })
     }
 
@@ -115,19 +126,16 @@ impl Application {
     /// The server failed.
     pub async fn run_until_stopped(self) -> anyhow::Result<()> {
         let shared = Arc::clone(&self.shared);
-        let days = chrono::Days::new(u64::from(self.refused_days));
+        let days = self.refused_days;
         let sweeper = tokio::spawn(async move {
             let mut ticks = tokio::time::interval(SWEEP);
             loop {
                 ticks.tick().await;
-                let Some(before) = clock::now().checked_sub_days(days) else {
-                    continue;
-                };
-                match uploads::sweep_refused(&shared.database, before).await {
+                match uploads::erase_old_refused(&shared.database, days).await {
                     Ok(0) => {}
                     Ok(count) => tracing::info!(uploads = count, "erased old refused uploads"),
                     Err(fault) => {
-                        tracing::warn!(error = ?fault, "old refused uploads stay for now")
+                        tracing::warn!(error = %fault, "old refused uploads stay for now")
                     }
                 }
             }
@@ -135,24 +143,12 @@ impl Application {
         let outcome = self.server.await;
         sweeper.abort();
         let _ = sweeper.await;
+        // Workers that are still ending may hold the database a moment longer.
+        self.shared.database.disconnect().await;
         if let Ok(shared) = Arc::try_unwrap(self.shared) {
             shared.database.close().await;
         }
         Ok(outcome?)
-    }
-}
-
-fn default_workers() -> usize {
-    std::thread::available_parallelism().map_or(1, usize::from)
-}
-
-fn limits(settings: &Settings) -> Limits {
-    Limits {
-        max_bytes: settings.max_upload_bytes.0,
-        memory_budget: usize::try_from(settings.upload_memory.0).unwrap_or(usize::MAX),
-        min_rate: settings.min_body_rate.0,
-        patience: Duration::from_secs(settings.body_patience),
-        intake: intake::Limits::default(),
     }
 }
 
@@ -250,12 +246,10 @@ async fn admit(
         .headers()
         .get("Authorization")
         .and_then(|v| v.to_str().ok())
-        .and_then(|v| {
-            v.strip_prefix("Bearer ")
-                .or_else(|| v.strip_prefix("bearer "))
-        })
-        .map(str::trim);
-    let unauthorised = |code: &str, detail: &str| {
+        .and_then(|v| v.split_once(' '))
+        .filter(|(scheme, _)| scheme.eq_ignore_ascii_case("Bearer"))
+        .map(|(_, token)| token.trim());
+    let unauthorised = |code: &'static str, detail: &str| {
         Err(Problem::new(StatusCode::UNAUTHORIZED, code, detail)
             .with_header("WWW-Authenticate", "Bearer realm=\"realterms\""))
     };
@@ -297,7 +291,7 @@ fn finish(
             response
         }
         Err(problem) => {
-            let (status, code) = (problem.status, problem.code.as_str());
+            let (status, code) = (problem.status.as_u16(), problem.code);
             match problem.internal_reason() {
                 Some(reason) => tracing::error!(
                     request.id = %request_id, method, path, status, code, duration_ms, reason, "failed"

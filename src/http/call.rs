@@ -10,9 +10,10 @@ use actix_web::{HttpRequest, web};
 use futures_util::StreamExt;
 
 use super::problem::Problem;
-use super::route::{Parameter, Route};
+use super::route::{Form, Parameter, Route};
 use super::state::Shared;
 use crate::finding::Finding;
+use crate::service::Fault;
 use crate::service::tokens::Principal;
 use crate::time::Date;
 
@@ -38,19 +39,27 @@ impl Call {
         principal: Principal,
     ) -> Result<Self, Problem> {
         let known = route.parameters();
+        #[expect(
+            clippy::disallowed_types,
+            reason = "this is the one place that reads queries"
+        )]
         let pairs = web::Query::<Vec<(String, String)>>::from_query(request.query_string())
             .map_err(|e| {
                 Problem::bad_request(format!("the query string cannot be read: {e}"), vec![])
             })?;
         let mut parameters = BTreeMap::new();
         let mut faults = Vec::new();
+        faults.extend(
+            request
+                .match_info()
+                .iter()
+                .find_map(|(name, v)| nul(name, v)),
+        );
         for (name, value) in pairs.into_inner() {
             match known.iter().find(|p| p.name == name) {
                 None => faults.push(unknown_parameter(&name, &known)),
                 Some(parameter) => {
-                    if let Some(fault) = parameter.fault(&value) {
-                        faults.push(fault);
-                    }
+                    faults.extend(nul(&name, &value).or_else(|| parameter.fault(&value)));
                     if parameters.insert(name.clone(), value).is_some() {
                         faults.push(
                             Finding::error(
@@ -72,7 +81,11 @@ impl Call {
                         format!("the parameter '{}' is required", parameter.name),
                     )
                     .at_parameter(parameter.name)
-                    .expected(parameter.description),
+                    .expected(if let Form::OneOf(values) = &parameter.form {
+                        values.join(", ")
+                    } else {
+                        parameter.description.to_owned()
+                    }),
                 );
             }
         }
@@ -156,28 +169,68 @@ impl Call {
         self.headers().get(name).and_then(|v| v.to_str().ok())
     }
 
-    /// Reads a document body whole.
+    /// Bytes of the body, where the client says.
+    pub(super) fn declared_length(&self) -> Option<u64> {
+        self.header("Content-Length").and_then(|n| n.parse().ok())
+    }
+
+    /// Reads a document body whole. It has to come within the patience for slow bodies.
     pub(super) async fn document(&mut self) -> Result<String, Problem> {
+        let limits = self.shared.limits;
+        let bytes = tokio::time::timeout(limits.patience, self.document_bytes())
+            .await
+            .map_err(|_| Fault::TooSlow {
+                detail: format!(
+                    "the document did not come within {} seconds; nothing was done",
+                    limits.patience.as_secs()
+                ),
+            })??;
+        if bytes.trim_ascii().is_empty() {
+            let detail = "the body is empty; send the document, a JSON object";
+            return Err(Problem::bad_request(detail, vec![]));
+        }
+        String::from_utf8(bytes)
+            .map_err(|_| Problem::bad_request("the body is not UTF-8 text", vec![]))
+    }
+
+    async fn document_bytes(&mut self) -> Result<Vec<u8>, Problem> {
+        let too_large = || {
+            Problem::new(
+                StatusCode::PAYLOAD_TOO_LARGE,
+                "too_large",
+                format!("a document may have at most {DOCUMENT_BYTES} bytes"),
+            )
+        };
+        if self
+            .declared_length()
+            .is_some_and(|n| n > DOCUMENT_BYTES as u64)
+        {
+            return Err(too_large());
+        }
         let mut bytes = Vec::new();
         let Some(mut payload) = self.payload.take() else {
-            return Ok(String::new());
+            return Ok(bytes);
         };
         while let Some(chunk) = payload.next().await {
             let chunk = chunk.map_err(|e| {
                 Problem::bad_request(format!("the body could not be read: {e}"), vec![])
             })?;
             if bytes.len() + chunk.len() > DOCUMENT_BYTES {
-                return Err(Problem::new(
-                    StatusCode::PAYLOAD_TOO_LARGE,
-                    "too_large",
-                    format!("a document may have at most {DOCUMENT_BYTES} bytes"),
-                ));
+                return Err(too_large());
             }
             bytes.extend_from_slice(&chunk);
         }
-        String::from_utf8(bytes)
-            .map_err(|_| Problem::bad_request("the body is not UTF-8 text", vec![]))
+        Ok(bytes)
     }
+}
+
+/// A NUL character, which the database cannot keep in a text.
+fn nul(name: &str, value: &str) -> Option<Finding> {
+    value.contains('\0').then(|| {
+        Finding::error("nul_character", format!("'{name}' holds a NUL character"))
+            .at_parameter(name)
+            .expected("text without %00")
+    })
 }
 
 fn unknown_parameter(name: &str, known: &[Parameter]) -> Finding {

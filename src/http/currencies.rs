@@ -4,7 +4,7 @@ use actix_web::HttpResponse;
 use actix_web::http::StatusCode;
 
 use super::respond::location;
-use super::route::{Method, Route, empty, json, schema};
+use super::route::{Method, Route, empty, json, list, schema};
 use crate::service::CurrencyView;
 use crate::service::currencies::{self, Declaration};
 use crate::service::tokens::Role;
@@ -20,7 +20,7 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: Vec::new,
             headers: &[],
             body: &[],
-            successes: || vec![json::<Vec<CurrencyView>>(200, "the currencies")],
+            successes: || vec![list::<CurrencyView>(200, "the currencies")],
             problems: &[],
             handler: |call| {
                 Box::pin(async move {
@@ -64,7 +64,7 @@ pub(super) fn routes() -> Vec<Route> {
                     json::<CurrencyView>(201, "declared").header("Location"),
                 ]
             },
-            problems: &[409, 413, 422],
+            problems: &[409, 422],
             handler: |call| {
                 Box::pin(async move {
                     let mut call = call;

@@ -8,9 +8,11 @@ use super::call::Call;
 use super::problem::Problem;
 use super::respond::{Media, location};
 use super::route::{
-    Answer, Form, Method, Parameter, Route, Success, empty, json, object, optional, paging, text,
+    Answer, Form, Method, Parameter, Route, Success, empty, json, list, object, optional, paging,
+    text,
 };
 use super::series::{moment, moment_parameters};
+use crate::finding::Finding;
 use crate::preparation::Plan;
 use crate::service::documents::{self, DocumentKind, Precondition};
 use crate::service::preparations::{self, PreparationRun};
@@ -74,7 +76,7 @@ macro_rules! document_routes {
                 parameters: paging,
                 headers: &[],
                 body: &[],
-                successes: || vec![json::<Vec<DocumentView>>(200, "a page")],
+                successes: || vec![list::<DocumentView>(200, "a page")],
                 problems: &[],
                 handler: |call| {
                     Box::pin(async move {
@@ -94,7 +96,7 @@ macro_rules! document_routes {
                 headers: PUT_HEADERS,
                 body: &[("application/json", object)],
                 successes: put_successes,
-                problems: &[412, 413, 422],
+                problems: &[412, 422],
                 handler: |call| {
                     Box::pin(async move {
                         let mut call = call;
@@ -133,7 +135,7 @@ macro_rules! document_routes {
                         let (name, version) = (call.segment("name"), call.integer("version"));
                         let view =
                             documents::get(&call.shared.database, $kind, name, version).await?;
-                        let tag = tag(view.version);
+                        let tag = tag(&call, view.version);
                         if call.has(&tag) {
                             return Ok(call.not_modified(&tag));
                         }
@@ -172,7 +174,7 @@ macro_rules! document_routes {
                 parameters: paging,
                 headers: &[],
                 body: &[],
-                successes: || vec![json::<Vec<RunLine>>(200, "a page")],
+                successes: || vec![list::<RunLine>(200, "a page")],
                 problems: &[404],
                 handler: |call| {
                     Box::pin(async move {
@@ -337,8 +339,8 @@ fn study_run(call: &Call, status: StatusCode, media: Media, run: &StudyRun) -> A
     }
 }
 
-fn tag(version: i32) -> String {
-    format!("\"v{version}\"")
+fn tag(call: &Call, version: i32) -> String {
+    call.tag(&format!("v{version}"), Media::Json)
 }
 
 fn document(call: &Call, view: &DocumentView, created: bool) -> Answer {
@@ -348,7 +350,7 @@ fn document(call: &Call, view: &DocumentView, created: bool) -> Answer {
         StatusCode::OK
     };
     let mut response = call.json(status, view)?;
-    if let Ok(value) = header::HeaderValue::from_str(&tag(view.version)) {
+    if let Ok(value) = header::HeaderValue::from_str(&tag(call, view.version)) {
         response.headers_mut().insert(header::ETAG, value);
     }
     if created {
@@ -362,25 +364,27 @@ fn precondition(call: &Call) -> Result<Precondition, Problem> {
         None => false,
         Some("*") => true,
         Some(other) => {
-            return Err(Problem::bad_request(
-                format!("If-None-Match must be * when a document is put, not {other}"),
-                vec![],
-            ));
+            let message = "If-None-Match must be * where a document is written";
+            let finding = Finding::error("bad_header", message)
+                .at_parameter("If-None-Match")
+                .found(other)
+                .expected("*");
+            return Err(Problem::bad_request(message, vec![finding]));
         }
     };
-    let matches = call
-        .header("If-Match")
-        .filter(|tags| *tags != "*")
-        .map(|tags| {
-            tags.split(',')
-                .filter_map(|t| {
-                    t.trim()
-                        .strip_prefix("\"v")?
-                        .strip_suffix('"')?
-                        .parse()
-                        .ok()
-                })
-                .collect()
-        });
-    Ok(Precondition { matches, absent })
+    let tags = call.header("If-Match");
+    let present = tags.is_some_and(|tags| tags.trim() == "*");
+    let matches = tags.filter(|_| !present).map(|tags| {
+        // A version is the same in whatever coding the client got it.
+        let version = |tag: &str| {
+            let tag = tag.trim().strip_prefix("\"v")?.strip_suffix('"')?;
+            tag.split('-').next()?.parse().ok()
+        };
+        tags.split(',').filter_map(version).collect()
+    });
+    Ok(Precondition {
+        matches,
+        present,
+        absent,
+    })
 }

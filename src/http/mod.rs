@@ -1,6 +1,6 @@
 //! Routes by resource, problem details, authorisation, the `OpenAPI` document.
 //!
-//! Every operation is a row of one table ([`route::Route`]); the table drives the router, the checks of
+//! Every operation is a row of one table (`route::Route`); the table drives the router, the checks of
 //! parameters and roles, the answers to wrong methods and the `OpenAPI` document. Start at
 //! [`Application`].
 
@@ -17,8 +17,7 @@ mod series;
 mod state;
 mod uploads;
 
-pub use application::Application;
-pub use problem::Problem;
+pub use application::{Application, Options};
 
 /// All operations.
 fn routes() -> Vec<route::Route> {

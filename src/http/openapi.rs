@@ -28,7 +28,8 @@ fn value(routes: &[Route]) -> serde_json::Value {
             "summary": "From raw trade, price and income files to the growth rate that the balance \
                 of payments allows",
             "description": "Errors are problem details (RFC 9457). HEAD is answered wherever GET is. \
-                A wrong method is answered with 405 and Allow.",
+                A wrong method is answered with 405 and Allow. A request's X-Request-Id of at most \
+                64 letters, digits, - and _ is kept.",
             "license": { "name": "MIT", "identifier": "MIT" },
         },
         "paths": paths,

@@ -8,44 +8,49 @@ use utoipa::ToSchema;
 use crate::finding::Finding;
 use crate::service::{Fault, UploadView};
 
-/// An error answer.
-#[derive(Clone, Debug, Serialize, ToSchema)]
-pub struct Problem {
+/// An error answer as it is sent.
+#[derive(Debug, Serialize, ToSchema)]
+#[schema(as = Problem)]
+pub(super) struct ProblemView<'a> {
     /// Stable URI reference of the kind of problem.
     #[serde(rename = "type")]
-    pub kind: String,
+    kind: String,
     /// Short name of the HTTP status.
-    pub title: String,
+    title: &'a str,
     /// HTTP status.
-    pub status: u16,
+    status: u16,
     /// What went wrong, for a person.
-    pub detail: String,
+    detail: &'a str,
     /// Stable code for programs.
-    pub code: String,
+    code: &'a str,
     /// Number of the request, as in the log and the header `X-Request-Id`.
-    pub request_id: String,
+    request_id: &'a str,
     /// Where exactly, what was found and expected, and what to do.
-    pub errors: Vec<Finding>,
+    errors: &'a [Finding],
     /// The refused upload, with its report.
     #[serde(skip_serializing_if = "Option::is_none")]
-    pub upload: Option<Box<UploadView>>,
-    #[serde(skip)]
+    upload: Option<&'a UploadView>,
+}
+
+/// An error answer before it is sent.
+#[derive(Clone, Debug)]
+pub(super) struct Problem {
+    pub(super) status: StatusCode,
+    pub(super) code: &'static str,
+    pub(super) detail: String,
+    errors: Vec<Finding>,
+    upload: Option<Box<UploadView>>,
     headers: Vec<(&'static str, String)>,
-    /// For the log alone.
-    #[serde(skip)]
-    internal: Option<String>,
+    internal: Option<Box<str>>,
 }
 
 impl Problem {
     /// A problem with this status, code and detail.
-    pub(super) fn new(status: StatusCode, code: &str, detail: impl Into<String>) -> Self {
+    pub(super) fn new(status: StatusCode, code: &'static str, detail: impl Into<String>) -> Self {
         Self {
-            kind: format!("/problems/{code}"),
-            title: status.canonical_reason().unwrap_or("Error").to_owned(),
-            status: status.as_u16(),
+            status,
+            code,
             detail: detail.into(),
-            code: code.to_owned(),
-            request_id: String::new(),
             errors: Vec::new(),
             upload: None,
             headers: Vec::new(),
@@ -61,7 +66,7 @@ impl Problem {
     /// A fault of the program; the reason is for the log alone.
     pub(super) fn internal(reason: String) -> Self {
         Self {
-            internal: Some(reason),
+            internal: Some(reason.into()),
             ..Self::new(
                 StatusCode::INTERNAL_SERVER_ERROR,
                 "internal",
@@ -85,15 +90,24 @@ impl Problem {
         self.internal.as_deref()
     }
 
-    /// The answer; `request_id` goes into the body.
-    pub(super) fn answer(mut self, request_id: &str) -> HttpResponse {
-        request_id.clone_into(&mut self.request_id);
-        let status = StatusCode::from_u16(self.status).unwrap_or(StatusCode::INTERNAL_SERVER_ERROR);
-        let mut response = HttpResponse::build(status);
+    /// The answer.
+    pub(super) fn answer(&self, request_id: &str) -> HttpResponse {
+        let mut response = HttpResponse::build(self.status);
         for (name, value) in &self.headers {
             response.insert_header((*name, value.as_str()));
         }
-        let body = serde_json::to_string(&self).unwrap_or_default();
+        let view = ProblemView {
+            kind: format!("/problems/{}", self.code),
+            title: self.status.canonical_reason().unwrap_or("Error"),
+            status: self.status.as_u16(),
+            detail: &self.detail,
+            code: self.code,
+            request_id,
+            errors: &self.errors,
+            upload: self.upload.as_deref(),
+        };
+        let mut body = serde_json::to_string(&view).unwrap_or_default();
+        body.push('\n');
         response.content_type("application/problem+json").body(body)
     }
 }
@@ -127,17 +141,25 @@ impl From<Fault> for Problem {
                 "precondition_failed",
                 detail,
             ),
-            Fault::TooLarge { detail } => {
-                Self::new(StatusCode::PAYLOAD_TOO_LARGE, "too_large", detail)
+            Fault::TooLarge { detail, errors } => {
+                Self::new(StatusCode::PAYLOAD_TOO_LARGE, "too_large", detail).with_errors(errors)
             }
-            Fault::TooSlow { detail } => Self::new(StatusCode::REQUEST_TIMEOUT, "too_slow", detail)
-                .with_header("Connection", "close"),
+            Fault::TooSlow { detail } => Self::new(StatusCode::REQUEST_TIMEOUT, "too_slow", detail),
             Fault::Store(error) => Self {
-                internal: Some(error.to_string()),
+                internal: Some(error.to_string().into()),
                 ..Self::new(
                     StatusCode::SERVICE_UNAVAILABLE,
                     "store_unavailable",
                     "the database did not answer as it should; nothing was changed; try again",
+                )
+            },
+            Fault::OutcomeUnknown(error) => Self {
+                internal: Some(error.to_string().into()),
+                ..Self::new(
+                    StatusCode::SERVICE_UNAVAILABLE,
+                    "outcome_unknown",
+                    "the database went away while it committed: all of this was done, or nothing; look \
+                     which, or send the same again, which is safe for uploads and documents",
                 )
             },
             Fault::Internal(reason) => Self::internal(reason),

@@ -64,32 +64,29 @@ impl Call {
                     Problem::bad_request(format!("there is no format '{name}' here"), vec![])
                 });
         }
-        let Some(accept) = self.header("Accept") else {
+        let accept = self.header("Accept").unwrap_or_default();
+        if accept.trim().is_empty() {
             return Ok(offered[0]);
+        }
+        let ranges = weighted(accept);
+        // The most specific range that covers a type weighs it; of equal weights, a type that is named
+        // wins over one that is only covered, then the first offered.
+        let weight = |media: Media| {
+            ranges
+                .iter()
+                .filter_map(|(range, weight)| Some((specificity(range, media.as_str())?, *weight)))
+                .max_by_key(|(specificity, _)| *specificity)
+                .map_or((0.0, 0), |(specificity, weight)| (weight, specificity))
         };
-        let mut best: Option<(f32, Media)> = None;
-        for range in accept.split(',') {
-            let mut parts = range.split(';').map(str::trim);
-            let name = parts.next().unwrap_or_default().to_ascii_lowercase();
-            let weight = parts
-                .find_map(|p| p.strip_prefix("q="))
-                .and_then(|q| q.parse::<f32>().ok())
-                .unwrap_or(1.0);
-            let matched = offered.iter().find(|m| {
-                name == "*/*"
-                    || name == m.as_str()
-                    || name
-                        .strip_suffix("/*")
-                        .is_some_and(|kind| m.as_str().split('/').next() == Some(kind))
-            });
-            if let Some(media) = matched
-                && weight > 0.0
-                && best.is_none_or(|(w, _)| weight > w)
-            {
-                best = Some((weight, *media));
+        let mut best = (0.0, 0);
+        let mut chosen = None;
+        for media in offered {
+            let weight = weight(*media);
+            if weight > best {
+                (best, chosen) = (weight, Some(*media));
             }
         }
-        best.map(|(_, media)| media).ok_or_else(|| {
+        chosen.filter(|_| best.0 > 0.0).ok_or_else(|| {
             let names: Vec<&str> = offered.iter().map(|m| m.as_str()).collect();
             Problem::new(
                 StatusCode::NOT_ACCEPTABLE,
@@ -104,10 +101,8 @@ impl Call {
 
     fn accepts_gzip(&self) -> bool {
         self.header("Accept-Encoding").is_some_and(|codings| {
-            codings.split(',').any(|coding| {
-                let mut parts = coding.split(';').map(str::trim);
-                parts.next() == Some("gzip") && parts.next() != Some("q=0")
-            })
+            let mut codings = weighted(codings).into_iter();
+            codings.any(|(coding, weight)| coding == "gzip" && weight > 0.0)
         })
     }
 
@@ -190,9 +185,34 @@ impl Call {
     }
 }
 
-/// Serializes an answer.
+/// Serializes an answer, with a line end for terminals.
 pub(super) fn to_json<T: Serialize>(value: &T) -> Result<Vec<u8>, Problem> {
-    serde_json::to_vec(value).map_err(|e| Problem::internal(e.to_string()))
+    let mut body = serde_json::to_vec(value).map_err(|e| Problem::internal(e.to_string()))?;
+    body.push(b'\n');
+    Ok(body)
+}
+
+/// The elements of a header such as `Accept`, in lower case, with their weights `q`.
+fn weighted(header: &str) -> Vec<(String, f32)> {
+    let header = header.to_ascii_lowercase();
+    let element = |text: &str| {
+        let mut parts = text.split(';').map(str::trim);
+        let name = parts.next().unwrap_or_default().to_owned();
+        let weight = parts.find_map(|p| p.strip_prefix("q="));
+        (name, weight.and_then(|q| q.parse().ok()).unwrap_or(1.0))
+    };
+    header.split(',').map(element).collect()
+}
+
+/// How closely a media range names a media type that it covers: 2 by name, 1 by kind, 0 as anything.
+fn specificity(range: &str, media: &str) -> Option<u8> {
+    if range == media {
+        return Some(2);
+    }
+    match range.strip_suffix("/*")? {
+        "*" => Some(0),
+        kind => media.starts_with(&format!("{kind}/")).then_some(1),
+    }
 }
 
 fn percent_encoded(text: &str) -> String {

@@ -10,7 +10,7 @@ use utoipa::ToSchema;
 use utoipa::openapi::{RefOr, Schema};
 
 use super::call::Call;
-use super::problem::Problem;
+use super::problem::{Problem, ProblemView};
 use crate::finding::Finding;
 use crate::service::tokens::Role;
 use crate::time::Date;
@@ -31,8 +31,17 @@ pub(super) type SchemaOf = fn(&mut Schemas) -> serde_json::Value;
 pub(super) fn schema<T: ToSchema>(schemas: &mut Schemas) -> serde_json::Value {
     let mut list = vec![(T::name().into_owned(), T::schema())];
     T::schemas(&mut list);
-    schemas.extend(list);
+    for (name, schema) in list {
+        let known = schemas.get(&name).is_none_or(|other| *other == schema);
+        debug_assert!(known, "two types are called {name}");
+        schemas.insert(name, schema);
+    }
     serde_json::json!({ "$ref": format!("#/components/schemas/{}", T::name()) })
+}
+
+/// A list of `T`. It stands in its place, since all lists have the same name.
+fn array<T: ToSchema>(schemas: &mut Schemas) -> serde_json::Value {
+    serde_json::json!({ "type": "array", "items": schema::<T>(schemas) })
 }
 
 /// Plain text.
@@ -176,6 +185,16 @@ pub(super) fn json<T: ToSchema>(status: u16, description: &'static str) -> Succe
     }
 }
 
+/// A success with a JSON list of `T`.
+pub(super) fn list<T: ToSchema>(status: u16, description: &'static str) -> Success {
+    Success {
+        status,
+        description,
+        content: vec![("application/json", array::<T>)],
+        headers: vec![],
+    }
+}
+
 impl Success {
     pub(super) fn or(mut self, media: &'static str, schema: SchemaOf) -> Self {
         self.content.push((media, schema));
@@ -243,13 +262,17 @@ impl Route {
     }
 
     /// Statuses of all problem answers. 400 can always happen, since unknown parameters are refused;
-    /// 401 and 403 where a role is asked for; 404 where the path names something.
+    /// 401, 403 and 503 where a role is asked for, since tokens are in the database; 408 and 413 where
+    /// a body is read.
     fn problem_statuses(&self) -> Vec<u16> {
         let mut statuses = vec![400];
         match self.role {
             None => {}
-            Some(Role::Read) => statuses.push(401),
-            Some(Role::Contribute | Role::Administer) => statuses.extend([401, 403]),
+            Some(Role::Read) => statuses.extend([401, 503]),
+            Some(Role::Contribute | Role::Administer) => statuses.extend([401, 403, 503]),
+        }
+        if !self.body.is_empty() {
+            statuses.extend([408, 413]);
         }
         statuses.extend(self.problems);
         statuses.sort_unstable();
@@ -278,9 +301,15 @@ impl Route {
         }));
         let mut responses = serde_json::Map::new();
         for success in (self.successes)() {
+            let mut headers = headers_object(&success.headers);
+            if self.parameters().iter().any(|p| p.name == "after") {
+                headers["Link"] = serde_json::json!({ "required": false,
+                    "description": "the next page, as rel=\"next\"; absent on the last",
+                    "schema": { "type": "string" } });
+            }
             let mut response = serde_json::json!({
                 "description": success.description,
-                "headers": headers_object(&success.headers),
+                "headers": headers,
             });
             if !success.content.is_empty() {
                 response["content"] = content_object(&success.content, schemas);
@@ -289,7 +318,18 @@ impl Route {
         }
         for status in self.problem_statuses() {
             let (description, headers): (&str, &[&str]) = match status {
+                400 => ("a parameter, a header or the syntax is wrong", &[]),
                 401 => ("no valid token", &["WWW-Authenticate"]),
+                403 => ("the token's role is too low", &[]),
+                404 => ("it does not exist", &[]),
+                406 => ("Accept allows none of the media types", &[]),
+                408 => ("the body comes too slowly", &[]),
+                409 => ("it contradicts what is stored", &[]),
+                412 => ("the precondition does not hold", &[]),
+                413 => ("the body is too large", &[]),
+                415 => ("the body's type or coding is not taken", &[]),
+                422 => ("the content is wrong: see errors", &[]),
+                503 => ("the database does not answer", &[]),
                 _ => ("see the problem's detail and errors", &[]),
             };
             responses.insert(
@@ -298,7 +338,7 @@ impl Route {
                     "description": description,
                     "headers": headers_object(headers),
                     "content": content_object(
-                        &[("application/problem+json", schema::<Problem>)], schemas),
+                        &[("application/problem+json", schema::<ProblemView>)], schemas),
                 }),
             );
         }
@@ -308,10 +348,13 @@ impl Route {
             "parameters": parameters,
             "responses": responses,
         });
-        if !self.body.is_empty() {
+        if let [first, ..] = self.body {
+            let mut content = content_object(self.body, schemas);
+            content["*/*"] = content[first.0].clone();
             operation["requestBody"] = serde_json::json!({
+                "description": "Read alike whatever Content-Type says.",
                 "required": true,
-                "content": content_object(self.body, schemas),
+                "content": content,
             });
         }
         if let Some(role) = self.role {

@@ -5,7 +5,9 @@ use actix_web::http::StatusCode;
 use super::call::Call;
 use super::problem::Problem;
 use super::respond::{Media, to_json};
-use super::route::{Answer, Form, Method, Parameter, Route, empty, json, optional, paging, text};
+use super::route::{
+    self, Answer, Form, Method, Parameter, Route, empty, json, optional, paging, text,
+};
 use crate::series::SeriesKey;
 use crate::service::lineage::{LineageView, lineage};
 use crate::service::series::{self, Moment, Query};
@@ -107,7 +109,7 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: list_parameters,
             headers: &[],
             body: &[],
-            successes: || vec![json::<Vec<SeriesView>>(200, "a page")],
+            successes: || vec![route::list::<SeriesView>(200, "a page")],
             problems: &[],
             handler: |call| Box::pin(list(call)),
         },
@@ -159,7 +161,7 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: Vec::new,
             headers: &[],
             body: &[],
-            successes: || vec![json::<Vec<VintageView>>(200, "the vintages")],
+            successes: || vec![route::list::<VintageView>(200, "the vintages")],
             problems: &[404],
             handler: |call| {
                 Box::pin(async move {

@@ -1,8 +1,8 @@
 //! What all requests share.
 
+use crate::service::Database;
 use crate::service::receiving::Limits;
 use crate::service::tokens::Gate;
-use crate::store::Database;
 
 /// What all requests share.
 pub(super) struct Shared {

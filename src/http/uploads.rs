@@ -7,13 +7,15 @@ use futures_util::TryStreamExt;
 use super::call::Call;
 use super::problem::Problem;
 use super::respond::Media;
-use super::route::{Answer, Form, Method, Parameter, Route, json, optional, paging, text};
-use crate::clock;
+use super::route::{
+    self, Answer, Form, Method, Parameter, Route, Success, empty, json, optional, paging, text,
+};
+use crate::finding::Finding;
 use crate::intake::{self, KindSpec, Reject};
 use crate::series::vintage::Scope;
 use crate::service::receiving::{OnFinding, OnReject, Request, receive, too_large};
 use crate::service::tokens::Role;
-use crate::service::{UploadView, uploads};
+use crate::service::{Fault, UploadView, uploads};
 
 /// Parameters of an upload that are no columns.
 fn own_parameters() -> Vec<Parameter> {
@@ -97,7 +99,7 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: Vec::new,
             headers: &[],
             body: &[],
-            successes: || vec![json::<Vec<KindSpec>>(200, "the kinds")],
+            successes: || vec![route::list::<KindSpec>(200, "the kinds")],
             problems: &[],
             handler: |call| Box::pin(async move { call.json(StatusCode::OK, &intake::kinds()) }),
         },
@@ -118,7 +120,7 @@ pub(super) fn routes() -> Vec<Route> {
             body: &[],
             successes: || vec![json::<KindSpec>(200, "the kind").or("text/csv", text)],
             problems: &[404, 406],
-            handler: |call| Box::pin(get_kind(call)),
+            handler: |call| Box::pin(async move { get_kind(&call) }),
         },
         Route {
             method: Method::Post,
@@ -137,7 +139,7 @@ pub(super) fn routes() -> Vec<Route> {
                         .header("Location"),
                 ]
             },
-            problems: &[408, 409, 413, 415, 422],
+            problems: &[409, 415, 422],
             handler: |call| Box::pin(create(call)),
         },
         Route {
@@ -149,7 +151,7 @@ pub(super) fn routes() -> Vec<Route> {
             parameters: list_parameters,
             headers: &[],
             body: &[],
-            successes: || vec![json::<Vec<UploadView>>(200, "a page")],
+            successes: || vec![route::list::<UploadView>(200, "a page")],
             problems: &[],
             handler: |call| Box::pin(list(call)),
         },
@@ -218,12 +220,12 @@ pub(super) fn routes() -> Vec<Route> {
             method: Method::Get,
             path: "/v1/uploads/{id}/rejects",
             name: "list_rejects",
-            summary: "Rows that could not be taken, with what was found and expected",
+            summary: "Rows that could not be taken, with what was found and expected; the first ten thousand",
             role: Some(Role::Read),
             parameters: paging,
             headers: &[],
             body: &[],
-            successes: || vec![json::<Vec<Reject>>(200, "a page")],
+            successes: || vec![route::list::<Reject>(200, "a page")],
             problems: &[404],
             handler: |call| {
                 Box::pin(async move {
@@ -241,15 +243,18 @@ pub(super) fn routes() -> Vec<Route> {
             summary: "The bytes as they came",
             role: Some(Role::Read),
             parameters: Vec::new,
-            headers: &[],
+            headers: &[("If-None-Match", "an entity tag that the client has")],
             body: &[],
             successes: || {
-                vec![super::route::Success {
-                    status: 200,
-                    description: "the bytes",
-                    content: vec![("text/csv", text), ("application/gzip", text)],
-                    headers: vec!["ETag"],
-                }]
+                vec![
+                    Success {
+                        status: 200,
+                        description: "the bytes",
+                        content: vec![("text/csv", text), ("application/gzip", text)],
+                        headers: vec!["ETag", "Content-Length"],
+                    },
+                    empty(304, "the client has them").header("ETag"),
+                ]
             },
             problems: &[404],
             handler: |call| Box::pin(raw(call)),
@@ -257,7 +262,7 @@ pub(super) fn routes() -> Vec<Route> {
     ]
 }
 
-async fn get_kind(call: Call) -> Answer {
+fn get_kind(call: &Call) -> Answer {
     let name = call.segment("kind").to_owned();
     let Some(kind) = intake::kinds().into_iter().find(|k| k.name == name) else {
         return Err(Problem::new(
@@ -279,17 +284,24 @@ async fn get_kind(call: Call) -> Answer {
 }
 
 async fn create(mut call: Call) -> Answer {
-    let declared = call
-        .header("Content-Length")
-        .and_then(|n| n.parse::<u64>().ok());
     let limit = call.shared.limits.max_bytes;
-    if declared.is_some_and(|n| n > limit) {
+    if call.declared_length().is_some_and(|n| n > limit) {
         return Err(too_large(limit).into());
     }
-    let gzip_declared = match call.header("Content-Encoding") {
-        None | Some("identity") => false,
-        Some("gzip" | "x-gzip") => true,
-        Some(other) => {
+    let lower = |name| call.header(name).unwrap_or_default().to_ascii_lowercase();
+    let kind_of_body = lower("Content-Type");
+    if kind_of_body.starts_with("multipart/") {
+        return Err(Problem::new(
+            StatusCode::UNSUPPORTED_MEDIA_TYPE,
+            "multipart_body",
+            "a form with parts is not taken; send the file itself as the body: curl --data-binary \
+             @FILE, not -F",
+        ));
+    }
+    let gzip_declared = match lower("Content-Encoding").as_str() {
+        "" | "identity" => false,
+        "gzip" | "x-gzip" => true,
+        other => {
             return Err(Problem::new(
                 StatusCode::UNSUPPORTED_MEDIA_TYPE,
                 "unknown_coding",
@@ -305,22 +317,14 @@ async fn create(mut call: Call) -> Answer {
         .collect();
     let kind = call.parameter("kind").unwrap_or_default();
     let settings = intake::Settings::parse(kind, &columns).map_err(|errors| {
-        Problem::bad_request("a parameter cannot stand for its column", errors)
+        let detail = errors.first().map_or("", |f| f.message.as_str()).to_owned();
+        Problem::bad_request(detail, errors)
     })?;
-    let today = clock::today();
-    let released = call.date("released");
-    if released.is_some_and(|r| r > today) {
-        return Err(Problem::bad_request(
-            format!("'released' lies in the future; today is {today}"),
-            vec![],
-        ));
-    }
     let or_empty = |name: &str| call.parameter(name).unwrap_or_default().to_owned();
     let request = Request {
         settings,
         gzip_declared,
-        released,
-        today,
+        released: call.date("released"),
         title: or_empty("title"),
         publisher: or_empty("publisher"),
         note: or_empty("note"),
@@ -342,7 +346,20 @@ async fn create(mut call: Call) -> Answer {
     let Some(payload) = call.payload.take() else {
         return Err(Problem::bad_request("the body was read already", vec![]));
     };
-    let view = receive(&call.shared.database, &call.shared.limits, request, payload).await?;
+    let view = receive(&call.shared.database, &call.shared.limits, request, payload)
+        .await
+        .map_err(|mut fault| {
+            if let Fault::Invalid { errors, .. } = &mut fault
+                && kind_of_body.starts_with("application/x-www-form-urlencoded")
+            {
+                let message = "the body came as a form, whose line ends may be lost";
+                errors.push(
+                    Finding::notice("sent_as_form", message)
+                        .remedy("with curl send it by --data-binary @FILE; -d drops line ends"),
+                );
+            }
+            fault
+        })?;
     let status = if view.dry_run || view.recognised {
         StatusCode::OK
     } else if view.state == "held" {
@@ -376,9 +393,14 @@ async fn raw(call: Call) -> Answer {
     } else {
         "text/csv"
     };
+    let tag = format!("\"{}\"", upload.sha256);
+    if call.has(&tag) {
+        return Ok(call.not_modified(&tag));
+    }
     Ok(HttpResponse::Ok()
         .content_type(media)
-        .insert_header(("ETag", format!("\"{}\"", upload.sha256)))
+        .insert_header(("ETag", tag))
+        .no_chunking(u64::try_from(upload.bytes).unwrap_or_default())
         .streaming(
             bytes
                 .map_ok(web::Bytes::from)

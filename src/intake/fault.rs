@@ -135,6 +135,16 @@ impl Reject {
     }
 }
 
+/// Characters of a row, and of what was found in it, that a reject shows.
+const SHOWN: usize = 200;
+
+fn shorten(text: &mut String) {
+    if let Some((end, _)) = text.char_indices().nth(SHOWN) {
+        text.truncate(end);
+        text.push('…');
+    }
+}
+
 /// Rejects kept up to a limit and counted by code beyond it.
 #[derive(Debug)]
 pub(super) struct Rejects {
@@ -154,7 +164,7 @@ impl Rejects {
         }
     }
 
-    pub(super) fn add(&mut self, finding: Finding, row: &str) {
+    pub(super) fn add(&mut self, mut finding: Finding, row: &str) {
         self.count += 1;
         match self.by_code.get_mut(&finding.code) {
             Some(n) => *n += 1,
@@ -163,9 +173,12 @@ impl Rejects {
             }
         }
         if self.kept.len() < self.limit {
+            // A cell may be as long as a row is allowed to be.
+            shorten(&mut finding.message);
+            finding.found.iter_mut().for_each(shorten);
             self.kept.push(Reject {
                 finding,
-                row: row.chars().take(200).collect(),
+                row: row.chars().take(SHOWN).collect(),
             });
         }
     }

@@ -148,10 +148,10 @@ pub struct Limits {
 }
 
 impl Default for Limits {
-    /// 1000 rejects, 16 GiB, ratio 250, 256 columns, 64 KiB a row, a million series.
+    /// 10,000 rejects, 16 GiB, ratio 250, 256 columns, 64 KiB a row, a million series.
     fn default() -> Self {
         Self {
-            max_rejects_kept: 1000,
+            max_rejects_kept: 10_000,
             max_decoded_bytes: 16 << 30,
             max_ratio: 250,
             max_columns: 256,

@@ -20,8 +20,10 @@ pub(super) fn not_an_object(pointer: &str) -> Finding {
         .expected("an object with named fields")
 }
 
-/// The finding of an error met while reading `text`, which stands at `base` in the document.
-pub(super) fn of_json(text: &str, base: &str, error: &serde_json::Error) -> Finding {
+/// The finding of an error met while reading `text`, which stands at `base` in the document: code
+/// `invalid_json` with its line, else a code with a JSON pointer.
+#[must_use]
+pub fn of_json(text: &str, base: &str, error: &serde_json::Error) -> Finding {
     let shown = error.to_string();
     let message = shown
         .rfind(" at line ")

@@ -45,6 +45,7 @@ mod tests;
 use std::collections::BTreeMap;
 
 pub use document::Document;
+pub use fault::of_json as json_finding;
 pub use plan::{InputInfo, Plan, PlannedOutput, PlannedStep, plan};
 pub use step::{IncomePartner, InputRef, PricePartner, Step};
 

@@ -7,9 +7,10 @@ use serde::{Deserialize, Deserializer, Serialize, Serializer};
 
 use crate::time::Frequency;
 
-/// Which series: `FREQ.AREA.MEASURE.PARTNER.PRODUCT.CURRENCY.SOURCE.ADJUSTMENT`, fixed places in
-/// the order of an SDMX series key, trailing empty places dropped, as in `Q.XKA.exports` or
-/// `Q.XKA.exports.XKB..USD`.
+/// Which series: `FREQ.AREA.MEASURE.PARTNER.PRODUCT.CURRENCY.SOURCE.ADJUSTMENT`.
+///
+/// Fixed places in the order of an SDMX series key, trailing empty places dropped, as in
+/// `Q.XKA.exports` or `Q.XKA.exports.XKB..USD`.
 ///
 /// An empty partner or product stands for all; an empty currency for the area's own money, which
 /// the unit names. Codes hold letters, digits, `_` and `-` (measures: lower-case letters, digits

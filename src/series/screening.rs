@@ -14,9 +14,10 @@ const TOLERANCE: f64 = 0.15;
 /// How many observations on either side of a join give the level there.
 const NEIGHBOURS: usize = 4;
 
-/// Whether a statement stands near a thousand or a million times what is stored (or its inverse):
-/// period by period where both have values, else by the median level on either side of the join.
-/// The finding has code `level_ratio` and severity error, which holds the upload.
+/// Whether a statement stands near a thousand or a million times what is stored, or its inverse.
+///
+/// Compared period by period where both have values, else by the median level on either side of the
+/// join. The finding has code `level_ratio` and severity error, which holds the upload.
 #[must_use]
 pub fn level_ratio(base: &State, statement: &Statement) -> Option<Finding> {
     let mut suspicious: Option<(Period, f64, f64, f64)> = None;

@@ -34,12 +34,19 @@ pub async fn declare(
     body: &str,
 ) -> Result<(CurrencyView, bool), Fault> {
     let code = CurrencyCode::parse(code).map_err(|e| {
-        Fault::invalid(
-            "bad_currency",
-            vec![Finding::error("bad_currency", e.to_string())],
-        )
+        let finding = Finding::error("bad_currency", e.to_string())
+            .found(code)
+            .expected("three capital letters");
+        Fault::invalid("bad_currency", vec![finding])
     })?;
     let declaration: Declaration = documents::parse_json(body, &["name", "areas"])?;
+    if declaration.name.trim().is_empty() || declaration.name.contains(char::is_control) {
+        let finding = Finding::error("bad_name", "the name is empty or holds control characters")
+            .at_pointer("/name")
+            .found(declaration.name.escape_default().to_string())
+            .expected("a name to show, such as Dinar of XAA");
+        return Err(Fault::invalid("bad_name", vec![finding]));
+    }
     for (i, area) in declaration.areas.iter().enumerate() {
         if let Err(e) = SeriesKey::new(Frequency::Annual, [area, "x", "", "", "", "", ""]) {
             let finding = Finding::error("bad_area", e.reason)

@@ -6,6 +6,7 @@ use serde::de::DeserializeOwned;
 use super::Fault;
 use super::views::{DocumentView, Page, RunLine};
 use crate::finding::Finding;
+use crate::preparation;
 use crate::store::document::DocumentRow;
 use crate::store::{self, Database};
 
@@ -32,6 +33,8 @@ impl DocumentKind {
 pub struct Precondition {
     /// `If-Match`: versions of which one must be current.
     pub matches: Option<Vec<i32>>,
+    /// `If-Match: *`: something must be there.
+    pub present: bool,
     /// `If-None-Match: *`: nothing may be there.
     pub absent: bool,
 }
@@ -44,7 +47,7 @@ impl Precondition {
                 "If-None-Match: * asks that nothing be there, but version {} is",
                 row.version
             )),
-            (None, Some(_)) => {
+            (None, _) if self.present || self.matches.is_some() => {
                 failed("If-Match asks for a version, but nothing is there".to_owned())
             }
             (Some(row), Some(versions)) if !versions.contains(&row.version) => failed(format!(
@@ -79,24 +82,28 @@ fn check_name(name: &str) -> Result<(), Fault> {
 /// Reads JSON into a type that refuses unknown fields; `known` are listed where one is met.
 ///
 /// # Errors
-/// [`Fault::BadRequest`] for a text that is no JSON, [`Fault::Invalid`] for one of another shape.
+/// As `refused` says: [`Fault::BadRequest`] for a text that is no JSON, [`Fault::Invalid`] for another
+/// shape.
 pub fn parse_json<T: DeserializeOwned>(body: &str, known: &[&str]) -> Result<T, Fault> {
     serde_json::from_str(body).map_err(|e| {
-        let finding = Finding::error("bad_document", e.to_string())
-            .at_line(e.line() as u64)
-            .expected(format!(
-                "a JSON object with the fields {}",
-                known.join(", ")
-            ));
-        if e.is_data() {
-            Fault::invalid("bad_document", vec![finding])
-        } else {
-            Fault::BadRequest {
-                detail: format!("the body is not JSON: {e}"),
-                errors: vec![finding],
-            }
+        let mut finding = preparation::json_finding(body, "", &e);
+        if finding.expected.is_none() {
+            let fields = known.join(", ");
+            finding = finding.expected(format!("a JSON object with the fields {fields}"));
         }
+        refused("bad_document", vec![finding])
     })
+}
+
+/// What is wrong with a document: [`Fault::BadRequest`] where it is no JSON, else [`Fault::Invalid`].
+pub(super) fn refused(code: &'static str, errors: Vec<Finding>) -> Fault {
+    match errors.as_slice() {
+        [only] if only.code == "invalid_json" => Fault::BadRequest {
+            detail: only.message.clone(),
+            errors,
+        },
+        _ => Fault::invalid(code, errors),
+    }
 }
 
 /// Stores a checked document as a new version; the same text again stays the version it is.
@@ -224,10 +231,10 @@ pub async fn delete(
     Ok(())
 }
 
-/// Runs of a document, newest first.
+/// Runs of a document, newest first; they outlive it.
 ///
 /// # Errors
-/// [`Fault::NotFound`] where the document does not exist; [`Fault::Store`].
+/// [`Fault::NotFound`] where no version was ever stored; [`Fault::Store`].
 pub async fn runs(
     database: &Database,
     kind: DocumentKind,
@@ -235,11 +242,8 @@ pub async fn runs(
     after: Option<&str>,
     limit: i64,
 ) -> Result<Page<RunLine>, Fault> {
-    row(database, kind, name, None).await?;
-    let before = match after {
-        None => i64::MAX,
-        Some(text) => cursor(text)?,
-    };
+    row(database, kind, name, Some(1)).await?;
+    let before = after.map_or(Ok(i64::MAX), cursor)?;
     let mut connection = database.connection().await?;
     let rows =
         store::document::list_runs(&mut connection, kind.as_str(), name, before, limit + 1).await?;

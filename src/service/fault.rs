@@ -53,6 +53,8 @@ pub enum Fault {
     TooLarge {
         /// Which limit.
         detail: String,
+        /// What was expected, and what to do.
+        errors: Vec<Finding>,
     },
     /// The body came too slowly.
     TooSlow {
@@ -61,13 +63,38 @@ pub enum Fault {
     },
     /// The database failed.
     Store(store::Error),
+    /// The database went away while it committed: all was done, or nothing.
+    OutcomeUnknown(store::Error),
     /// A fault of the program.
     Internal(String),
 }
 
+impl std::fmt::Display for Fault {
+    fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
+        match self {
+            Self::BadRequest { detail, .. }
+            | Self::Invalid { detail, .. }
+            | Self::Refused { detail, .. }
+            | Self::Conflict { detail, .. }
+            | Self::PreconditionFailed { detail }
+            | Self::TooLarge { detail, .. }
+            | Self::TooSlow { detail } => f.write_str(detail),
+            Self::NotFound { what } => write!(f, "there is no {what}"),
+            Self::Store(error) => write!(f, "the database failed: {error}"),
+            Self::OutcomeUnknown(error) => {
+                write!(f, "all was done, or nothing; look which: {error}")
+            }
+            Self::Internal(reason) => write!(f, "an error of the program: {reason}"),
+        }
+    }
+}
+
 impl From<store::Error> for Fault {
     fn from(error: store::Error) -> Self {
-        Self::Store(error)
+        match error {
+            store::Error::OutcomeUnknown(_) => Self::OutcomeUnknown(error),
+            store::Error::Database(_) | store::Error::Corrupt { .. } => Self::Store(error),
+        }
     }
 }
 

@@ -3,23 +3,22 @@
 //! The visible state as of a release date is the merge of the landed uploads released until then, in
 //! the order of release and, among equals, of landing. Landing applies one statement where it belongs
 //! in that order and replays the later ones; withdrawing replays all but one. A vintage is written
-//! only where values, status or provenance differ.
+//! only where values, status or provenance differ, so a later upload that repeated what was there has
+//! none; it is replayed all the same.
 
 use std::collections::{BTreeMap, BTreeSet, HashMap};
+use std::ops::Range;
 
-use super::Fault;
 use super::views::{ObservationCounts, SeriesList};
+use super::{Fault, groups};
 use crate::finding::Finding;
 use crate::series::screening;
-use crate::series::vintage::{Changes, State, Statement, difference, merge};
+use crate::series::vintage::{Changes, State, difference, merge};
 use crate::store::change::{self, Action, Revision};
 use crate::store::series::StoredSegment;
 use crate::store::vintage::{NewVintage, StatementRow, VintageRow};
 use crate::store::{self, Connection};
 use crate::time::Date;
-
-/// Segments worked on at a time.
-const BATCH: usize = 1000;
 
 /// What landing an upload did, or would do.
 #[derive(Debug, Default)]
@@ -30,8 +29,13 @@ pub(super) struct Landing {
     pub(super) series_changed: SeriesList,
     /// Segments that had no observations, in series that had some in another segment.
     pub(super) opened: Vec<StoredSegment>,
+    /// The first [`SHOWN_FINDINGS`], and how many more there are.
     pub(super) findings: Vec<Finding>,
+    pub(super) more_findings: u64,
 }
+
+/// Findings on series that a report shows: a wrong multiplier concerns all series of a file.
+const SHOWN_FINDINGS: usize = 100;
 
 /// Applies the stored fragments of an upload to their segments and writes the vintages that result.
 /// Findings of severity error are for the caller to act on: it rolls back to hold the upload.
@@ -42,31 +46,30 @@ pub(super) async fn land(
     action: Action,
     author: &str,
 ) -> Result<Landing, Fault> {
-    let segments = store::vintage::segments_of_upload(connection, upload).await?;
-    store::series::lock_segments(connection, &segments).await?;
+    store::series::lock_of_upload(connection, upload).await?;
+    let after = next_day(released);
+    let later = store::upload::landed_from(connection, after).await?;
+    let (segments, batches) = segments(connection, upload, after, &later).await?;
     let populated = store::series::populated_segments(connection, &segments).await?;
     let revision = change::draw(connection, action, Some(upload), None, author).await?;
     let mut landing = Landing {
         revision: Some(revision.number),
         ..Landing::default()
     };
-    let after = next_day(released);
     let mut created: BTreeSet<i64> = BTreeSet::new();
-    for batch in segments.chunks(BATCH) {
-        let statements = store::vintage::statements_of_upload(connection, upload, batch).await?;
+    for batch in batches {
+        let batch = &segments[batch];
+        let statements = store::vintage::statements(connection, &[upload], batch).await?;
         let stored = by_id(store::series::segments_by_id(connection, batch).await?);
         let mut bases = one_each(
             store::vintage::visible_before(connection, batch, after).await?,
             &stored,
         )?;
-        let later = store::vintage::visible_from(connection, batch, after).await?;
-        let mut later_statements = HashMap::new();
-        if !later.is_empty() {
-            let ids: Vec<i64> = later.iter().map(|v| v.segment_id).collect();
-            later_statements =
-                grouped(store::vintage::landed_statements(connection, &ids, after).await?);
-        }
-        let mut later_states = dated(later, &stored)?;
+        let mut visible = dated(
+            store::vintage::visible_from(connection, batch, after).await?,
+            &stored,
+        )?;
+        let replayed = replayed(connection, &later, batch).await?;
         let mut vintages = Vec::new();
         for row in statements {
             let Some(segment) = stored.get(&row.segment_id) else {
@@ -79,7 +82,11 @@ pub(super) async fn land(
             if let Some(base) = &base
                 && let Some(finding) = screening::level_ratio(base, &row.statement)
             {
-                landing.findings.push(finding.at_series(&segment.key));
+                if landing.findings.len() < SHOWN_FINDINGS {
+                    landing.findings.push(finding.at_series(&segment.key));
+                } else {
+                    landing.more_findings += 1;
+                }
             }
             let (state, changes) = merge(base.as_ref(), &row.statement);
             landing.count(changes);
@@ -92,16 +99,9 @@ pub(super) async fn land(
             }
             if changes.any() {
                 landing.series_changed.add(&segment.key);
-                let rest = later_statements.remove(&row.segment_id).unwrap_or_default();
-                let visible = later_states.remove(&row.segment_id).unwrap_or_default();
-                let statements = rest.iter().map(|s| (s.released, &s.statement));
-                replay_onto(
-                    Some(state.clone()),
-                    statements,
-                    visible,
-                    &mut vintages,
-                    row.segment_id,
-                );
+                let rest = replayed.get(&row.segment_id).map_or(&[][..], Vec::as_slice);
+                let visible = visible.remove(&row.segment_id).unwrap_or_default();
+                replay_onto(Some(&state), rest, visible, &mut vintages, row.segment_id);
                 vintages.push(NewVintage {
                     segment_id: row.segment_id,
                     released,
@@ -132,10 +132,12 @@ pub(super) async fn unland(
     released: Date,
     author: &str,
 ) -> Result<Revision, Fault> {
-    let segments = store::vintage::segments_of_upload(connection, upload).await?;
-    store::series::lock_segments(connection, &segments).await?;
+    store::series::lock_of_upload(connection, upload).await?;
+    let rest = store::upload::landed_from(connection, released).await?;
+    let (segments, batches) = segments(connection, upload, released, &rest).await?;
     let revision = change::draw(connection, Action::Withdraw, Some(upload), None, author).await?;
-    for batch in segments.chunks(BATCH) {
+    for batch in batches {
+        let batch = &segments[batch];
         let stored = by_id(store::series::segments_by_id(connection, batch).await?);
         let mut bases = one_each(
             store::vintage::visible_before(connection, batch, released).await?,
@@ -145,45 +147,83 @@ pub(super) async fn unland(
             store::vintage::visible_from(connection, batch, released).await?,
             &stored,
         )?;
-        let statements =
-            grouped(store::vintage::landed_statements(connection, batch, released).await?);
+        let replayed = replayed(connection, &rest, batch).await?;
         let mut vintages = Vec::new();
         for id in batch {
             let base = bases.remove(id);
-            let rest = statements.get(id).map_or(&[][..], Vec::as_slice);
+            let rest = replayed.get(id).map_or(&[][..], Vec::as_slice);
             let visible = visible.remove(id).unwrap_or_default();
-            let statements = rest.iter().map(|s| (s.released, &s.statement));
-            replay_onto(base, statements, visible, &mut vintages, *id);
+            replay_onto(base.as_ref(), rest, visible, &mut vintages, *id);
         }
         store::vintage::insert(connection, revision.number, &vintages).await?;
     }
     Ok(revision)
 }
 
-/// Replays statements in their order onto a base, and for every release date that has a visible state
-/// adds the vintage that replaces it, where it differs.
-fn replay_onto<'a>(
-    base: Option<State>,
-    statements: impl Iterator<Item = (Date, &'a Statement)>,
-    visible: BTreeMap<Date, State>,
+/// Segments that an upload speaks of, and batches of them that fit into memory.
+async fn segments(
+    connection: &mut Connection,
+    upload: i64,
+    from: Date,
+    replayed: &[i64],
+) -> Result<(Vec<i64>, Vec<Range<usize>>), Fault> {
+    let weighed = store::vintage::segments_of_upload(connection, upload, from, replayed).await?;
+    let batches = groups::batches(weighed.iter().map(|s| s.periods));
+    Ok((weighed.iter().map(|s| s.segment_id).collect(), batches))
+}
+
+/// What these uploads say of some segments, by segment, in the order in which it merges.
+async fn replayed(
+    connection: &mut Connection,
+    uploads: &[i64],
+    segments: &[i64],
+) -> Result<HashMap<i64, Vec<StatementRow>>, Fault> {
+    let mut map: HashMap<i64, Vec<StatementRow>> = HashMap::new();
+    if uploads.is_empty() {
+        return Ok(map);
+    }
+    for row in store::vintage::statements(connection, uploads, segments).await? {
+        map.entry(row.segment_id).or_default().push(row);
+    }
+    Ok(map)
+}
+
+/// Replays statements in their order onto a base that readers see until the first date. Wherever what
+/// they see from a date on, by a vintage of that date or the one before, is no longer what the replay
+/// gives, adds the vintage that says so.
+fn replay_onto(
+    base: Option<&State>,
+    statements: &[StatementRow],
+    mut visible: BTreeMap<Date, State>,
     vintages: &mut Vec<NewVintage>,
     segment_id: i64,
 ) {
-    let mut state = base;
-    let mut statements = statements.peekable();
-    for (released, old) in visible {
-        while let Some((_, statement)) = statements.next_if(|(date, _)| *date <= released) {
-            state = Some(merge(state.as_ref(), statement).0);
+    let mut dates: BTreeSet<Date> = visible.keys().copied().collect();
+    dates.extend(statements.iter().map(|s| s.released));
+    let nothing = |like: &State| State::empty(like.start);
+    let mut state = base.cloned();
+    let mut seen = base.cloned();
+    let mut statements = statements.iter().peekable();
+    for released in dates {
+        while let Some(row) = statements.next_if(|row| row.released <= released) {
+            state = Some(merge(state.as_ref(), &row.statement).0);
         }
-        let new = state.clone().unwrap_or_else(|| State::empty(old.start));
+        seen = visible.remove(&released).or(seen);
+        let (new, old) = match (&state, &seen) {
+            (None, None) => continue,
+            (Some(new), None) => (new.clone(), nothing(new)),
+            (None, Some(old)) => (nothing(old), old.clone()),
+            (Some(new), Some(old)) => (new.clone(), old.clone()),
+        };
         if !new.agrees_with(&old) {
             vintages.push(NewVintage {
                 segment_id,
                 released,
                 changes: difference(&old, &new),
-                state: new,
+                state: new.clone(),
             });
         }
+        seen = Some(new);
     }
 }
 
@@ -223,12 +263,4 @@ fn dated(
             .insert(released, state_of(row, stored)?);
     }
     Ok(map)
-}
-
-fn grouped(rows: Vec<StatementRow>) -> HashMap<i64, Vec<StatementRow>> {
-    let mut map: HashMap<i64, Vec<StatementRow>> = HashMap::new();
-    for row in rows {
-        map.entry(row.segment_id).or_default().push(row);
-    }
-    map
 }

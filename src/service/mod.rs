@@ -3,9 +3,11 @@
 //! A route calls one function here; a function here calls `store` and the pure rooms. Work that would
 //! hold up the event loop runs on a blocking thread.
 
+mod body;
 pub mod currencies;
 pub mod documents;
 mod fault;
+mod groups;
 mod landing;
 pub mod lineage;
 pub mod preparations;
@@ -20,7 +22,7 @@ mod views;
 pub use fault::Fault;
 pub use views::*;
 
-use crate::store::Database;
+pub use crate::store::Database;
 
 /// Runs pure work on a blocking thread, in the current span.
 async fn blocking<T: Send + 'static>(

@@ -76,7 +76,7 @@ struct StoredResult {
 const KIND: DocumentKind = DocumentKind::Preparation;
 
 fn parse(body: &str) -> Result<Document, Fault> {
-    Document::parse(body).map_err(|errors| Fault::invalid("bad_preparation", errors))
+    Document::parse(body).map_err(|errors| documents::refused("bad_preparation", errors))
 }
 
 /// Stores a preparation after checking it. Where its inputs are stored already, units are checked too.
@@ -215,10 +215,12 @@ async fn write(
     outputs: &[Output],
     author: &str,
 ) -> Result<(Option<i64>, BTreeSet<SeriesKey>), Fault> {
-    let wanted: Vec<(&SeriesKey, &Unit)> =
-        outputs.iter().map(|o| (&o.key, &o.series.unit)).collect();
+    let keys: Vec<&SeriesKey> = outputs.iter().map(|o| &o.key).collect();
+    let ids = store::series::ensure(connection, &keys).await?;
+    store::series::lock(connection, &ids).await?;
+    let units = outputs.iter().map(|o| &o.series.unit);
+    let wanted: Vec<(i64, &Unit)> = ids.iter().copied().zip(units).collect();
     let segments = store::series::ensure_segments(connection, &wanted).await?;
-    let ids: Vec<i64> = segments.iter().map(|s| s.series_id).collect();
     let fed = store::vintage::fed_by_uploads(connection, &ids).await?;
     if let Some(i) = ids.iter().position(|id| fed.contains(id)) {
         return Err(Fault::Conflict {
@@ -291,9 +293,12 @@ fn statement(run: i64, series: &Series) -> Statement {
         origins: series
             .status
             .iter()
-            .map(|s| match s {
-                Status::Absent => Origin::Absent,
-                _ => Origin::Run { id: run },
+            .map(|s| {
+                if *s == Status::Absent {
+                    Origin::Absent
+                } else {
+                    Origin::Run { id: run }
+                }
             })
             .collect(),
         scope: Scope::Replace,

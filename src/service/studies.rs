@@ -40,7 +40,7 @@ pub struct StudyRun {
 const KIND: DocumentKind = DocumentKind::Study;
 
 fn parse(body: &str) -> Result<Document, Fault> {
-    Document::parse(body).map_err(|errors| Fault::invalid("bad_study", errors))
+    Document::parse(body).map_err(|errors| documents::refused("bad_study", errors))
 }
 
 /// Stores a study after checking it.
@@ -142,7 +142,7 @@ pub fn text(run: &StudyRun, with_unreliable: bool) -> String {
         .unwrap_or("-");
     let header = [
         format!(
-            "Study {} version {}, run {} (its {}. run; {}, by {})",
+            "Study {} version {}, run {} (number {} of this study; {}, by {})",
             run.study, run.version, run.id, run.runs_so_far, run.recorded, run.author
         ),
         format!(

@@ -58,8 +58,9 @@ const PREFIX: &str = "rt_";
 const BELIEVED: Duration = Duration::from_secs(1);
 
 /// Checks bearer tokens, remembering the store's answers for a moment.
-#[derive(Debug, Default)]
+#[derive(Debug)]
 pub struct Gate {
+    may_be_open: bool,
     tokens: Mutex<HashMap<[u8; 32], (Instant, Principal)>>,
     any: Mutex<Option<(Instant, bool)>>,
 }
@@ -76,7 +77,18 @@ pub enum Admission {
 }
 
 impl Gate {
-    /// Who a caller with this bearer token is. Where no token exists the service is open.
+    /// A gate that lets everybody in while no token exists, if it may be open. One that other machines
+    /// reach may not: revoking its last token would open it to the network.
+    #[must_use]
+    pub fn new(may_be_open: bool) -> Self {
+        Self {
+            may_be_open,
+            tokens: Mutex::default(),
+            any: Mutex::default(),
+        }
+    }
+
+    /// Who a caller with this bearer token is.
     ///
     /// # Errors
     /// [`Fault::Store`].
@@ -86,7 +98,7 @@ impl Gate {
         bearer: Option<&str>,
     ) -> Result<Admission, Fault> {
         let Some(token) = bearer else {
-            return Ok(if self.any_token(database).await? {
+            return Ok(if !self.may_be_open || self.any_token(database).await? {
                 Admission::TokenMissing
             } else {
                 Admission::Admitted(Principal {

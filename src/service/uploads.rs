@@ -10,6 +10,7 @@ use super::landing::{self, Landing};
 use super::receiving::Request;
 use super::views::{ObservationCounts, OpenedSegment, Page, SeriesList, UploadReport, UploadView};
 use super::{Fault, preview};
+use crate::clock;
 use crate::finding::{Finding, Severity};
 use crate::intake::{Intake, Reject, Understood};
 use crate::series::vintage::Scope;
@@ -79,7 +80,7 @@ impl ReportParts {
     }
 
     pub(super) fn add_duplicates(&mut self, key: &SeriesKey, duplicates: &[Duplicate]) {
-        const KEPT: usize = 1000;
+        const KEPT: usize = 10_000;
         self.duplicate_count += duplicates.len() as u64;
         let room = KEPT.saturating_sub(self.duplicates.len());
         self.duplicates.extend(
@@ -92,6 +93,12 @@ impl ReportParts {
 
     pub(super) fn add_landing(&mut self, landing: &Landing, opened: Vec<OpenedSegment>) {
         self.landing_findings.clone_from(&landing.findings);
+        if landing.more_findings > 0 {
+            self.landing_findings.push(Finding::error(
+                "more_findings",
+                format!("{} more series have such findings", landing.more_findings),
+            ));
+        }
         self.opened = opened;
     }
 
@@ -331,6 +338,17 @@ pub async fn withdraw(database: &Database, id: i64, author: &str) -> Result<Uplo
     }
     store::commit(transaction).await?;
     get(database, id).await
+}
+
+/// Erases refused uploads recorded more than so many days ago.
+///
+/// # Errors
+/// [`Fault::Store`].
+pub async fn erase_old_refused(database: &Database, days: u32) -> Result<u64, Fault> {
+    match clock::now().checked_sub_days(chrono::Days::new(u64::from(days))) {
+        Some(before) => sweep_refused(database, before).await,
+        None => Ok(0),
+    }
 }
 
 /// Erases refused uploads that are older than the retention allows.

@@ -160,7 +160,7 @@ pub struct ProposedLink {
     pub from: String,
     /// Last period of the overlap.
     pub to: String,
-    /// Largest less smallest ratio over the overlap, relative to the factor.
+    /// Largest over smallest ratio over the overlap, less one.
     pub spread: f64,
     /// What the choice of the linking period can change in the growth at the join, in log per cent.
     pub growth_effect_log_percent: f64,

@@ -1,5 +1,6 @@
 //! Connections and transactions, as `service` holds them.
 
+use sqlx::postgres::{PgDatabaseError, PgSeverity};
 use sqlx::{Executor, PgConnection, Postgres};
 
 use super::{Database, Error};
@@ -42,9 +43,20 @@ impl Database {
 /// Commits.
 ///
 /// # Errors
-/// [`Error::Database`]; nothing was changed then.
+/// [`Error::Database`] where the database refused: nothing was changed. [`Error::OutcomeUnknown`] where
+/// it went away before it answered: the transaction counts whole or not at all.
 pub async fn commit(transaction: Transaction) -> Result<(), Error> {
-    Ok(transaction.commit().await?)
+    transaction.commit().await.map_err(|error| {
+        let refused = error
+            .as_database_error()
+            .and_then(|e| e.try_downcast_ref::<PgDatabaseError>())
+            .is_some_and(|e| e.severity() == PgSeverity::Error);
+        if refused {
+            Error::Database(error)
+        } else {
+            Error::OutcomeUnknown(error)
+        }
+    })
 }
 
 /// Rolls back.

@@ -6,6 +6,9 @@ pub enum Error {
     /// The database refused, failed or went away.
     #[error(transparent)]
     Database(#[from] sqlx::Error),
+    /// The database went away between the order to commit and its answer.
+    #[error("no answer to a commit: {0}")]
+    OutcomeUnknown(sqlx::Error),
     /// A stored row does not hold what this program writes.
     #[error("stored {what} cannot be read: {reason}")]
     Corrupt {
@@ -24,7 +27,7 @@ impl Error {
             Self::Database(sqlx::Error::Database(e)) => {
                 matches!(e.code().as_deref(), Some("40001" | "40P01"))
             }
-            Self::Database(_) | Self::Corrupt { .. } => false,
+            Self::Database(_) | Self::OutcomeUnknown(_) | Self::Corrupt { .. } => false,
         }
     }
 
@@ -33,7 +36,7 @@ impl Error {
     pub fn constraint(&self) -> Option<&str> {
         match self {
             Self::Database(sqlx::Error::Database(e)) => e.constraint(),
-            Self::Database(_) | Self::Corrupt { .. } => None,
+            Self::Database(_) | Self::OutcomeUnknown(_) | Self::Corrupt { .. } => None,
         }
     }
 

@@ -10,6 +10,7 @@ mod connection;
 mod copy;
 pub mod currency;
 pub mod document;
+pub mod dynamic;
 mod error;
 mod pool;
 pub mod series;
@@ -24,7 +25,6 @@ pub use connection::{
 };
 pub use error::Error;
 pub use pool::{Database, DatabaseOptions, OpenError, Place, migrations_digest};
-use sqlx::AssertSqlSafe;
 
 use crate::time::Date;
 

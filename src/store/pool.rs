@@ -194,10 +194,15 @@ impl Database {
         &self.connect
     }
 
-    /// Closes the connections, then ends the private cluster if this process holds it.
-    pub async fn close(self) {
+    /// Closes the connections; whoever asks for one from now on gets an error.
+    pub async fn disconnect(&self) {
         self.pool.close().await;
         self.upload_pool.close().await;
+    }
+
+    /// Closes the connections, then ends the private cluster if this process holds it.
+    pub async fn close(self) {
+        self.disconnect().await;
         let cluster = self.cluster;
         blocking(move || drop(cluster)).await;
     }

@@ -2,6 +2,8 @@
 //!
 //! The table is temporary: it is unlogged, seen by one connection, and gone when the transaction ends.
 
+use std::ops::Range;
+
 use sqlx::{Executor, PgConnection};
 
 use super::Error;
@@ -31,14 +33,14 @@ pub async fn create(connection: &mut PgConnection) -> Result<(), Error> {
 ///
 /// # Errors
 /// [`Error::Database`].
-pub async fn insert(connection: &mut PgConnection, pieces: &[(i32, Piece)]) -> Result<(), Error> {
+pub async fn insert(connection: &mut PgConnection, pieces: &[(usize, Piece)]) -> Result<(), Error> {
     let mut rows = CopyBuffer::new(5);
     for (group, piece) in pieces {
         let periods: Vec<u8> = piece.periods.iter().flat_map(|p| p.to_be_bytes()).collect();
         let lines: Vec<u8> = piece.lines.iter().flat_map(|l| l.to_be_bytes()).collect();
         let status: Vec<u8> = piece.status.iter().map(|s| s.byte()).collect();
         rows.start_row()
-            .integer(*group)
+            .integer(number(*group))
             .bytea(&periods)
             .doubles(&piece.values)
             .bytea(&status)
@@ -68,22 +70,22 @@ pub async fn index(connection: &mut PgConnection) -> Result<(), Error> {
 /// [`Error`].
 pub async fn fetch(
     connection: &mut PgConnection,
-    first: i32,
-    last: i32,
-    identity: impl Fn(i32) -> Piece,
-) -> Result<Vec<(i32, Piece)>, Error> {
+    groups: Range<usize>,
+    identity: impl Fn(usize) -> Piece,
+) -> Result<Vec<(usize, Piece)>, Error> {
     // The table exists in this transaction alone, so the query cannot be checked at compile time.
     type Row = (i32, Vec<u8>, Vec<f64>, Vec<u8>, Vec<u8>);
     let rows: Vec<Row> = sqlx::query_as(
         r#"SELECT group_number, periods, "values", status, lines FROM staged_piece
-           WHERE group_number BETWEEN $1 AND $2 ORDER BY group_number"#,
+           WHERE group_number >= $1 AND group_number < $2 ORDER BY group_number"#,
     )
-    .bind(first)
-    .bind(last)
+    .bind(number(groups.start))
+    .bind(number(groups.end))
     .fetch_all(connection)
     .await?;
     rows.into_iter()
         .map(|(group, periods, values, status, lines)| {
+            let group = usize::try_from(group).unwrap_or_default();
             let word = |c: &[u8]| [c[0], c[1], c[2], c[3]];
             let status = status
                 .into_iter()
@@ -105,4 +107,9 @@ pub async fn fetch(
             Ok((group, piece))
         })
         .collect()
+}
+
+/// Groups are no more than the series of a file, which are limited.
+fn number(group: usize) -> i32 {
+    i32::try_from(group).unwrap_or(i32::MAX)
 }

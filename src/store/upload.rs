@@ -310,6 +310,20 @@ pub async fn same_bytes(
     Ok(rows)
 }
 
+/// Uploads that landed and were released on or after a date.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn landed_from(connection: &mut PgConnection, date: Date) -> Result<Vec<i64>, Error> {
+    let ids = sqlx::query_scalar!(
+        "SELECT id FROM upload WHERE state = 'landed' AND released >= $1",
+        day(date)
+    )
+    .fetch_all(connection)
+    .await?;
+    Ok(ids)
+}
+
 /// The raw bytes in order, each part still compressed.
 #[must_use]
 pub fn parts(database: &Database, upload: i64) -> BoxStream<'static, Result<Vec<u8>, Error>> {

@@ -126,15 +126,15 @@ pub struct StatementRow {
     pub statement: Statement,
 }
 
-/// Statements of landed uploads about these segments released on or after a date, in the order in
-/// which they merge: by segment, release date and landing.
+/// What these uploads say about these segments, in the order in which it merges: by segment, release
+/// date and landing.
 ///
 /// # Errors
 /// [`Error`].
-pub async fn landed_statements(
+pub async fn statements(
     connection: &mut PgConnection,
+    uploads: &[i64],
     segments: &[i64],
-    date: Date,
 ) -> Result<Vec<StatementRow>, Error> {
     let rows = sqlx::query_as!(
         FragmentRow,
@@ -142,55 +142,57 @@ pub async fn landed_statements(
              s.frequency, u.parameters->>'scope' AS scope
            FROM fragment f JOIN upload u ON u.id = f.upload_id
            JOIN segment g ON g.id = f.segment_id JOIN series s ON s.id = g.series_id
-           WHERE f.segment_id = ANY($1) AND u.released >= $2 AND u.state = 'landed'
+           WHERE f.segment_id = ANY($1) AND f.upload_id = ANY($2)
            ORDER BY f.segment_id, u.released, u.landed_revision"#,
         segments,
-        day(date)
+        uploads
     )
     .fetch_all(connection)
     .await?;
     rows.into_iter().map(StatementRow::try_from).collect()
 }
 
-/// Segments that an upload speaks of, in ascending order.
+/// A segment that an upload speaks of, and how much working on it takes.
+#[derive(Clone, Copy, Debug)]
+pub struct Weighed {
+    /// The segment.
+    pub segment_id: i64,
+    /// Periods to hold in memory: those that it spans now or with this upload, once for each state and
+    /// statement from the release on.
+    pub periods: i64,
+}
+
+/// Segments that an upload speaks of, in ascending order, weighed for replaying `later` uploads.
 ///
 /// # Errors
 /// [`Error::Database`].
 pub async fn segments_of_upload(
     connection: &mut PgConnection,
     upload: i64,
-) -> Result<Vec<i64>, Error> {
-    let rows = sqlx::query_scalar!(
-        "SELECT segment_id FROM fragment WHERE upload_id = $1 ORDER BY segment_id",
-        upload
+    released: Date,
+    later: &[i64],
+) -> Result<Vec<Weighed>, Error> {
+    let rows = sqlx::query_as!(
+        Weighed,
+        r#"SELECT f.segment_id,
+             (greatest(f.start_period + octet_length(f.status), v.end_period)
+                 - least(f.start_period, v.start_period))
+             * (2 + (SELECT count(*) FROM vintage w WHERE w.segment_id = f.segment_id AND w.released >= $2)
+                 + (SELECT count(*) FROM fragment o
+                    WHERE o.segment_id = f.segment_id AND o.upload_id = ANY($3))) AS "periods!"
+           FROM fragment f
+           LEFT JOIN LATERAL (
+               SELECT w.start_period, w.start_period + w.observation_count AS end_period FROM vintage w
+               WHERE w.segment_id = f.segment_id ORDER BY w.released DESC, w.revision DESC LIMIT 1
+           ) v ON true
+           WHERE f.upload_id = $1 ORDER BY f.segment_id"#,
+        upload,
+        day(released),
+        later
     )
     .fetch_all(connection)
     .await?;
     Ok(rows)
-}
-
-/// What one upload says about these segments, by segment.
-///
-/// # Errors
-/// [`Error`].
-pub async fn statements_of_upload(
-    connection: &mut PgConnection,
-    upload: i64,
-    segments: &[i64],
-) -> Result<Vec<StatementRow>, Error> {
-    let rows = sqlx::query_as!(
-        FragmentRow,
-        r#"SELECT f.segment_id, f.upload_id, f.start_period, f."values", f.status, f.lines, u.released,
-             s.frequency, u.parameters->>'scope' AS scope
-           FROM fragment f JOIN upload u ON u.id = f.upload_id
-           JOIN segment g ON g.id = f.segment_id JOIN series s ON s.id = g.series_id
-           WHERE f.upload_id = $1 AND f.segment_id = ANY($2) ORDER BY f.segment_id"#,
-        upload,
-        segments
-    )
-    .fetch_all(connection)
-    .await?;
-    rows.into_iter().map(StatementRow::try_from).collect()
 }
 
 struct FragmentRow {

@@ -108,7 +108,9 @@ impl<'a> Equation<'a> {
     fn covariance(&self) -> &Matrix {
         match self.chosen {
             CovarianceKind::Classical => &self.classical,
-            CovarianceKind::NeweyWest { .. } => &self.newey_west,
+            CovarianceKind::NeweyWest { .. }
+            | CovarianceKind::Robust(_)
+            | CovarianceKind::Kernel { .. } => &self.newey_west,
         }
     }
 
@@ -154,7 +156,9 @@ impl<'a> Equation<'a> {
             coefficients: coefficients.collect(),
             covariance: match self.chosen {
                 CovarianceKind::Classical => Covariance::Classical,
-                CovarianceKind::NeweyWest { .. } => Covariance::NeweyWest,
+                CovarianceKind::NeweyWest { .. }
+                | CovarianceKind::Robust(_)
+                | CovarianceKind::Kernel { .. } => Covariance::NeweyWest,
             },
             lags: small(self.lags),
             small_sample: self.small_sample,
@@ -176,9 +180,20 @@ fn explain(error: &EstimateError, estimator: Estimator, pointer: &str) -> Findin
         EstimateError::TooManyLags { .. } => {
             Finding::error("too_many_lags", message).at_pointer("/lags")
         }
+        // Least squares of aligned series fails in no other way.
         EstimateError::TooFewObservations { .. }
         | EstimateError::NotFinite
-        | EstimateError::SampleDiffers { .. } => {
+        | EstimateError::SampleDiffers { .. }
+        | EstimateError::Missing { .. }
+        | EstimateError::Constant { .. }
+        | EstimateError::TooShort { .. }
+        | EstimateError::Explosive { .. }
+        | EstimateError::Underidentified { .. }
+        | EstimateError::UnknownRegressor { .. }
+        | EstimateError::RedundantRestriction { .. }
+        | EstimateError::Setting { .. }
+        | EstimateError::SingularCovariance { .. }
+        | EstimateError::NoConvergence { .. } => {
             Finding::error("too_few_observations", message).at_pointer(pointer)
         }
     }

@@ -23,14 +23,14 @@ fn twelve_countries_of_the_penn_world_table() {
     let document = parse(&value);
     for (area, country) in countries.as_object().unwrap() {
         let mut inputs = Inputs::new();
-        // The file's relative prices are the other way up: Rm = 1/rpm, Rx = 1/rpx.
+        // The file's import relative price is the other way up: Rm = 1/rpm, but Rx = rpx.
         for (name, measure, sign) in [
             ("ln_m", "imports_real", 1.0),
             ("ln_y", "gdp_real", 1.0),
             ("ln_rpm", "import_relative_price", -1.0),
             ("ln_x", "exports_real", 1.0),
             ("ln_z", "foreign_income", 1.0),
-            ("ln_rpx", "export_relative_price", -1.0),
+            ("ln_rpx", "export_relative_price", 1.0),
         ] {
             let values = numbers(&country["series"][name]);
             let levels = values.iter().map(|v| (sign * v).exp()).collect();
@@ -52,7 +52,7 @@ fn twelve_countries_of_the_penn_world_table() {
         let rm = outcome.growth.import_relative_price.unwrap();
         close(rm / 100.0, -mean("ln_rpm_mean_dlog"), area);
         let rx = outcome.growth.export_relative_price.unwrap();
-        close(rx / 100.0, -mean("ln_rpx_mean_dlog"), area);
+        close(rx / 100.0, mean("ln_rpx_mean_dlog"), area);
 
         for (result, name) in outcome.estimators.iter().zip(["levels", "dlog"]) {
             let estimates = &bop["estimates"][name];
@@ -70,7 +70,7 @@ fn twelve_countries_of_the_penn_world_table() {
                 wanted("eps_se"),
                 &what,
             );
-            // psi = −η and eta = +η* in the file.
+            // psi = −η and eta = −η* in the file.
             close(
                 result.import_price_elasticity.unwrap().value,
                 -wanted("psi"),
@@ -78,15 +78,15 @@ fn twelve_countries_of_the_penn_world_table() {
             );
             close(
                 result.export_price_elasticity.unwrap().value,
-                wanted("eta"),
+                -wanted("eta"),
                 &what,
             );
-            for (found, side) in [
-                (&result.import_demand, "import"),
-                (&result.export_demand, "export"),
+            for (found, side, price_sign) in [
+                (&result.import_demand, "import", -1.0),
+                (&result.export_demand, "export", 1.0),
             ] {
                 let equation = &country[format!("{side}_{name}")];
-                check_equation(found, equation, &format!("{what} {side}"));
+                check_equation(found, equation, price_sign, &format!("{what} {side}"));
             }
             for (i, key) in [(0, "yb_weak"), (2, "yb_strong"), (3, "yb_relative_prices")] {
                 let form = &result.forms[i];
@@ -106,7 +106,8 @@ fn twelve_countries_of_the_penn_world_table() {
     }
 }
 
-fn check_equation(found: &EquationResult, wanted: &Value, what: &str) {
+/// `price_sign` is −1 where the file's relative price is the other way up: its coefficient has the other sign.
+fn check_equation(found: &EquationResult, wanted: &Value, price_sign: f64, what: &str) {
     let value = |key: &str| wanted[key].as_f64().unwrap();
     assert_eq!(
         Some(u64::from(found.observations)),
@@ -122,8 +123,7 @@ fn check_equation(found: &EquationResult, wanted: &Value, what: &str) {
     close(found.durbin_watson.unwrap(), value("durbin_watson"), what);
     close(found.residual_std_dev, value("s2").sqrt(), what);
     for (j, coefficient) in found.coefficients.iter().enumerate() {
-        // The relative prices are the other way up; with them nothing but their own sign changes.
-        let sign = if j == 2 { -1.0 } else { 1.0 };
+        let sign = if j == 2 { price_sign } else { 1.0 };
         close(
             coefficient.estimate,
             sign * numbers(&wanted["params"])[j],

@@ -2,8 +2,24 @@
 
 #![expect(clippy::unwrap_used, reason = "a failed unwrap is a failed test")]
 
+mod access;
 mod architecture;
+mod bulk;
 mod cluster;
 mod command;
+mod contract;
+mod conventions;
+mod demo;
+mod ending;
+mod held;
+mod hostile;
+mod kill;
+mod open_data;
+mod reading;
+mod readme;
+mod representations;
+mod storing;
 mod support;
 mod uploads;
+mod vintages;
+mod wrong_input;

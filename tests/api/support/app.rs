@@ -1,22 +1,29 @@
 //! The service as tests see it: the same application that `serve` runs, on a port and a database of its
 //! own. Every answer is checked against the `OpenAPI` document.
 
+use std::collections::BTreeSet;
+use std::io::Read as _;
 use std::net::{Ipv4Addr, SocketAddr};
+use std::sync::Mutex;
 
 use realterms::config::Settings;
 use realterms::http::Application;
-use realterms::service::tokens::{self, Role};
+use realterms::service::tokens::Role;
 use reqwest::Method;
 use reqwest::header::HeaderMap;
 use serde_json::Value;
 
-use super::contract;
+use super::contract::{self, Met};
 use super::db::TestDb;
+use super::wire::Wire;
 
 /// A running service; its database goes with it.
 pub(crate) struct TestApp {
     pub(crate) base: String,
     pub(crate) db: TestDb,
+    pub(crate) address: SocketAddr,
+    /// The parts of the `OpenAPI` document that answers of this service have met.
+    pub(crate) met: Mutex<BTreeSet<Met>>,
     client: reqwest::Client,
     server: tokio::task::JoinHandle<anyhow::Result<()>>,
     handle: actix_web::dev::ServerHandle,
@@ -32,14 +39,40 @@ pub(crate) struct Answer {
 }
 
 impl Answer {
+    /// Reads a response to its end.
+    pub(crate) async fn of(response: reqwest::Response) -> Self {
+        Self {
+            status: response.status().as_u16(),
+            headers: response.headers().clone(),
+            bytes: response
+                .bytes()
+                .await
+                .expect("the body comes whole")
+                .to_vec(),
+        }
+    }
+
+    /// The body without its coding.
+    pub(crate) fn plain(&self) -> Vec<u8> {
+        let Some(coding) = self.header("content-encoding") else {
+            return self.bytes.clone();
+        };
+        assert_eq!(coding, "gzip");
+        let mut plain = Vec::new();
+        flate2::read::GzDecoder::new(self.bytes.as_slice())
+            .read_to_end(&mut plain)
+            .expect("the body is gzip");
+        plain
+    }
+
     /// The body as text.
     pub(crate) fn text(&self) -> String {
-        String::from_utf8(self.bytes.clone()).expect("the body is text")
+        String::from_utf8(self.plain()).expect("the body is text")
     }
 
     /// The body as JSON; `null` where it is none.
     pub(crate) fn json(&self) -> Value {
-        serde_json::from_slice(&self.bytes).unwrap_or(Value::Null)
+        serde_json::from_slice(&self.plain()).unwrap_or(Value::Null)
     }
 
     /// A value inside the body, by JSON pointer.
@@ -47,19 +80,28 @@ impl Answer {
         self.json().pointer(pointer).cloned().unwrap_or(Value::Null)
     }
 
+    /// The one error of a problem.
+    #[track_caller]
+    pub(crate) fn error(&self) -> Value {
+        let errors = self.at("/errors");
+        let errors = errors.as_array().expect("a list");
+        assert_eq!(errors.len(), 1, "{errors:?}");
+        errors[0].clone()
+    }
+
     /// A header as text.
     pub(crate) fn header(&self, name: &str) -> Option<&str> {
         self.headers.get(name).and_then(|v| v.to_str().ok())
     }
 
-    /// Fails unless the status is this one, showing the body.
+    /// Fails unless the status is this one, showing the beginning of the body.
     #[track_caller]
     pub(crate) fn expect(self, status: u16) -> Self {
         assert_eq!(
             self.status,
             status,
             "{}",
-            String::from_utf8_lossy(&self.bytes)
+            String::from_utf8_lossy(&self.bytes[..self.bytes.len().min(2000)])
         );
         self
     }
@@ -73,19 +115,29 @@ impl TestApp {
 
     /// Starts the service with changed settings.
     pub(crate) async fn start_with(change: impl FnOnce(&mut Settings)) -> Self {
-        let db = TestDb::create();
+        Self::start_on(TestDb::create(), change).await
+    }
+
+    /// Starts the service with changed settings on a database that the test has prepared.
+    pub(crate) async fn start_on(db: TestDb, change: impl FnOnce(&mut Settings)) -> Self {
         let mut settings = Settings {
             listen: SocketAddr::from((Ipv4Addr::LOCALHOST, 0)),
             ..Settings::default()
         };
         settings.workers = std::num::NonZeroUsize::new(1);
         change(&mut settings);
-        let application = Application::build(&settings, db.open().await)
+        let application = Application::build(settings.serving(), db.open().await)
             .await
             .expect("the service starts");
+        let mut address = application.address();
+        if address.ip().is_unspecified() {
+            address.set_ip(Ipv4Addr::LOCALHOST.into());
+        }
         Self {
-            base: format!("http://{}", application.address()),
+            base: format!("http://{address}"),
             db,
+            address,
+            met: Mutex::default(),
             client: reqwest::Client::builder()
                 .no_proxy()
                 .build()
@@ -98,13 +150,7 @@ impl TestApp {
 
     /// Makes a token and uses it from now on.
     pub(crate) async fn token(&mut self, name: &str, role: Role) -> String {
-        let database = self.db.open().await;
-        let mut random = [0; 24];
-        random[..name.len().min(24)].copy_from_slice(&name.as_bytes()[..name.len().min(24)]);
-        let secret = tokens::create(&database, name, role, random)
-            .await
-            .expect("the name is free");
-        database.close().await;
+        let secret = self.db.token(name, role).await;
         self.token = Some(secret.clone());
         secret
     }
@@ -162,18 +208,25 @@ impl TestApp {
         if let Some(body) = body {
             request = request.body(body);
         }
-        let response = request.send().await.expect("the service answers");
-        let answer = Answer {
-            status: response.status().as_u16(),
-            headers: response.headers().clone(),
-            bytes: response
-                .bytes()
-                .await
-                .expect("the body comes whole")
-                .to_vec(),
-        };
-        contract::check(&method, path, headers, sent.as_deref(), &answer);
+        let answer = Answer::of(request.send().await.expect("the service answers")).await;
+        let met = contract::check(&method, path, headers, sent.as_deref(), &answer);
+        self.met.lock().expect("no panic").extend(met);
         answer
+    }
+
+    /// Begins a request on a connection of its own, to be written and read by hand: the head goes out.
+    pub(crate) async fn wire(
+        &self,
+        method: Method,
+        path: &str,
+        headers: &[(&str, &str)],
+    ) -> Wire<'_> {
+        Wire::open(self, method, path, headers).await
+    }
+
+    /// Asks the service to stop; ready when it has.
+    pub(crate) fn begin_stop(&self) -> impl Future<Output = ()> + use<> {
+        self.handle.stop(true)
     }
 
     /// Values of a series by period, as the service answers them.

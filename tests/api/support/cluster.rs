@@ -6,7 +6,9 @@
 use nix::sys::signal::{Signal, kill};
 use nix::unistd::{Pid, User, geteuid};
 use realterms::config::Settings;
-use realterms::store::cluster::{Cluster, ClusterOptions, fresh_folder};
+use realterms::store::cluster::{Cluster, ClusterOptions, SUPERUSER, fresh_folder};
+use sqlx::postgres::{PgConnectOptions, PgSslMode};
+use sqlx::{Connection, PgConnection};
 use std::io::{BufRead, BufReader};
 use std::os::unix::fs::{PermissionsExt, chown};
 use std::os::unix::process::CommandExt;
@@ -128,15 +130,23 @@ impl Place {
         }
     }
 
-    /// The processes that name the data folder, as (number, command).
+    /// A folder below, to which all users may write, for what is temporary.
+    pub(crate) fn temp(&self) -> PathBuf {
+        let temp = self.root.join("t");
+        let _ = std::fs::create_dir(&temp);
+        std::fs::set_permissions(&temp, PermissionsExt::from_mode(0o1777)).expect("it is ours");
+        temp
+    }
+
+    /// The processes that name the folder: of the program, of the server but for its backends, as (number, command).
     pub(crate) fn processes(&self) -> Vec<(i32, String)> {
-        let data = self.data().display().to_string();
+        let root = format!("{}/", self.root.display());
         let mut all = processes();
-        all.retain(|(_, command)| command.contains(&data));
+        all.retain(|(_, command)| command.contains(&root));
         all
     }
 
-    /// The one process that names the data folder and this text.
+    /// The one process that names the folder and this text.
     pub(crate) fn process(&self, text: &str) -> i32 {
         let mut all = self.processes();
         all.retain(|(_, command)| command.contains(text));
@@ -150,6 +160,42 @@ impl Place {
 
     pub(crate) fn keeper(&self) -> i32 {
         self.process("keep-cluster")
+    }
+
+    /// The name that the running server's backends carry in their titles.
+    pub(crate) fn cluster_name(&self) -> String {
+        let all = self.processes();
+        let mut names = all
+            .iter()
+            .filter_map(|(_, command)| command.split("cluster_name=").nth(1)?.split(' ').next());
+        names.next_back().expect("a server runs").to_owned()
+    }
+
+    /// Waits until nothing of the place runs, nor a backend of its server of this name.
+    pub(crate) fn wait_for_the_end(&self, cluster_name: &str) {
+        let backend = format!("postgres: {cluster_name}:");
+        wait_until("everything ends", || {
+            self.processes().is_empty() && !processes().iter().any(|(_, c)| c.starts_with(&backend))
+        });
+    }
+
+    /// Connects to the server of the data folder, waiting while it starts.
+    pub(crate) async fn connect(&self) -> PgConnection {
+        let file = self.data().join("postgres/postmaster.pid");
+        for _ in 0..600 {
+            let text = std::fs::read_to_string(&file).unwrap_or_default();
+            let options = PgConnectOptions::new_without_pgpass()
+                .ssl_mode(PgSslMode::Disable)
+                .socket(text.lines().nth(4).unwrap_or_default())
+                .username(SUPERUSER)
+                .database(SUPERUSER)
+                .options([("search_path", "realterms")]);
+            if let Ok(connection) = PgConnection::connect_with(&options).await {
+                return connection;
+            }
+            tokio::time::sleep(Duration::from_millis(50)).await;
+        }
+        panic!("no server in {} within 30 s", self.data().display());
     }
 }
 

@@ -1,6 +1,7 @@
 //! A database of its own for each test, cloned from a template that has the migrations.
 
 use super::cluster;
+use realterms::service::tokens::{self, Role};
 use realterms::store::cluster::SUPERUSER;
 use realterms::store::{Database, DatabaseOptions, Place, migrations_digest};
 use sqlx::postgres::{PgConnectOptions, PgSslMode};
@@ -33,6 +34,29 @@ impl TestDb {
     /// Opens it as the service does.
     pub(crate) async fn open(&self) -> Database {
         open(&self.options()).await
+    }
+
+    /// Makes a token in it.
+    pub(crate) async fn token(&self, name: &str, role: Role) -> String {
+        let database = self.open().await;
+        let mut random = [0; 24];
+        for (to, from) in random.iter_mut().zip(name.bytes()) {
+            *to = from;
+        }
+        let secret = tokens::create(&database, name, role, random)
+            .await
+            .expect("the name is free");
+        database.close().await;
+        secret
+    }
+
+    /// Ends all connections and takes no more.
+    pub(crate) fn refuse(&self) {
+        let name = &self.name;
+        maintain(&format!("ALTER DATABASE {name} ALLOW_CONNECTIONS false"));
+        maintain(&format!(
+            "SELECT pg_terminate_backend(pid) FROM pg_stat_activity WHERE datname = '{name}'"
+        ));
     }
 }
 
@@ -67,7 +91,7 @@ fn options(name: &str) -> DatabaseOptions {
             "postgres://{SUPERUSER}@{sockets}:{port}/{name}?sslmode=disable"
         )),
         connections: 4,
-        upload_connections: 2,
+        upload_connections: 8,
     }
 }
 

@@ -4,3 +4,6 @@ pub(crate) mod app;
 pub(crate) mod cluster;
 pub(crate) mod contract;
 pub(crate) mod db;
+pub(crate) mod program;
+pub(crate) mod sample;
+pub(crate) mod wire;
