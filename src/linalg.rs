@@ -5,6 +5,11 @@
 
 use nalgebra::{DMatrix, DVector, RowDVector};
 
+pub mod decompose;
+mod projector;
+
+pub use projector::{Projector, product};
+
 /// A dense matrix of doubles.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Matrix(DMatrix<f64>);

@@ -6,21 +6,33 @@
 //! Stability: [`recursive_residuals`] and the sums of them, [`chow`], [`unknown_break`],
 //! [`hansen_1992()`], [`rolling`].
 
+mod ardl;
 mod autoregressive;
+mod blocks;
+mod bounds_null;
 mod breaks;
+mod cointegrating_regression;
+mod cointegration;
 mod covariance;
 mod criteria;
 mod deterministic;
 mod diagnostics;
+mod dummies;
 mod durbin_watson;
 mod hansen_1992;
 mod instrumental;
 mod kernel;
+mod long_run;
 mod ols;
 mod outcome;
+mod product_form;
 mod recursive;
 mod restriction;
+mod series_error;
+mod simulation;
 mod system;
+mod system_bootstrap;
+mod unit_root;
 mod weak_instruments;
 mod weighted;
 
@@ -29,25 +41,42 @@ mod recomputed_tests;
 #[cfg(test)]
 mod reference_tests;
 #[cfg(test)]
+mod simulation_tests;
+#[cfg(test)]
 mod systems_tests;
+#[cfg(test)]
+mod test_data;
 
+pub use ardl::{
+    Ardl, ArdlData, ArdlOrders, BoundsCase, BoundsStatistics, Candidate, InformationCriterion,
+    LevelRelation, LongRunCoefficient, Multipliers, Selection, select_orders,
+};
 pub use autoregressive::{Autoregressive, FirstObservation, autoregressive};
+pub use blocks::{BlockLength, Blocks, automatic_block_length};
+pub use bounds_null::{BoundsDesign, BoundsNull, simulate_unit_root};
 pub use breaks::{UnknownBreak, chow, unknown_break};
+pub use cointegrating_regression::{Dols, DolsCovariance, Fmols, dols, fmols};
+pub use cointegration::{
+    EngleGranger, Johansen, JohansenCase, LikelihoodRatio, RankTest, Vecm, engle_granger, johansen,
+};
 pub use covariance::{CovarianceKind, Hc, covariance};
 pub use criteria::{Criteria, criteria};
+pub use deterministic::Deterministic;
 pub use diagnostics::{
     AuxiliaryTest, Diagnostics, arch, breusch_godfrey, breusch_pagan, breusch_pagan_studentised,
     diagnose, jarque_bera, ljung_box, reset, white,
 };
 pub use durbin_watson::{DurbinWatson, DurbinWatsonBounds, durbin_watson, durbin_watson_bounds};
 pub use hansen_1992::{
-    CointegratingScores, Deterministic, Instability, InstabilityTest, hansen_1992, instability,
-    instability_null,
+    CointegratingScores, Deterministic as ScoreDeterministic, Instability, InstabilityTest,
+    hansen_1992, instability, instability_null,
 };
 pub use instrumental::{InstrumentedEquation, Overidentification, TwoStage, two_stage};
 pub use kernel::{BandwidthRule, Kernel, bandwidth, rule_of_thumb_lags};
+pub use long_run::{LongRunCovariance, automatic_lags, long_run_covariance, long_run_variance};
 pub use ols::{Ols, Regressor};
 pub use outcome::{Distribution, TestResult};
+pub use product_form::{ProductCoefficients, ProductForm, ProductGrowth, ProductRatio};
 pub use recursive::{
     Cusum, RecursiveResiduals, Window, cusum_of_squares, cusum_ols, cusum_recursive, recursive,
     recursive_residuals, rolling,
@@ -55,7 +84,11 @@ pub use recursive::{
 pub use restriction::{
     LinearTest, Restricted, Restriction, likelihood_ratio, restricted, test_linear,
 };
+pub use series_error::SeriesError;
+pub use simulation::{NoStore, NullDistribution, Simulation, SimulationStore, replicate, simulate};
 pub use system::{System, SystemEquation, seemingly_unrelated};
+pub use system_bootstrap::{Replicate, SystemBootstrap};
+pub use unit_root::*;
 pub use weak_instruments::{ConfidenceSet, EffectiveF, anderson_rubin, effective_f};
 pub use weighted::{Weighted, weighted};
 

@@ -1,0 +1,14 @@
+//! Cointegration: Engle–Granger, Johansen, and the vector error-correction model.
+
+mod engle_granger;
+mod hypotheses;
+mod johansen;
+mod vecm;
+
+#[cfg(test)]
+mod tests;
+
+pub use engle_granger::{EngleGranger, engle_granger};
+pub use hypotheses::LikelihoodRatio;
+pub use johansen::{Johansen, JohansenCase, RankTest, johansen};
+pub use vecm::Vecm;
