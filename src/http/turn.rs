@@ -42,7 +42,7 @@ impl MessageBody for OneTurnMore {
                 context.waker().wake_by_ref();
                 Poll::Pending
             }
-            other => other,
+            answer @ (Poll::Ready(_) | Poll::Pending) => answer,
         }
     }
 }
