@@ -121,7 +121,7 @@ mod tests {
 
     #[test]
     fn factors_reproduce_the_matrix() {
-        let a = Matrix::from_fn(5, 3, |i, j| ((i * 3 + j * 5) as f64).sin());
+        let a = Matrix::from_fn(5, 3, |i, j| ((i * 3 + j * 5 + i * i * j) as f64).sin());
         let qr = thin_qr(&a).unwrap();
         let back = qr.q.times(&qr.r);
         let svd = singular(&a).unwrap();

@@ -125,7 +125,8 @@ mod tests {
     use crate::linalg::least_squares;
 
     fn waves(rows: usize, count: usize) -> Vec<Vec<f64>> {
-        let value = |i: usize, j: usize| ((i * 7 + j * 13) as f64 * 0.37).sin() + i as f64;
+        let value =
+            |i: usize, j: usize| ((i * 7 + j * 13 + i * i * j) as f64 * 0.37).sin() + i as f64;
         (0..count)
             .map(|j| (0..rows).map(|i| value(i, j)).collect())
             .collect()
