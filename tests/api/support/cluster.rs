@@ -68,8 +68,12 @@ impl Place {
         let root = fresh_folder(&std::env::temp_dir()).expect("the temp folder takes a folder");
         std::fs::set_permissions(&root, PermissionsExt::from_mode(0o755)).expect("it is ours");
         let root = root.canonicalize().expect("it is there");
-        std::fs::copy(env!("CARGO_BIN_EXE_realterms"), root.join("realterms"))
-            .expect("the program can be copied");
+        // By another process: a descriptor open for writing here would be inherited by whatever other
+        // tests start meanwhile, and the copy could not be run ("text file busy").
+        let mut copy = Command::new("cp");
+        copy.arg(env!("CARGO_BIN_EXE_realterms"))
+            .arg(root.join("realterms"));
+        assert!(copy.status().expect("cp runs").success(), "the copy");
         if let Some(user) = &user.0 {
             chown(&root, Some(user.uid.as_raw()), Some(user.gid.as_raw())).expect("we are root");
         }
