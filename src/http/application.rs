@@ -261,7 +261,12 @@ async fn admit(
             .with_header("WWW-Authenticate", "Bearer realm=\"realterms\""))
     };
     match shared.gate.admit(&shared.database, bearer).await? {
-        Admission::Admitted(principal) if principal.role >= role => Ok(principal),
+        Admission::Admitted(principal) if principal.role >= role => {
+            if bearer.is_none() {
+                refuse_foreign_page(request)?;
+            }
+            Ok(principal)
+        }
         Admission::Admitted(principal) => Err(Problem::new(
             StatusCode::FORBIDDEN,
             "role_too_low",
@@ -280,6 +285,47 @@ async fn admit(
             unauthorised("token_unknown", "the token is not known or was revoked")
         }
     }
+}
+
+/// Without tokens nothing but the address guards the service, and a browser on the same machine reaches
+/// it: a page from elsewhere may send a form here, and its own name may be made to mean this address.
+/// Browsers state the page's origin, which then differs from the host asked for, or ask for a host that
+/// is no loopback name.
+fn refuse_foreign_page(request: &HttpRequest) -> Result<(), Problem> {
+    let header = |name: &str| request.headers().get(name).and_then(|v| v.to_str().ok());
+    let Some(host) = header("Host") else {
+        return Ok(());
+    };
+    let name = host.rsplit_once(':').map_or(host, |(name, port)| {
+        if port.bytes().all(|b| b.is_ascii_digit()) {
+            name
+        } else {
+            host
+        }
+    });
+    let local = name.eq_ignore_ascii_case("localhost")
+        || name
+            .trim_matches(['[', ']'])
+            .parse::<std::net::IpAddr>()
+            .is_ok_and(|ip| ip.is_loopback());
+    let same = header("Origin")
+        .is_none_or(|origin| origin.split_once("://").is_some_and(|(_, at)| at == host));
+    if local && same {
+        return Ok(());
+    }
+    let (what, found) = if same {
+        ("asks for the host", host)
+    } else {
+        ("comes from a page of", header("Origin").unwrap_or_default())
+    };
+    Err(Problem::new(
+        StatusCode::FORBIDDEN,
+        "foreign_page",
+        format!(
+            "the request {what} {found}; without a token only programs of this machine are answered: \
+             make one with realterms token create and send it"
+        ),
+    ))
 }
 
 /// Numbers, logs and completes an answer.

@@ -74,6 +74,35 @@ async fn every_operation_asks_for_its_role() {
 }
 
 #[tokio::test]
+async fn an_open_service_answers_no_page_from_elsewhere() {
+    let mut app = TestApp::start().await;
+    let home = app.address.to_string();
+    let own = format!("http://{home}");
+    for (headers, status) in [
+        (vec![("Origin", own.as_str())], 200),
+        (vec![("Host", "localhost:1")], 200),
+        (vec![("Host", "[::1]")], 200),
+        (vec![("Origin", "https://page.example")], 403),
+        (vec![("Origin", "null")], 403),
+        (vec![("Host", "page.example:8640")], 403),
+        (vec![("Host", "127.0.0.1.page.example")], 403),
+    ] {
+        let answer = app.send(Method::GET, "/v1/kinds", &headers, None).await;
+        let answer = answer.expect(status);
+        if status == 403 {
+            assert_eq!(answer.at("/code"), "foreign_page");
+        }
+    }
+    let secret = app.token("program", Role::Read).await;
+    app.use_token(Some(&secret));
+    let sent = [("Host", "realterms.example")];
+    app.send(Method::GET, "/v1/kinds", &sent, None)
+        .await
+        .expect(200);
+    app.stop().await;
+}
+
+#[tokio::test]
 async fn the_name_of_the_token_is_the_author() {
     let mut app = TestApp::start().await;
     app.token("statistics office", Role::Contribute).await;
