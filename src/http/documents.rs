@@ -43,6 +43,12 @@ fn version_parameters() -> Vec<Parameter> {
     )]
 }
 
+fn run_parameters() -> Vec<Parameter> {
+    let mut parameters = version_parameters();
+    parameters.extend(moment_parameters());
+    parameters
+}
+
 fn run_text_parameters() -> Vec<Parameter> {
     vec![
         optional("format", Form::OneOf(vec!["json", "text"]), "json or text"),
@@ -65,7 +71,7 @@ fn put_successes() -> Vec<Success> {
 
 /// The routes that both kinds of documents share.
 macro_rules! document_routes {
-    ($kind:expr, $base:literal, $plural:literal, $singular:literal, $put:path) => {
+    ($kind:expr, $base:literal, $plural:literal, $singular:literal) => {
         vec![
             Route {
                 method: Method::Get,
@@ -102,8 +108,9 @@ macro_rules! document_routes {
                         let mut call = call;
                         let body = call.document().await?;
                         let precondition = precondition(&call)?;
-                        let (view, created) = $put(
+                        let (view, created) = documents::put(
                             &call.shared.database,
+                            $kind,
                             call.segment("name"),
                             &body,
                             &precondition,
@@ -194,15 +201,13 @@ pub(super) fn routes() -> Vec<Route> {
         DocumentKind::Preparation,
         "/v1/preparations",
         "preparations",
-        "preparation",
-        preparations::put
+        "preparation"
     );
     routes.extend(document_routes!(
         DocumentKind::Study,
         "/v1/studies",
         "studies",
-        "study",
-        studies::put
+        "study"
     ));
     routes.extend([
         Route {
@@ -229,7 +234,7 @@ pub(super) fn routes() -> Vec<Route> {
             name: "run_preparation",
             summary: "Evaluate a preparation and store its outputs as series with lineage",
             role: Some(Role::Contribute),
-            parameters: moment_parameters,
+            parameters: run_parameters,
             headers: &[],
             body: &[],
             successes: || vec![json::<PreparationRun>(201, "the run").header("Location")],
@@ -238,7 +243,9 @@ pub(super) fn routes() -> Vec<Route> {
                 Box::pin(async move {
                     let (database, name) = (&call.shared.database, call.segment("name"));
                     let author = &call.principal.name;
-                    let run = preparations::run(database, name, &moment(&call), author).await?;
+                    let version = call.integer("version");
+                    let moment = moment(&call);
+                    let run = preparations::run(database, name, version, &moment, author).await?;
                     let mut response = call.json(StatusCode::CREATED, &run)?;
                     location(
                         &mut response,
@@ -275,7 +282,7 @@ pub(super) fn routes() -> Vec<Route> {
             summary: "Estimate demand and the growth that the balance of payments allows",
             role: Some(Role::Contribute),
             parameters: || {
-                let mut parameters = moment_parameters();
+                let mut parameters = run_parameters();
                 parameters.extend(run_text_parameters());
                 parameters
             },
@@ -294,7 +301,9 @@ pub(super) fn routes() -> Vec<Route> {
                     let media = call.media(&[Media::Json, Media::Text])?;
                     let (database, name) = (&call.shared.database, call.segment("name"));
                     let author = &call.principal.name;
-                    let run = studies::run(database, name, &moment(&call), author).await?;
+                    let version = call.integer("version");
+                    let moment = moment(&call);
+                    let run = studies::run(database, name, version, &moment, author).await?;
                     let mut response = study_run(&call, StatusCode::CREATED, media, &run)?;
                     location(
                         &mut response,

@@ -187,7 +187,9 @@ impl Call {
 
 /// Serializes an answer, with a line end for terminals.
 pub(super) fn to_json<T: Serialize>(value: &T) -> Result<Vec<u8>, Problem> {
-    let mut body = serde_json::to_vec(value).map_err(|e| Problem::internal(e.to_string()))?;
+    // Room for a series of some hundred observations, which is then not moved as it grows.
+    let mut body = Vec::with_capacity(32 * 1024);
+    serde_json::to_writer(&mut body, value).map_err(|e| Problem::internal(e.to_string()))?;
     body.push(b'\n');
     Ok(body)
 }

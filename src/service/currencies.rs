@@ -56,6 +56,7 @@ pub async fn declare(
         }
     }
     let mut transaction = database.begin().await?;
+    store::currency::lock(&mut transaction).await?;
     for row in store::currency::list(&mut transaction).await? {
         if row.code != code.as_str()
             && let Some(area) = row.areas.iter().find(|a| declaration.areas.contains(a))
@@ -117,6 +118,7 @@ pub async fn get(database: &Database, code: &str) -> Result<CurrencyView, Fault>
 /// [`Fault::NotFound`]; [`Fault::Conflict`] while series use it and ISO 4217 does not list it.
 pub async fn delete(database: &Database, code: &str) -> Result<(), Fault> {
     let mut transaction = database.begin().await?;
+    store::currency::lock(&mut transaction).await?;
     let listed = CurrencyCode::parse(code).is_ok_and(is_iso_4217);
     if !listed && store::currency::in_use(&mut transaction, code).await? {
         return Err(Fault::Conflict {

@@ -3,8 +3,8 @@
 use chrono::SecondsFormat;
 use serde::de::DeserializeOwned;
 
-use super::Fault;
 use super::views::{DocumentView, Page, RunLine};
+use super::{Fault, preparations, studies};
 use crate::finding::Finding;
 use crate::preparation;
 use crate::store::document::DocumentRow;
@@ -106,8 +106,11 @@ pub(super) fn refused(code: &'static str, errors: Vec<Finding>) -> Fault {
     }
 }
 
-/// Stores a checked document as a new version; the same text again stays the version it is.
-pub(super) async fn put(
+/// Stores a document as a new version after checking it; the same text again stays the version it is.
+///
+/// # Errors
+/// [`Fault::Invalid`] with JSON pointers; [`Fault::PreconditionFailed`]; [`Fault::Store`].
+pub async fn put(
     database: &Database,
     kind: DocumentKind,
     name: &str,
@@ -116,6 +119,10 @@ pub(super) async fn put(
     author: &str,
 ) -> Result<(DocumentView, bool), Fault> {
     check_name(name)?;
+    match kind {
+        DocumentKind::Preparation => preparations::check(database, body).await?,
+        DocumentKind::Study => studies::check(body)?,
+    }
     let mut transaction = database.begin().await?;
     let highest = store::document::lock(&mut transaction, kind.as_str(), name).await?;
     let current = store::document::newest(&mut transaction, kind.as_str(), name).await?;

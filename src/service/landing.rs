@@ -8,17 +8,22 @@
 
 use std::collections::{BTreeMap, BTreeSet, HashMap};
 use std::ops::Range;
+use std::sync::Arc;
 
 use super::views::{ObservationCounts, SeriesList};
-use super::{Fault, groups};
+use super::{Fault, blocking, groups};
 use crate::finding::Finding;
 use crate::series::screening;
 use crate::series::vintage::{Changes, State, difference, merge};
 use crate::store::change::{self, Action, Revision};
-use crate::store::series::StoredSegment;
-use crate::store::vintage::{NewVintage, StatementRow, VintageRow};
+use crate::store::fragment::StatementRow;
+use crate::store::series::{Populated, StoredSegment};
+use crate::store::vintage::{NewVintage, Said, VintageRow};
 use crate::store::{self, Connection};
 use crate::time::Date;
+
+/// Periods of vintages that wait to be written, some 10 bytes each.
+const PENDING_PERIODS: usize = 8_000_000;
 
 /// What landing an upload did, or would do.
 #[derive(Debug, Default)]
@@ -38,7 +43,8 @@ pub(super) struct Landing {
 const SHOWN_FINDINGS: usize = 100;
 
 /// Applies the stored fragments of an upload to their segments and writes the vintages that result.
-/// Findings of severity error are for the caller to act on: it rolls back to hold the upload.
+/// Findings of severity error are for the caller to act on: it rolls back to hold the upload. The caller
+/// has locked the series.
 pub(super) async fn land(
     connection: &mut Connection,
     upload: i64,
@@ -46,76 +52,91 @@ pub(super) async fn land(
     action: Action,
     author: &str,
 ) -> Result<Landing, Fault> {
-    store::series::lock_of_upload(connection, upload).await?;
     let after = next_day(released);
     let later = store::upload::landed_from(connection, after).await?;
     let (segments, batches) = segments(connection, upload, after, &later).await?;
-    let populated = store::series::populated_segments(connection, &segments).await?;
-    let revision = change::draw(connection, action, Some(upload), None, author).await?;
-    let mut landing = Landing {
-        revision: Some(revision.number),
-        ..Landing::default()
-    };
+    let populated = Arc::new(store::series::populated_segments(connection, &segments).await?);
+    let mut writer = Writer::new(action, upload, author);
+    let mut landing = Landing::default();
     let mut created: BTreeSet<i64> = BTreeSet::new();
     for batch in batches {
         let batch = &segments[batch];
-        let statements = store::vintage::statements(connection, &[upload], batch).await?;
-        let stored = by_id(store::series::segments_by_id(connection, batch).await?);
-        let mut bases = one_each(
-            store::vintage::visible_before(connection, batch, after).await?,
-            &stored,
-        )?;
-        let mut visible = dated(
-            store::vintage::visible_from(connection, batch, after).await?,
-            &stored,
-        )?;
-        let replayed = replayed(connection, &later, batch).await?;
-        let mut vintages = Vec::new();
-        for row in statements {
-            let Some(segment) = stored.get(&row.segment_id) else {
-                return Err(Fault::Internal(format!(
-                    "segment {} vanished",
-                    row.segment_id
-                )));
-            };
-            let base = bases.remove(&row.segment_id);
-            if let Some(base) = &base
-                && let Some(finding) = screening::level_ratio(base, &row.statement)
-            {
-                if landing.findings.len() < SHOWN_FINDINGS {
-                    landing.findings.push(finding.at_series(&segment.key));
-                } else {
-                    landing.more_findings += 1;
-                }
-            }
-            let (state, changes) = merge(base.as_ref(), &row.statement);
-            landing.count(changes);
-            if !populated.segments.contains(&row.segment_id) {
-                if populated.series.contains(&segment.series_id) {
-                    landing.opened.push(segment.clone());
-                } else if created.insert(segment.series_id) {
-                    landing.series_created.add(&segment.key);
-                }
-            }
-            if changes.any() {
-                landing.series_changed.add(&segment.key);
-                let rest = replayed.get(&row.segment_id).map_or(&[][..], Vec::as_slice);
-                let visible = visible.remove(&row.segment_id).unwrap_or_default();
-                replay_onto(Some(&state), rest, visible, &mut vintages, row.segment_id);
-                vintages.push(NewVintage {
-                    segment_id: row.segment_id,
-                    released,
-                    state,
-                    changes,
-                });
-            }
-        }
-        store::vintage::insert(connection, revision.number, &vintages).await?;
+        let statements = store::fragment::statements(connection, &[upload], batch).await?;
+        let material = Material::load(connection, batch, after, &later).await?;
+        let populated = Arc::clone(&populated);
+        let vintages;
+        (landing, created, vintages) = blocking(move || {
+            let (mut landing, mut created) = (landing, created);
+            let vintages =
+                landing.apply(released, statements, material, &populated, &mut created)?;
+            Ok::<_, Fault>((landing, created, vintages))
+        })
+        .await??;
+        writer.add(connection, vintages).await?;
     }
+    landing.revision = Some(writer.finish(connection).await?.number);
     Ok(landing)
 }
 
 impl Landing {
+    /// Merges statements released on a date into what their segments hold.
+    fn apply(
+        &mut self,
+        released: Date,
+        statements: Vec<StatementRow>,
+        mut material: Material,
+        populated: &Populated,
+        created: &mut BTreeSet<i64>,
+    ) -> Result<Vec<NewVintage>, Fault> {
+        let mut vintages = Vec::new();
+        for row in statements {
+            let id = row.segment_id;
+            let segment = material
+                .stored
+                .remove(&id)
+                .ok_or_else(|| Fault::Internal(format!("segment {id} vanished")))?;
+            let base = material.bases.remove(&id);
+            let visible = material.visible.remove(&id).unwrap_or_default();
+            // An older release loaded late is judged by the oldest state that follows it.
+            let known = base.as_ref().or_else(|| visible.values().next());
+            if let Some(known) = known
+                && let Some(finding) = screening::level_ratio(&known.state, &row.statement)
+            {
+                if self.findings.len() < SHOWN_FINDINGS {
+                    self.findings.push(finding.at_series(&segment.key));
+                } else {
+                    self.more_findings += 1;
+                }
+            }
+            let (state, changes) = merge(base.as_ref().map(|b| &b.state), &row.statement);
+            self.count(changes);
+            if changes.any() {
+                self.series_changed.add(&segment.key);
+                let rest = material.replayed.get(&id).map_or(&[][..], Vec::as_slice);
+                let said = Said {
+                    date: released,
+                    state,
+                };
+                vintages.push(NewVintage::new(
+                    id,
+                    released,
+                    released,
+                    &said.state,
+                    changes,
+                ));
+                replay_onto(Some(said), rest, visible, &mut vintages, id);
+            }
+            if !populated.segments.contains(&id) {
+                if populated.series.contains(&segment.series_id) {
+                    self.opened.push(segment);
+                } else if created.insert(segment.series_id) {
+                    self.series_created.add(&segment.key);
+                }
+            }
+        }
+        Ok(vintages)
+    }
+
     fn count(&mut self, changes: Changes) {
         let counts = &mut self.observations;
         counts.new += u64::from(changes.new);
@@ -135,29 +156,135 @@ pub(super) async fn unland(
     store::series::lock_of_upload(connection, upload).await?;
     let rest = store::upload::landed_from(connection, released).await?;
     let (segments, batches) = segments(connection, upload, released, &rest).await?;
-    let revision = change::draw(connection, Action::Withdraw, Some(upload), None, author).await?;
+    let mut writer = Writer::new(Action::Withdraw, upload, author);
     for batch in batches {
-        let batch = &segments[batch];
-        let stored = by_id(store::series::segments_by_id(connection, batch).await?);
-        let mut bases = one_each(
-            store::vintage::visible_before(connection, batch, released).await?,
-            &stored,
-        )?;
-        let mut visible = dated(
-            store::vintage::visible_from(connection, batch, released).await?,
-            &stored,
-        )?;
-        let replayed = replayed(connection, &rest, batch).await?;
-        let mut vintages = Vec::new();
-        for id in batch {
-            let base = bases.remove(id);
-            let rest = replayed.get(id).map_or(&[][..], Vec::as_slice);
-            let visible = visible.remove(id).unwrap_or_default();
-            replay_onto(base.as_ref(), rest, visible, &mut vintages, *id);
-        }
-        store::vintage::insert(connection, revision.number, &vintages).await?;
+        let batch = segments[batch].to_vec();
+        let mut material = Material::load(connection, &batch, released, &rest).await?;
+        let vintages = blocking(move || {
+            let mut vintages = Vec::new();
+            for id in batch {
+                let base = material.bases.remove(&id);
+                let rest = material.replayed.get(&id).map_or(&[][..], Vec::as_slice);
+                let visible = material.visible.remove(&id).unwrap_or_default();
+                replay_onto(base, rest, visible, &mut vintages, id);
+            }
+            vintages
+        })
+        .await?;
+        writer.add(connection, vintages).await?;
     }
-    Ok(revision)
+    writer.finish(connection).await
+}
+
+/// Vintages on their way into the store. The revision is drawn when the first are written: from then to the
+/// end of the transaction no other change can commit.
+struct Writer<'a> {
+    action: Action,
+    upload: i64,
+    author: &'a str,
+    revision: Option<Revision>,
+    pending: Vec<NewVintage>,
+    periods: usize,
+}
+
+impl<'a> Writer<'a> {
+    fn new(action: Action, upload: i64, author: &'a str) -> Self {
+        Self {
+            action,
+            upload,
+            author,
+            revision: None,
+            pending: Vec::new(),
+            periods: 0,
+        }
+    }
+
+    async fn add(
+        &mut self,
+        connection: &mut Connection,
+        vintages: Vec<NewVintage>,
+    ) -> Result<(), Fault> {
+        self.periods += vintages.iter().map(NewVintage::periods).sum::<usize>();
+        self.pending.extend(vintages);
+        if self.periods > PENDING_PERIODS {
+            self.write(connection).await?;
+        }
+        Ok(())
+    }
+
+    async fn write(&mut self, connection: &mut Connection) -> Result<Revision, Fault> {
+        let revision = match self.revision {
+            Some(revision) => revision,
+            None => {
+                let upload = Some(self.upload);
+                change::draw(connection, self.action, upload, None, self.author).await?
+            }
+        };
+        self.revision = Some(revision);
+        store::vintage::insert(connection, revision.number, &self.pending).await?;
+        self.pending.clear();
+        self.periods = 0;
+        Ok(revision)
+    }
+
+    /// Writes the rest. A revision is drawn even where nothing changed: replays order uploads by it.
+    async fn finish(mut self, connection: &mut Connection) -> Result<Revision, Fault> {
+        self.write(connection).await
+    }
+}
+
+/// What some segments hold around a release date.
+struct Material {
+    stored: HashMap<i64, StoredSegment>,
+    /// What was visible before the date.
+    bases: HashMap<i64, Said>,
+    /// What is visible from the date on.
+    visible: HashMap<i64, BTreeMap<Date, Said>>,
+    /// What other uploads say from the date on, in the order in which it merges.
+    replayed: HashMap<i64, Vec<StatementRow>>,
+}
+
+impl Material {
+    async fn load(
+        connection: &mut Connection,
+        segments: &[i64],
+        date: Date,
+        uploads: &[i64],
+    ) -> Result<Self, Fault> {
+        let stored: HashMap<i64, StoredSegment> =
+            store::series::segments_by_id(connection, segments)
+                .await?
+                .into_iter()
+                .map(|s| (s.id, s))
+                .collect();
+        let said = |row: VintageRow| {
+            let segment = stored
+                .get(&row.segment_id)
+                .ok_or_else(|| Fault::Internal(format!("segment {} vanished", row.segment_id)))?;
+            Ok::<_, Fault>(row.said(segment.key.frequency())?)
+        };
+        let mut bases = HashMap::new();
+        for row in store::vintage::visible_before(connection, segments, date).await? {
+            bases.insert(row.segment_id, said(row)?);
+        }
+        let mut visible: HashMap<i64, BTreeMap<Date, Said>> = HashMap::new();
+        for row in store::vintage::visible_from(connection, segments, date).await? {
+            let (id, released) = (row.segment_id, store::date(row.released)?);
+            visible.entry(id).or_default().insert(released, said(row)?);
+        }
+        let mut replayed: HashMap<i64, Vec<StatementRow>> = HashMap::new();
+        if !uploads.is_empty() {
+            for row in store::fragment::statements(connection, uploads, segments).await? {
+                replayed.entry(row.segment_id).or_default().push(row);
+            }
+        }
+        Ok(Self {
+            stored,
+            bases,
+            visible,
+            replayed,
+        })
+    }
 }
 
 /// Segments that an upload speaks of, and batches of them that fit into memory.
@@ -167,61 +294,50 @@ async fn segments(
     from: Date,
     replayed: &[i64],
 ) -> Result<(Vec<i64>, Vec<Range<usize>>), Fault> {
-    let weighed = store::vintage::segments_of_upload(connection, upload, from, replayed).await?;
+    let weighed = store::fragment::segments_of_upload(connection, upload, from, replayed).await?;
     let batches = groups::batches(weighed.iter().map(|s| s.periods));
     Ok((weighed.iter().map(|s| s.segment_id).collect(), batches))
-}
-
-/// What these uploads say of some segments, by segment, in the order in which it merges.
-async fn replayed(
-    connection: &mut Connection,
-    uploads: &[i64],
-    segments: &[i64],
-) -> Result<HashMap<i64, Vec<StatementRow>>, Fault> {
-    let mut map: HashMap<i64, Vec<StatementRow>> = HashMap::new();
-    if uploads.is_empty() {
-        return Ok(map);
-    }
-    for row in store::vintage::statements(connection, uploads, segments).await? {
-        map.entry(row.segment_id).or_default().push(row);
-    }
-    Ok(map)
 }
 
 /// Replays statements in their order onto a base that readers see until the first date. Wherever what
 /// they see from a date on, by a vintage of that date or the one before, is no longer what the replay
 /// gives, adds the vintage that says so.
 fn replay_onto(
-    base: Option<&State>,
+    base: Option<Said>,
     statements: &[StatementRow],
-    mut visible: BTreeMap<Date, State>,
+    mut visible: BTreeMap<Date, Said>,
     vintages: &mut Vec<NewVintage>,
     segment_id: i64,
 ) {
     let mut dates: BTreeSet<Date> = visible.keys().copied().collect();
     dates.extend(statements.iter().map(|s| s.released));
-    let nothing = |like: &State| State::empty(like.start);
-    let mut state = base.cloned();
-    let mut seen = base.cloned();
+    let mut now = base.clone();
+    let mut seen = base;
     let mut statements = statements.iter().peekable();
     for released in dates {
         while let Some(row) = statements.next_if(|row| row.released <= released) {
-            state = Some(merge(state.as_ref(), &row.statement).0);
+            let (state, changes) = merge(now.as_ref().map(|n| &n.state), &row.statement);
+            if changes.any() {
+                let date = row.released;
+                now = Some(Said { date, state });
+            }
         }
         seen = visible.remove(&released).or(seen);
-        let (new, old) = match (&state, &seen) {
+        let nothing = |like: &Said| Said {
+            date: like.date,
+            state: State::empty(like.state.start),
+        };
+        let (new, old) = match (&now, &seen) {
             (None, None) => continue,
             (Some(new), None) => (new.clone(), nothing(new)),
             (None, Some(old)) => (nothing(old), old.clone()),
             (Some(new), Some(old)) => (new.clone(), old.clone()),
         };
-        if !new.agrees_with(&old) {
-            vintages.push(NewVintage {
-                segment_id,
-                released,
-                changes: difference(&old, &new),
-                state: new.clone(),
-            });
+        if new.date != old.date || !new.state.agrees_with(&old.state) {
+            let changes = difference(&old.state, &new.state);
+            vintages.push(NewVintage::new(
+                segment_id, released, new.date, &new.state, changes,
+            ));
         }
         seen = Some(new);
     }
@@ -229,38 +345,4 @@ fn replay_onto(
 
 fn next_day(date: Date) -> Date {
     Date::from_days(date.days() + 1).unwrap_or(date)
-}
-
-fn by_id(segments: Vec<StoredSegment>) -> HashMap<i64, StoredSegment> {
-    segments.into_iter().map(|s| (s.id, s)).collect()
-}
-
-fn state_of(row: VintageRow, stored: &HashMap<i64, StoredSegment>) -> Result<State, Fault> {
-    let segment = stored
-        .get(&row.segment_id)
-        .ok_or_else(|| Fault::Internal(format!("segment {} vanished", row.segment_id)))?;
-    Ok(row.state(segment.key.frequency())?)
-}
-
-fn one_each(
-    rows: Vec<VintageRow>,
-    stored: &HashMap<i64, StoredSegment>,
-) -> Result<HashMap<i64, State>, Fault> {
-    rows.into_iter()
-        .map(|row| Ok((row.segment_id, state_of(row, stored)?)))
-        .collect()
-}
-
-fn dated(
-    rows: Vec<VintageRow>,
-    stored: &HashMap<i64, StoredSegment>,
-) -> Result<HashMap<i64, BTreeMap<Date, State>>, Fault> {
-    let mut map: HashMap<i64, BTreeMap<Date, State>> = HashMap::new();
-    for row in rows {
-        let (id, released) = (row.segment_id, store::date(row.released)?);
-        map.entry(id)
-            .or_default()
-            .insert(released, state_of(row, stored)?);
-    }
-    Ok(map)
 }

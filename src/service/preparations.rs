@@ -5,10 +5,10 @@ use std::collections::{BTreeMap, BTreeSet};
 use serde::{Deserialize, Serialize};
 use utoipa::ToSchema;
 
-use super::documents::{self, DocumentKind, Precondition, timestamp};
+use super::documents::{self, DocumentKind, timestamp};
 use super::lineage::OriginView;
 use super::series::Moment;
-use super::views::{DocumentView, Pin};
+use super::views::Pin;
 use super::{Fault, blocking, preview};
 use crate::finding::Finding;
 use crate::preparation::{self, Document, InputInfo, InputRef, Output, Plan};
@@ -17,7 +17,7 @@ use crate::series::vintage::{Scope, State, Statement, merge};
 use crate::series::{Series, SeriesKey, Status, Unit};
 use crate::store::change::{self, Action};
 use crate::store::document::RunRow;
-use crate::store::vintage::{NewVintage, ReadVintage};
+use crate::store::vintage::{AsOf, NewVintage, ReadVintage, VintageRow};
 use crate::store::{self, Connection, Database};
 use crate::time::Date;
 
@@ -79,20 +79,9 @@ fn parse(body: &str) -> Result<Document, Fault> {
     Document::parse(body).map_err(|errors| documents::refused("bad_preparation", errors))
 }
 
-/// Stores a preparation after checking it. Where its inputs are stored already, units are checked too.
-///
-/// # Errors
-/// [`Fault::Invalid`] with JSON pointers; [`Fault::PreconditionFailed`]; [`Fault::Store`].
-pub async fn put(
-    database: &Database,
-    name: &str,
-    body: &str,
-    precondition: &Precondition,
-    author: &str,
-) -> Result<(DocumentView, bool), Fault> {
-    let document = parse(body)?;
-    check_plan(database, document).await?;
-    documents::put(database, KIND, name, body, precondition, author).await
+/// Checks the text of a preparation. Where its inputs are stored already, units are checked too.
+pub(super) async fn check(database: &Database, body: &str) -> Result<(), Fault> {
+    check_plan(database, parse(body)?).await.map(|_| ())
 }
 
 /// What a preparation would do with the series stored now.
@@ -132,13 +121,13 @@ async fn read_inputs(
     moment: &Moment,
 ) -> Result<Vec<(InputRef, ReadVintage)>, Fault> {
     let mut connection = database.connection().await?;
+    let pinned = moment.pinned(&mut connection).await?;
     let mut found = Vec::new();
     for input in inputs {
-        let moment = Moment {
-            segment: input.segment.map(i64::from),
-            ..moment.clone()
+        let as_of = AsOf {
+            segment: input.segment,
+            ..pinned
         };
-        let as_of = moment.resolve(&mut connection).await?;
         if let Some(vintage) = store::vintage::read(&mut connection, &input.key, as_of).await? {
             found.push((input.clone(), vintage));
         }
@@ -155,7 +144,7 @@ pub(super) fn pin(key: &SeriesKey, vintage: &ReadVintage) -> Pin {
     }
 }
 
-/// Runs a preparation and stores its outputs.
+/// Runs a version of a preparation, the newest unless one is named, and stores its outputs.
 ///
 /// # Errors
 /// [`Fault::NotFound`]; [`Fault::Invalid`] where an input is missing or a step has no result;
@@ -163,14 +152,15 @@ pub(super) fn pin(key: &SeriesKey, vintage: &ReadVintage) -> Pin {
 pub async fn run(
     database: &Database,
     name: &str,
+    version: Option<i64>,
     moment: &Moment,
     author: &str,
 ) -> Result<PreparationRun, Fault> {
-    let row = documents::row(database, KIND, name, None).await?;
+    let row = documents::row(database, KIND, name, version).await?;
     let document = parse(&row.body)?;
     let found = read_inputs(database, &document.inputs(), moment).await?;
     let pins: Vec<Pin> = found.iter().map(|(input, v)| pin(&input.key, v)).collect();
-    let released = found.iter().map(|(_, v)| v.released).max();
+    let released = found.iter().map(|(_, v)| v.visible_from).max();
     let inputs: BTreeMap<InputRef, Series> = found
         .into_iter()
         .map(|(input, v)| (input, preview::series(v)))
@@ -194,7 +184,15 @@ pub async fn run(
         &serde_json::Value::Null,
     )
     .await?;
-    let (revision, changed) = write(&mut transaction, id, released, &outputs, author).await?;
+    let written = write(
+        &mut transaction,
+        id,
+        released,
+        moment.is_now(),
+        &outputs,
+        author,
+    );
+    let (revision, changed) = written.await?;
     let result = StoredResult {
         revision,
         outputs: outputs
@@ -207,11 +205,13 @@ pub async fn run(
     get_run(database, name, id).await
 }
 
-/// Writes outputs whose values or status differ from what is visible as of their release date.
+/// Writes outputs whose values or status differ from what is visible as of their release date. A run on the
+/// present replaces what is there now, even where that came of a newer release than its own inputs.
 async fn write(
     connection: &mut Connection,
     run: i64,
-    released: Date,
+    mut released: Date,
+    now: bool,
     outputs: &[Output],
     author: &str,
 ) -> Result<(Option<i64>, BTreeSet<SeriesKey>), Fault> {
@@ -221,7 +221,7 @@ async fn write(
     let units = outputs.iter().map(|o| &o.series.unit);
     let wanted: Vec<(i64, &Unit)> = ids.iter().copied().zip(units).collect();
     let segments = store::series::ensure_segments(connection, &wanted).await?;
-    let fed = store::vintage::fed_by_uploads(connection, &ids).await?;
+    let fed = store::fragment::fed_by_uploads(connection, &ids).await?;
     if let Some(i) = ids.iter().position(|id| fed.contains(id)) {
         return Err(Fault::Conflict {
             code: "series_of_uploads",
@@ -232,15 +232,16 @@ async fn write(
             ),
         });
     }
-    let day_after = Date::from_days(released.days() + 1).unwrap_or(released);
     let siblings = store::series::segments_of_series(connection, &ids).await?;
     let all: Vec<i64> = siblings.iter().map(|(_, segment)| *segment).collect();
-    let mut visible: BTreeMap<i64, store::vintage::VintageRow> =
-        store::vintage::visible_before(connection, &all, day_after)
-            .await?
-            .into_iter()
-            .map(|row| (row.segment_id, row))
-            .collect();
+    let day_after = Date::from_days(released.days() + 1).filter(|_| !now);
+    let rows =
+        store::vintage::visible_before(connection, &all, day_after.unwrap_or(Date::LAST)).await?;
+    for row in &rows {
+        released = released.max(store::date(row.released)?);
+    }
+    let mut visible: BTreeMap<i64, VintageRow> =
+        rows.into_iter().map(|row| (row.segment_id, row)).collect();
     let mut vintages = Vec::new();
     let mut changed = BTreeSet::new();
     for (output, segment) in outputs.iter().zip(&segments) {
@@ -251,12 +252,9 @@ async fn write(
         let (state, changes) = merge(before.as_ref(), &statement(run, &output.series));
         if changes.any() {
             changed.insert(output.key.clone());
-            vintages.push(NewVintage {
-                segment_id: segment.id,
-                released,
-                state,
-                changes,
-            });
+            vintages.push(NewVintage::new(
+                segment.id, released, released, &state, changes,
+            ));
         }
         // A run gives the whole series: what stood under another unit is over.
         for (series, sibling) in &siblings {
@@ -268,12 +266,9 @@ async fn write(
                 let old = row.state(output.key.frequency())?;
                 let state = State::empty(old.start);
                 let changes = crate::series::vintage::difference(&old, &state);
-                vintages.push(NewVintage {
-                    segment_id: *sibling,
-                    released,
-                    state,
-                    changes,
-                });
+                vintages.push(NewVintage::new(
+                    *sibling, released, released, &state, changes,
+                ));
             }
         }
     }

@@ -12,7 +12,7 @@ use futures_util::Stream;
 use super::groups::Source;
 use super::uploads::{self, ReportParts};
 use super::views::UploadView;
-use super::{Fault, body, currencies, landing, preview};
+use super::{Fault, blocking, body, currencies, landing, preview};
 use crate::clock;
 use crate::finding::Finding;
 use crate::intake::{self, Reader};
@@ -268,10 +268,13 @@ async fn store_and_land(
     store::series::lock(connection, &series).await?;
     refuse_derived(connection, source, &series).await?;
     for batch in source.batches() {
+        let pieces = source.fetch(connection, batch.clone()).await?;
+        let settled: Option<Vec<_>> =
+            blocking(move || pieces.into_iter().map(Fragment::settle).collect()).await?;
         let mut fragments = Vec::with_capacity(batch.len());
-        for pieces in source.fetch(connection, batch.clone()).await? {
-            let (fragment, duplicates) = Fragment::settle(pieces)
-                .ok_or_else(|| Fault::Internal("a series of an upload has no row".to_owned()))?;
+        for (fragment, duplicates) in
+            settled.ok_or_else(|| Fault::Internal("a series of an upload has no row".to_owned()))?
+        {
             parts.add_duplicates(&fragment.key, &duplicates);
             fragments.push(fragment);
         }
@@ -283,7 +286,7 @@ async fn store_and_land(
             .zip(fragments)
             .map(|(segment, fragment)| (segment.id, statement(id, request.scope, fragment)))
             .collect();
-        store::vintage::insert_fragments(connection, id, &statements).await?;
+        store::fragment::insert(connection, id, &statements).await?;
     }
     if parts.rejected() && request.on_reject == OnReject::Fail {
         store::rollback_to(connection, Savepoint::Upload).await?;

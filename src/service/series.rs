@@ -50,6 +50,21 @@ impl Moment {
         }
         Ok(as_of)
     }
+
+    /// As [`Moment::resolve`], with the newest revision where none was asked for: whatever is read after
+    /// one another belongs to one state of the store.
+    pub(super) async fn pinned(&self, connection: &mut Connection) -> Result<AsOf, Fault> {
+        let mut as_of = self.resolve(connection).await?;
+        if as_of.revision.is_none() {
+            as_of.revision = Some(store::change::newest(connection).await?);
+        }
+        Ok(as_of)
+    }
+
+    /// Whether it is the present.
+    pub(super) fn is_now(&self) -> bool {
+        self.as_of.is_none() && self.recorded_as_of.is_none()
+    }
 }
 
 fn bad_moment(parameter: &str, text: &str) -> Fault {

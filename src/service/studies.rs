@@ -5,10 +5,10 @@ use std::collections::BTreeMap;
 use serde::Serialize;
 use utoipa::ToSchema;
 
-use super::documents::{self, DocumentKind, Precondition, timestamp};
+use super::documents::{self, DocumentKind, timestamp};
 use super::preparations::pin;
 use super::series::Moment;
-use super::views::{DocumentView, Pin};
+use super::views::Pin;
 use super::{Fault, blocking, preview};
 use crate::store::document::RunRow;
 use crate::store::{self, Database};
@@ -43,22 +43,13 @@ fn parse(body: &str) -> Result<Document, Fault> {
     Document::parse(body).map_err(|errors| documents::refused("bad_study", errors))
 }
 
-/// Stores a study after checking it.
-///
-/// # Errors
-/// [`Fault::Invalid`] with JSON pointers; [`Fault::PreconditionFailed`]; [`Fault::Store`].
-pub async fn put(
-    database: &Database,
-    name: &str,
-    body: &str,
-    precondition: &Precondition,
-    author: &str,
-) -> Result<(DocumentView, bool), Fault> {
-    parse(body)?;
-    documents::put(database, KIND, name, body, precondition, author).await
+/// Checks the text of a study.
+pub(super) fn check(body: &str) -> Result<(), Fault> {
+    parse(body).map(|_| ())
 }
 
-/// Runs a study on the series as of some moment and stores what comes out.
+/// Runs a version of a study, the newest unless one is named, on the series as of some moment and stores what
+/// comes out.
 ///
 /// # Errors
 /// [`Fault::NotFound`]; [`Fault::Invalid`] where series are missing or cannot answer;
@@ -66,15 +57,16 @@ pub async fn put(
 pub async fn run(
     database: &Database,
     name: &str,
+    version: Option<i64>,
     moment: &Moment,
     author: &str,
 ) -> Result<StudyRun, Fault> {
-    let row = documents::row(database, KIND, name, None).await?;
+    let row = documents::row(database, KIND, name, version).await?;
     let document = parse(&row.body)?;
     let mut pins = Vec::new();
     let mut inputs = BTreeMap::new();
     let mut connection = database.connection().await?;
-    let as_of = moment.resolve(&mut connection).await?;
+    let as_of = moment.pinned(&mut connection).await?;
     for key in document.inputs() {
         if let Some(vintage) = store::vintage::read(&mut connection, &key, as_of).await? {
             pins.push(pin(&key, &vintage));
@@ -85,9 +77,9 @@ pub async fn run(
     let outcome = blocking(move || study::run(&document, &inputs))
         .await?
         .map_err(|errors| Fault::invalid("study_failed", errors))?;
-    let mut connection = database.connection().await?;
+    let mut transaction = database.begin().await?;
     let id = store::document::insert_run(
-        &mut connection,
+        &mut transaction,
         KIND.as_str(),
         name,
         row.version,
@@ -97,7 +89,7 @@ pub async fn run(
         &serde_json::json!(outcome),
     )
     .await?;
-    drop(connection);
+    store::commit(transaction).await?;
     get_run(database, name, id).await
 }
 

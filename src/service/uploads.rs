@@ -271,6 +271,7 @@ pub async fn accept(database: &Database, id: i64, author: &str) -> Result<Upload
         .await?
         .ok_or_else(|| no_upload(id))?;
     let released = store::date(row.released)?;
+    store::series::lock_of_upload(&mut transaction, id).await?;
     let landed = landing::land(&mut transaction, id, released, Action::Accept, author).await?;
     let report = match serde_json::from_value::<UploadReport>(row.report.0.clone()) {
         Ok(report) => serde_json::to_value(UploadReport {

@@ -89,3 +89,16 @@ pub async fn revision_at(
     .await?;
     Ok(row.revision)
 }
+
+/// The newest revision; 0 before the first. Revisions commit in their order, so that what was read until
+/// this one is one state of the store.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn newest(connection: &mut PgConnection) -> Result<i64, Error> {
+    let newest =
+        sqlx::query_scalar!(r#"SELECT coalesce(max(revision), 0) AS "revision!" FROM change"#)
+            .fetch_one(connection)
+            .await?;
+    Ok(newest)
+}

@@ -18,6 +18,20 @@ pub struct CurrencyRow {
     pub recorded: DateTime<Utc>,
 }
 
+/// The advisory lock of those who declare ("cur" in ASCII).
+const LOCK: i64 = 0x0063_7572;
+
+/// Lets one transaction at a time look at the declarations and change them.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn lock(connection: &mut PgConnection) -> Result<(), Error> {
+    sqlx::query!("SELECT pg_advisory_xact_lock($1)", LOCK)
+        .execute(connection)
+        .await?;
+    Ok(())
+}
+
 /// Declares a currency or declares it anew; true where it is new.
 ///
 /// # Errors

@@ -62,15 +62,15 @@ pub async fn search(
              c.observation_count
          FROM series s
          JOIN LATERAL (
-             SELECT g.number, g.unit, v.released, v.revision, v.start_period, v.observation_count,
+             SELECT g.number, g.unit, v.said AS released, v.revision, v.start_period, v.observation_count,
                  count(*) OVER () AS segments
              FROM segment g
              JOIN LATERAL (
-                 SELECT w.released, w.revision, w.start_period, w.observation_count FROM vintage w
+                 SELECT w.said, w.revision, w.start_period, w.observation_count FROM vintage w
                  WHERE w.segment_id = g.id ORDER BY w.released DESC, w.revision DESC LIMIT 1
              ) v ON v.observation_count > 0
              WHERE g.series_id = s.id
-             ORDER BY v.released DESC, g.number DESC LIMIT 1
+             ORDER BY v.said DESC, g.number DESC LIMIT 1
          ) c ON true
          WHERE s.id > $1",
     );

@@ -12,6 +12,7 @@ pub mod currency;
 pub mod document;
 pub mod dynamic;
 mod error;
+pub mod fragment;
 mod pool;
 pub mod series;
 pub mod staging;

@@ -132,7 +132,11 @@ impl Database {
             .options([("search_path", SCHEMA)])
             .application_name("realterms");
         check_server(&connect).await?;
-        let pool = |size: u32| {
+        // The look-ups by key know one plan; planning them anew each time costs more than running them.
+        let planned_once = connect
+            .clone()
+            .options([("plan_cache_mode", "force_generic_plan")]);
+        let pool = |size: u32, connect: &PgConnectOptions| {
             PgPoolOptions::new()
                 .max_connections(size)
                 .acquire_timeout(Duration::from_secs(10))
@@ -145,8 +149,8 @@ impl Database {
                 .connect_lazy_with(connect.clone())
         };
         Ok(Self {
-            pool: pool(options.connections),
-            upload_pool: pool(options.upload_connections),
+            pool: pool(options.connections, &planned_once),
+            upload_pool: pool(options.upload_connections, &connect),
             connect,
             cluster,
         })

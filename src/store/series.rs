@@ -79,6 +79,9 @@ pub async fn ensure(connection: &mut PgConnection, keys: &[&SeriesKey]) -> Resul
         )
         .fetch_all(&mut *connection)
         .await?;
+        if found.len() != batch.len() {
+            return Err(Error::corrupt("a series", "not found after it was made"));
+        }
         for (i, id) in batch.iter().zip(found) {
             ids[*i] = id;
         }
@@ -140,7 +143,11 @@ pub async fn ensure_segments(
     )
     .fetch_all(connection)
     .await?;
-    Ok(rows)
+    if rows.len() == wanted.len() {
+        Ok(rows)
+    } else {
+        Err(Error::corrupt("a segment", "not found after it was made"))
+    }
 }
 
 /// Locks the series that an upload speaks of, as [`lock`] does.

@@ -1,4 +1,4 @@
-//! Vintages and the fragments they are made of.
+//! Vintages.
 
 use sqlx::PgConnection;
 use sqlx::types::Json;
@@ -7,7 +7,7 @@ use sqlx::types::chrono::{DateTime, NaiveDate, Utc};
 use super::copy::CopyBuffer;
 use super::{Error, day};
 use crate::series::provenance::{self, Origin};
-use crate::series::vintage::{Changes, Scope, State, Statement};
+use crate::series::vintage::{Changes, State};
 use crate::series::{SeriesKey, Status, Unit};
 use crate::time::{Date, Frequency, Period};
 
@@ -16,8 +16,10 @@ use crate::time::{Date, Frequency, Period};
 pub struct VintageRow {
     /// The segment.
     pub segment_id: i64,
-    /// Release date.
+    /// Date from which it is visible.
     pub released: NaiveDate,
+    /// Date of the release that speaks: `released`, or an older one where a later release was withdrawn.
+    pub said: NaiveDate,
     /// Revision that wrote it.
     pub revision: i64,
     /// Ordinal of the first period.
@@ -30,7 +32,27 @@ pub struct VintageRow {
     pub provenance: Vec<u8>,
 }
 
+/// A state and the date of the release that says it.
+#[derive(Clone, Debug)]
+pub struct Said {
+    /// The release that speaks.
+    pub date: Date,
+    /// The state.
+    pub state: State,
+}
+
 impl VintageRow {
+    /// Unpacks the state, with the date of the release that says it.
+    ///
+    /// # Errors
+    /// [`Error::Corrupt`].
+    pub fn said(self, frequency: Frequency) -> Result<Said, Error> {
+        Ok(Said {
+            date: super::date(self.said)?,
+            state: self.state(frequency)?,
+        })
+    }
+
     /// Unpacks the state.
     ///
     /// # Errors
@@ -53,11 +75,15 @@ impl VintageRow {
     }
 }
 
-fn first_period(what: &str, frequency: Frequency, ordinal: i32) -> Result<Period, Error> {
+pub(super) fn first_period(
+    what: &str,
+    frequency: Frequency,
+    ordinal: i32,
+) -> Result<Period, Error> {
     Period::from_ordinal(frequency, ordinal).ok_or_else(|| Error::corrupt(what, "start period"))
 }
 
-fn statuses(what: &str, bytes: &[u8]) -> Result<Vec<Status>, Error> {
+pub(super) fn statuses(what: &str, bytes: &[u8]) -> Result<Vec<Status>, Error> {
     bytes
         .iter()
         .map(|b| Status::from_byte(*b).ok_or_else(|| Error::corrupt(what, "status byte")))
@@ -75,7 +101,8 @@ pub async fn visible_before(
 ) -> Result<Vec<VintageRow>, Error> {
     let rows = sqlx::query_as!(
         VintageRow,
-        r#"SELECT v.segment_id, v.released, v.revision, v.start_period, v."values", v.status, v.provenance
+        r#"SELECT v.segment_id, v.released, v.said, v.revision, v.start_period, v."values", v.status,
+             v.provenance
            FROM unnest($1::bigint[]) AS q(segment_id)
            JOIN LATERAL (
                SELECT * FROM vintage w WHERE w.segment_id = q.segment_id AND w.released < $2
@@ -102,7 +129,7 @@ pub async fn visible_from(
     let rows = sqlx::query_as!(
         VintageRow,
         r#"SELECT DISTINCT ON (segment_id, released)
-             segment_id, released, revision, start_period, "values", status, provenance
+             segment_id, released, said, revision, start_period, "values", status, provenance
            FROM vintage WHERE segment_id = ANY($1) AND released >= $2
            ORDER BY segment_id, released, revision DESC"#,
         segments,
@@ -113,175 +140,55 @@ pub async fn visible_from(
     Ok(rows)
 }
 
-/// A statement of a landed upload, with the date it was released.
-#[derive(Clone, Debug)]
-pub struct StatementRow {
-    /// The segment it speaks of.
-    pub segment_id: i64,
-    /// The upload.
-    pub upload_id: i64,
-    /// Release date.
-    pub released: Date,
-    /// What it says.
-    pub statement: Statement,
-}
-
-/// What these uploads say about these segments, in the order in which it merges: by segment, release
-/// date and landing.
-///
-/// # Errors
-/// [`Error`].
-pub async fn statements(
-    connection: &mut PgConnection,
-    uploads: &[i64],
-    segments: &[i64],
-) -> Result<Vec<StatementRow>, Error> {
-    let rows = sqlx::query_as!(
-        FragmentRow,
-        r#"SELECT f.segment_id, f.upload_id, f.start_period, f."values", f.status, f.lines, u.released,
-             s.frequency, u.parameters->>'scope' AS scope
-           FROM fragment f JOIN upload u ON u.id = f.upload_id
-           JOIN segment g ON g.id = f.segment_id JOIN series s ON s.id = g.series_id
-           WHERE f.segment_id = ANY($1) AND f.upload_id = ANY($2)
-           ORDER BY f.segment_id, u.released, u.landed_revision"#,
-        segments,
-        uploads
-    )
-    .fetch_all(connection)
-    .await?;
-    rows.into_iter().map(StatementRow::try_from).collect()
-}
-
-/// A segment that an upload speaks of, and how much working on it takes.
-#[derive(Clone, Copy, Debug)]
-pub struct Weighed {
-    /// The segment.
-    pub segment_id: i64,
-    /// Periods to hold in memory: those that it spans now or with this upload, once for each state and
-    /// statement from the release on.
-    pub periods: i64,
-}
-
-/// Segments that an upload speaks of, in ascending order, weighed for replaying `later` uploads.
-///
-/// # Errors
-/// [`Error::Database`].
-pub async fn segments_of_upload(
-    connection: &mut PgConnection,
-    upload: i64,
-    released: Date,
-    later: &[i64],
-) -> Result<Vec<Weighed>, Error> {
-    let rows = sqlx::query_as!(
-        Weighed,
-        r#"SELECT f.segment_id,
-             (greatest(f.start_period + octet_length(f.status), v.end_period)
-                 - least(f.start_period, v.start_period))
-             * (2 + (SELECT count(*) FROM vintage w WHERE w.segment_id = f.segment_id AND w.released >= $2)
-                 + (SELECT count(*) FROM fragment o
-                    WHERE o.segment_id = f.segment_id AND o.upload_id = ANY($3))) AS "periods!"
-           FROM fragment f
-           LEFT JOIN LATERAL (
-               SELECT w.start_period, w.start_period + w.observation_count AS end_period FROM vintage w
-               WHERE w.segment_id = f.segment_id ORDER BY w.released DESC, w.revision DESC LIMIT 1
-           ) v ON true
-           WHERE f.upload_id = $1 ORDER BY f.segment_id"#,
-        upload,
-        day(released),
-        later
-    )
-    .fetch_all(connection)
-    .await?;
-    Ok(rows)
-}
-
-struct FragmentRow {
-    segment_id: i64,
-    upload_id: i64,
-    start_period: i32,
-    values: Vec<f64>,
-    status: Vec<u8>,
-    lines: Vec<u8>,
-    released: NaiveDate,
-    frequency: String,
-    scope: Option<String>,
-}
-
-impl TryFrom<FragmentRow> for StatementRow {
-    type Error = Error;
-
-    fn try_from(r: FragmentRow) -> Result<Self, Error> {
-        let what = format!("fragment of upload {}", r.upload_id);
-        let frequency =
-            Frequency::from_code(&r.frequency).ok_or_else(|| Error::corrupt(&what, "frequency"))?;
-        let origins = provenance::decode(&r.lines)
-            .map(|runs| provenance::expand(&runs))
-            .filter(|origins| origins.len() == r.values.len())
-            .ok_or_else(|| Error::corrupt(&what, "lines"))?;
-        Ok(Self {
-            segment_id: r.segment_id,
-            upload_id: r.upload_id,
-            released: super::date(r.released)?,
-            statement: Statement {
-                start: first_period(&what, frequency, r.start_period)?,
-                values: r.values,
-                status: statuses(&what, &r.status)?,
-                origins,
-                scope: match r.scope.as_deref() {
-                    Some("replace") => Scope::Replace,
-                    _ => Scope::Merge,
-                },
-            },
-        })
-    }
-}
-
-fn status_bytes(status: &[Status]) -> Vec<u8> {
+pub(super) fn status_bytes(status: &[Status]) -> Vec<u8> {
     status.iter().map(|s| s.byte()).collect()
 }
 
-fn packed(origins: &[Origin]) -> Vec<u8> {
+pub(super) fn packed(origins: &[Origin]) -> Vec<u8> {
     provenance::encode(&provenance::runs(origins))
 }
 
-/// Keeps what an upload says.
-///
-/// # Errors
-/// [`Error::Database`].
-pub async fn insert_fragments(
-    connection: &mut PgConnection,
-    upload: i64,
-    statements: &[(i64, Statement)],
-) -> Result<(), Error> {
-    let mut rows = CopyBuffer::new(6);
-    for (segment, s) in statements {
-        rows.start_row()
-            .bigint(upload)
-            .bigint(*segment)
-            .integer(s.start.ordinal())
-            .doubles(&s.values)
-            .bytea(&status_bytes(&s.status))
-            .bytea(&packed(&s.origins));
-    }
-    rows.send(
-        connection,
-        r#"COPY fragment (upload_id, segment_id, start_period, "values", status, lines)
-           FROM STDIN (FORMAT binary)"#,
-    )
-    .await
-}
-
-/// A vintage to write.
+/// A vintage to write, packed as it is stored.
 #[derive(Clone, Debug)]
 pub struct NewVintage {
-    /// The segment.
-    pub segment_id: i64,
-    /// Release date.
-    pub released: Date,
-    /// The state.
-    pub state: State,
-    /// What it changed against the state before.
-    pub changes: Changes,
+    segment_id: i64,
+    released: Date,
+    said: Date,
+    changes: Changes,
+    start_period: i32,
+    values: Vec<f64>,
+    status: Vec<u8>,
+    provenance: Vec<u8>,
+}
+
+impl NewVintage {
+    /// The state of a segment visible from a date on, said by the release of another, and what it changes
+    /// against the state before.
+    #[must_use]
+    pub fn new(
+        segment_id: i64,
+        released: Date,
+        said: Date,
+        state: &State,
+        changes: Changes,
+    ) -> Self {
+        Self {
+            segment_id,
+            released,
+            said,
+            changes,
+            start_period: state.start.ordinal(),
+            values: state.values.clone(),
+            status: status_bytes(&state.status),
+            provenance: packed(&state.origins),
+        }
+    }
+
+    /// Periods from first to last.
+    #[must_use]
+    pub fn periods(&self) -> usize {
+        self.values.len()
+    }
 }
 
 /// Writes vintages under a revision.
@@ -294,24 +201,25 @@ pub async fn insert(
     vintages: &[NewVintage],
 ) -> Result<(), Error> {
     let count = |n: usize| i32::try_from(n).unwrap_or(i32::MAX);
-    let mut rows = CopyBuffer::new(11);
+    let mut rows = CopyBuffer::new(12);
     for v in vintages {
         rows.start_row()
             .bigint(v.segment_id)
             .date(v.released)
+            .date(v.said)
             .bigint(revision)
-            .integer(v.state.start.ordinal())
-            .integer(count(v.state.values.len()))
+            .integer(v.start_period)
+            .integer(count(v.values.len()))
             .integer(count(v.changes.new as usize))
             .integer(count(v.changes.revised as usize))
             .integer(count(v.changes.emptied as usize))
-            .doubles(&v.state.values)
-            .bytea(&status_bytes(&v.state.status))
-            .bytea(&packed(&v.state.origins));
+            .doubles(&v.values)
+            .bytea(&v.status)
+            .bytea(&v.provenance);
     }
     rows.send(
         connection,
-        r#"COPY vintage (segment_id, released, revision, start_period, observation_count, new_count,
+        r#"COPY vintage (segment_id, released, said, revision, start_period, observation_count, new_count,
            revised_count, emptied_count, "values", status, provenance) FROM STDIN (FORMAT binary)"#,
     )
     .await
@@ -337,7 +245,9 @@ pub struct ReadVintage {
     pub segment_id: i64,
     /// Unit.
     pub unit: Unit,
-    /// Release date.
+    /// Date from which it is visible.
+    pub visible_from: Date,
+    /// Date of the release that says it.
     pub released: Date,
     /// Moment it was recorded.
     pub recorded: DateTime<Utc>,
@@ -353,6 +263,46 @@ pub struct ReadVintage {
     pub provenance: Vec<u8>,
 }
 
+/// A checked query on one series: its key is bound to `$1` to `$8`, what more it takes from `$9` on.
+macro_rules! of_series {
+    ($query:ident!($($row:ty,)? $($from:literal)+, $($end:literal)+), $key:expr $(, $more:expr)* $(,)?) => {{
+        let [area, measure, partner, product, currency, source, adjustment] = $key.places();
+        sqlx::$query!(
+            $($row,)?
+            "" $(+ $from)+
+                + " WHERE s.area = $1 AND s.measure = $2 AND s.frequency = $3 AND s.partner = $4
+                    AND s.product = $5 AND s.currency = $6 AND s.source = $7 AND s.adjustment = $8 "
+                $(+ $end)+,
+            area, measure, $key.frequency().code(), partner, product, currency, source, adjustment
+            $(, $more)*
+        )
+    }};
+}
+
+/// Columns of the state of a series as of a moment: of the segment `g` asked for, else of that whose
+/// release spoke last, and its vintage `v`.
+macro_rules! visible {
+    ($columns:literal, $key:expr, $as_of:expr) => {
+        of_series!(
+            query!(
+                "SELECT " $columns
+                " FROM series s
+                       JOIN segment g ON g.series_id = s.id AND ($9::integer IS NULL OR g.number = $9)
+                       JOIN LATERAL (
+                           SELECT * FROM vintage w
+                           WHERE w.segment_id = g.id AND w.released <= $10 AND w.revision <= $11
+                           ORDER BY w.released DESC, w.revision DESC LIMIT 1
+                       ) v ON $9::integer IS NOT NULL OR v.observation_count > 0",
+                "ORDER BY v.said DESC, g.number DESC LIMIT 1"
+            ),
+            $key,
+            $as_of.segment,
+            $as_of.released.map_or(FAR, day),
+            $as_of.revision.unwrap_or(i64::MAX)
+        )
+    };
+}
+
 /// Reads one state of one series, by one indexed lookup. `None` where the series, the segment or a
 /// state as of then does not exist.
 ///
@@ -363,40 +313,12 @@ pub async fn read(
     key: &SeriesKey,
     as_of: AsOf,
 ) -> Result<Option<ReadVintage>, Error> {
-    let [
-        area,
-        measure,
-        partner,
-        product,
-        currency,
-        source,
-        adjustment,
-    ] = key.places();
-    let row = sqlx::query!(
-        r#"SELECT g.number, g.id, g.unit AS "unit: Json<Unit>", v.released, v.revision,
-             (SELECT c.recorded FROM change c WHERE c.revision = v.revision) AS "recorded!",
-             v.start_period, v."values", v.status, v.provenance
-           FROM series s
-           JOIN segment g ON g.series_id = s.id AND ($9::integer IS NULL OR g.number = $9)
-           JOIN LATERAL (
-               SELECT * FROM vintage w
-               WHERE w.segment_id = g.id AND w.released <= $10 AND w.revision <= $11
-               ORDER BY w.released DESC, w.revision DESC LIMIT 1
-           ) v ON $9::integer IS NOT NULL OR v.observation_count > 0
-           WHERE s.area = $1 AND s.measure = $2 AND s.frequency = $3 AND s.partner = $4
-             AND s.product = $5 AND s.currency = $6 AND s.source = $7 AND s.adjustment = $8
-           ORDER BY v.released DESC, g.number DESC LIMIT 1"#,
-        area,
-        measure,
-        key.frequency().code(),
-        partner,
-        product,
-        currency,
-        source,
-        adjustment,
-        as_of.segment,
-        as_of.released.map_or(FAR, day),
-        as_of.revision.unwrap_or(i64::MAX)
+    let row = visible!(
+        r#"g.number, g.id, g.unit AS "unit: Json<Unit>", v.released, v.said, v.revision,
+           (SELECT c.recorded FROM change c WHERE c.revision = v.revision) AS "recorded!",
+           v.start_period, v."values", v.status, v.provenance"#,
+        key,
+        as_of
     )
     .fetch_optional(connection)
     .await?;
@@ -406,7 +328,8 @@ pub async fn read(
             segment: r.number,
             segment_id: r.id,
             unit: r.unit.0,
-            released: super::date(r.released)?,
+            visible_from: super::date(r.released)?,
+            released: super::date(r.said)?,
             recorded: r.recorded,
             revision: r.revision,
             start: first_period(&what, key.frequency(), r.start_period)?,
@@ -463,52 +386,17 @@ pub async fn list(
     connection: &mut PgConnection,
     key: &SeriesKey,
 ) -> Result<Vec<ListedVintage>, Error> {
-    let [
-        area,
-        measure,
-        partner,
-        product,
-        currency,
-        source,
-        adjustment,
-    ] = key.places();
-    let rows = sqlx::query_as!(
-        ListedVintage,
-        r#"SELECT g.number AS segment, g.unit AS "unit: Json<Unit>", v.released, c.recorded, v.revision,
-             c.action, c.upload_id, c.run_id, v.start_period, v.observation_count, v.new_count,
-             v.revised_count, v.emptied_count
-           FROM series s JOIN segment g ON g.series_id = s.id JOIN vintage v ON v.segment_id = g.id
-           JOIN change c ON c.revision = v.revision
-           WHERE s.area = $1 AND s.measure = $2 AND s.frequency = $3 AND s.partner = $4
-             AND s.product = $5 AND s.currency = $6 AND s.source = $7 AND s.adjustment = $8
-           ORDER BY v.released, v.revision, g.number"#,
-        area,
-        measure,
-        key.frequency().code(),
-        partner,
-        product,
-        currency,
-        source,
-        adjustment
-    )
-    .fetch_all(connection)
-    .await?;
-    Ok(rows)
-}
-
-/// Whether uploads feed the series.
-///
-/// # Errors
-/// [`Error::Database`].
-pub async fn fed_by_uploads(
-    connection: &mut PgConnection,
-    series: &[i64],
-) -> Result<Vec<i64>, Error> {
-    let rows = sqlx::query_scalar!(
-        r#"SELECT DISTINCT g.series_id FROM fragment f JOIN segment g ON g.id = f.segment_id
-           JOIN upload u ON u.id = f.upload_id AND u.state IN ('landed', 'held')
-           WHERE g.series_id = ANY($1)"#,
-        series
+    let rows = of_series!(
+        query_as!(
+            ListedVintage,
+            r#"SELECT g.number AS segment, g.unit AS "unit: Json<Unit>", v.said AS released, c.recorded,
+                 v.revision, c.action, c.upload_id, c.run_id, v.start_period, v.observation_count,
+                 v.new_count, v.revised_count, v.emptied_count
+               FROM series s JOIN segment g ON g.series_id = s.id
+               JOIN vintage v ON v.segment_id = g.id JOIN change c ON c.revision = v.revision"#,
+            "ORDER BY v.released, v.revision, g.number"
+        ),
+        key
     )
     .fetch_all(connection)
     .await?;
@@ -524,41 +412,9 @@ pub async fn version(
     key: &SeriesKey,
     as_of: AsOf,
 ) -> Result<Option<(i32, i64)>, Error> {
-    let [
-        area,
-        measure,
-        partner,
-        product,
-        currency,
-        source,
-        adjustment,
-    ] = key.places();
-    let row = sqlx::query!(
-        r#"SELECT g.number, v.revision
-           FROM series s
-           JOIN segment g ON g.series_id = s.id AND ($9::integer IS NULL OR g.number = $9)
-           JOIN LATERAL (
-               SELECT w.released, w.revision, w.observation_count FROM vintage w
-               WHERE w.segment_id = g.id AND w.released <= $10 AND w.revision <= $11
-               ORDER BY w.released DESC, w.revision DESC LIMIT 1
-           ) v ON $9::integer IS NOT NULL OR v.observation_count > 0
-           WHERE s.area = $1 AND s.measure = $2 AND s.frequency = $3 AND s.partner = $4
-             AND s.product = $5 AND s.currency = $6 AND s.source = $7 AND s.adjustment = $8
-           ORDER BY v.released DESC, g.number DESC LIMIT 1"#,
-        area,
-        measure,
-        key.frequency().code(),
-        partner,
-        product,
-        currency,
-        source,
-        adjustment,
-        as_of.segment,
-        as_of.released.map_or(FAR, day),
-        as_of.revision.unwrap_or(i64::MAX)
-    )
-    .fetch_optional(connection)
-    .await?;
+    let row = visible!("g.number, v.revision", key, as_of)
+        .fetch_optional(connection)
+        .await?;
     Ok(row.map(|r| (r.number, r.revision)))
 }
 
@@ -568,7 +424,10 @@ pub async fn version(
 /// [`Error::Database`].
 pub async fn fed_by_runs(connection: &mut PgConnection, series: &[i64]) -> Result<Vec<i64>, Error> {
     let rows = sqlx::query_scalar!(
-        r#"SELECT DISTINCT g.series_id FROM segment g JOIN vintage v ON v.segment_id = g.id
+        r#"SELECT DISTINCT g.series_id FROM segment g
+           JOIN LATERAL (
+               SELECT w.revision FROM vintage w WHERE w.segment_id = g.id ORDER BY w.revision DESC LIMIT 1
+           ) v ON true
            JOIN change c ON c.revision = v.revision AND c.action = 'run'
            WHERE g.series_id = ANY($1)"#,
         series

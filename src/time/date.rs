@@ -19,6 +19,9 @@ pub struct DateError {
 }
 
 impl Date {
+    /// The last day of the year 9999.
+    pub const LAST: Self = Self(3_652_059);
+
     /// The date of a year, month (1 to 12) and day (1 to 31).
     ///
     /// # Errors
@@ -124,6 +127,7 @@ mod tests {
         for text in ["0001-01-01", "2024-02-29", "9999-12-31"] {
             assert_eq!(text.parse::<Date>().unwrap().to_string(), text);
         }
+        assert_eq!("9999-12-31".parse(), Ok(Date::LAST));
         for text in [
             "2023-02-29",
             "2024-13-01",

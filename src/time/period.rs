@@ -278,10 +278,10 @@ impl fmt::Display for Period {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         let n = self.ordinal;
         match self.frequency {
-            Frequency::Annual => write!(f, "{n:04}"),
-            Frequency::HalfYearly => write!(f, "{:04}-S{}", n / 2, n % 2 + 1),
-            Frequency::Quarterly => write!(f, "{:04}-Q{}", n / 4, n % 4 + 1),
-            Frequency::Monthly => write!(f, "{:04}-{:02}", n / 12, n % 12 + 1),
+            Frequency::Annual => written(f, n, ""),
+            Frequency::HalfYearly => written(f, n / 2, ["-S1", "-S2"][at(n, 2)]),
+            Frequency::Quarterly => written(f, n / 4, ["-Q1", "-Q2", "-Q3", "-Q4"][at(n, 4)]),
+            Frequency::Monthly => written(f, n / 12, MONTHS[at(n, 12)]),
             Frequency::Weekly => {
                 let (year, week) = self.first_day().iso_week();
                 write!(f, "{year:04}-W{week:02}")
@@ -289,6 +289,28 @@ impl fmt::Display for Period {
             Frequency::Daily => write!(f, "{}", self.first_day()),
         }
     }
+}
+
+const MONTHS: [&str; 12] = [
+    "-01", "-02", "-03", "-04", "-05", "-06", "-07", "-08", "-09", "-10", "-11", "-12",
+];
+
+/// Place of an ordinal within its year.
+fn at(ordinal: i32, periods: i32) -> usize {
+    usize::try_from(ordinal.rem_euclid(periods)).unwrap_or(0)
+}
+
+/// Writes a year and what follows it: reading a series prints as many periods as numbers, and the general
+/// formatting of integers is several times slower.
+fn written(f: &mut fmt::Formatter<'_>, year: i32, rest: &str) -> fmt::Result {
+    let mut text = *b"0000";
+    let mut left = year;
+    for digit in text.iter_mut().rev() {
+        *digit += u8::try_from(left % 10).unwrap_or(0);
+        left /= 10;
+    }
+    f.write_str(std::str::from_utf8(&text).map_err(|_| fmt::Error)?)?;
+    f.write_str(rest)
 }
 
 impl FromStr for Period {

@@ -134,6 +134,22 @@ async fn a_wrong_multiplier_is_held_until_it_is_accepted_or_withdrawn() {
     app.stop().await;
 }
 
+/// There is nothing before it to compare it with; what follows it tells as much.
+#[tokio::test]
+async fn an_older_release_with_a_wrong_multiplier_is_held_too() {
+    let app = start().await;
+    let values = [100.0, 101.0, 103.0];
+    send(&app, "2020-06-30", "", exports(6, &values))
+        .await
+        .expect(201);
+    let late = send(&app, "2020-03-31", "", exports(3, &values))
+        .await
+        .expect(202);
+    assert_eq!(late.at("/state"), "held");
+    assert_eq!(late.at("/report/findings/0/code"), "level_ratio");
+    app.stop().await;
+}
+
 #[tokio::test]
 async fn the_same_bytes_under_other_settings_are_held() {
     let app = start().await;

@@ -18,6 +18,7 @@ mod open_data;
 mod reading;
 mod readme;
 mod representations;
+mod runs;
 mod storing;
 mod support;
 mod uploads;

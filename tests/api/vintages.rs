@@ -412,3 +412,42 @@ fn any_order_of_uploads_and_withdrawals_gives_what_replay_gives() {
     runtime.block_on(app.stop());
     outcome.unwrap();
 }
+
+/// A release sent under a wrong reference period makes another segment current, until it is withdrawn.
+#[tokio::test]
+async fn withdrawing_gives_the_say_back_to_the_release_that_spoke_last() {
+    let app = start().await;
+    let send = async |released: &str, reference: &str, values: &str| {
+        let query = format!(
+            "kind=price_index&area=XAA&measure=export_price&currency=XAD&reference={reference}\
+             &released={released}&on_finding=land"
+        );
+        let file = format!("period,value\n{values}");
+        app.upload(&query, file).await.expect(201)
+    };
+    let key = "A.XAA.export_price";
+    let path = format!("/v1/series/{key}");
+    let current = async || {
+        let answer = app.get(&path).await.expect(200);
+        (answer.at("/segment"), answer.at("/released"))
+    };
+    send("2020-01-31", "2010", "2018,118\n").await;
+    send("2020-02-29", "2015", "2018,115\n").await;
+    assert_eq!(current().await, (json!(2), json!("2020-02-29")));
+    let wrong = send("2020-03-31", "2010", "2018,115\n2019,116\n").await;
+    assert_eq!(current().await, (json!(1), json!("2020-03-31")));
+
+    withdraw(&app, &wrong).await;
+    assert_eq!(current().await, (json!(2), json!("2020-02-29")));
+    assert_eq!(app.values(key, "").await, observed(&[("2018", 115.0)]));
+    let first = format!("{path}/observations?segment=1");
+    assert_eq!(
+        app.get(&first).await.expect(200).at("/released"),
+        "2020-01-31"
+    );
+    assert_eq!(
+        app.values(key, "segment=1").await,
+        observed(&[("2018", 118.0)])
+    );
+    app.stop().await;
+}
