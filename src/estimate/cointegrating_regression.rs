@@ -249,7 +249,7 @@ mod tests {
     use serde_json::Value;
 
     use super::super::test_data::{
-        close, count, danish, dynamics, more, numbers, penn, us_log, us_trade,
+        AREAS, close, count, danish, dynamics, more, numbers, penn, us_log, us_trade,
     };
     use super::*;
 
@@ -329,7 +329,7 @@ mod tests {
             &[income],
             &expected["us_macro"]["dols"],
         );
-        for area in ["ARG", "BRA", "DEU", "FRA"] {
+        for area in AREAS {
             let e = &expected["pwt91"][area];
             let imports = ["ln_y", "ln_rpm"].map(|s| penn(area, s));
             let exports = ["ln_z", "ln_rpx"].map(|s| penn(area, s));

@@ -76,6 +76,11 @@ pub(super) fn us_trade(name: &str) -> Regressor {
     Regressor::new(name, values)
 }
 
+/// The countries of the Penn World Table in the fixtures.
+pub(super) const AREAS: [&str; 12] = [
+    "ARG", "BRA", "DEU", "FRA", "GBR", "IND", "ITA", "JPN", "KOR", "MEX", "TUR", "USA",
+];
+
 /// A series of a country of the Penn World Table.
 pub(super) fn penn(area: &str, name: &str) -> Regressor {
     let file = json(include_str!("../../fixtures/reference/pwt91-trade.json"));

@@ -3,7 +3,7 @@
 use approx::assert_relative_eq;
 use serde_json::Value;
 
-use super::super::test_data::{close, count, danish, dynamics, numbers, penn, us_trade};
+use super::super::test_data::{AREAS, close, count, danish, dynamics, numbers, penn, us_trade};
 use super::super::{Deterministic, Ols, Regressor, SeriesError};
 use super::*;
 
@@ -153,7 +153,7 @@ fn us_import_demand() {
 #[test]
 fn demand_of_four_countries() {
     let expected = dynamics();
-    for area in ["ARG", "BRA", "DEU", "FRA"] {
+    for area in AREAS {
         let e = &expected["pwt91"][area];
         let (m, x) = (penn(area, "ln_m"), penn(area, "ln_x"));
         let imports = ["ln_y", "ln_rpm"].map(|s| penn(area, s));

@@ -4,7 +4,7 @@
 use serde_json::Value;
 
 use super::super::test_data::{
-    close, count, crosscheck, danish, dynamics, numbers, penn, us_log, us_trade,
+    AREAS, close, count, crosscheck, danish, dynamics, numbers, penn, us_log, us_trade,
 };
 use super::super::unit_root::{LagCriterion, Lags};
 use super::super::{Deterministic, Regressor, SeriesError};
@@ -122,7 +122,7 @@ fn five_deterministic_cases() {
         &expected["us_macro"]["johansen_k3"],
         "by_hand_",
     );
-    for area in ["ARG", "BRA", "DEU", "FRA"] {
+    for area in AREAS {
         let series = ["ln_m", "ln_y", "ln_rpm"].map(|s| penn(area, s));
         let e = &expected["pwt91"][area]["johansen_import_k2"];
         five_cases(area, &series, 2, &[], e, "by_hand_");
@@ -322,7 +322,7 @@ fn engle_granger_tests() {
             expected["us_macro"]["engle_granger"].clone(),
         ),
     ];
-    for area in ["ARG", "BRA", "DEU", "FRA"] {
+    for area in AREAS {
         for (y, x, key) in [
             ("ln_m", ["ln_y", "ln_rpm"], "import_eg"),
             ("ln_x", ["ln_z", "ln_rpx"], "export_eg"),
