@@ -9,7 +9,7 @@ use super::views::{ObservationView, ObservationsView, Page, SeriesView, VintageV
 use crate::finding::Finding;
 use crate::series::algebra::{Over, growth};
 use crate::series::{GrowthKind, SeriesKey, Status};
-use crate::store::dynamic::{ListedSeries, Search};
+use crate::store::search::{ListedSeries, Search};
 use crate::store::vintage::{AsOf, ReadVintage};
 use crate::store::{self, Connection, Database};
 use crate::time::{Date, Frequency, Period};
@@ -113,7 +113,7 @@ pub async fn list(
         limit: limit + 1,
     };
     let mut connection = database.connection().await?;
-    let rows = store::dynamic::search(&mut connection, &search).await?;
+    let rows = store::search::search(&mut connection, &search).await?;
     let page = Page::cut(rows, limit, |r: &ListedSeries| r.id.to_string());
     Ok(Page {
         items: page
