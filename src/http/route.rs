@@ -332,7 +332,10 @@ impl Route {
                 413 => ("the body is too large", &[]),
                 415 => ("the body's type or coding is not taken", &[]),
                 422 => ("the content is wrong: see errors", &[]),
-                503 => ("the database does not answer", &[]),
+                503 => (
+                    "the database does not answer, or is busy: then Retry-After says how long",
+                    &[],
+                ),
                 _ => ("see the problem's detail and errors", &[]),
             };
             responses.insert(
