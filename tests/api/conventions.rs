@@ -151,7 +151,10 @@ async fn texts_that_cannot_be_read_or_kept_are_refused_where_they_stand() {
         "/v1/series?words=%00",
         "/v1/series?area=X%00",
         "/v1/studies?after=%00",
+        "/v1/uploads?after=%00",
+        "/v1/currencies/X%00D",
         "/v1/studies/a%00b",
+        "/v1/preparations/a%00b",
         "/v1/preparations/a%00b/runs",
         "/v1/series/Q.XAA.%00",
     ] {
@@ -159,7 +162,14 @@ async fn texts_that_cannot_be_read_or_kept_are_refused_where_they_stand() {
         assert_eq!(answer.error()["code"], "nul_character", "{path}");
     }
     let titled = TRADE_QUERY.replace("title=Trade", "title=%00");
-    app.upload(&titled, TRADE).await.expect(400);
+    let answer = app.upload(&titled, TRADE).await.expect(400);
+    assert_eq!(answer.error()["parameter"], "title");
+    assert_eq!(answer.at("/upload"), Value::Null);
+    // As an escape it is text of the document.
+    let escaped = sample::PREPARATION.replacen('{', r#"{"title": "a\u0000b", "#, 1);
+    app.put("/v1/preparations/escaped", &escaped)
+        .await
+        .expect(201);
     app.get("/v1/series/nonsense").await.expect(400);
     app.get("/v1/uploads/first").await.expect(404);
     app.get("/v1/uploads/99999999999999999999")
@@ -300,24 +310,6 @@ async fn a_sane_request_id_is_kept_and_any_other_replaced() {
     app.stop().await;
 }
 
-/// All entries of a list, page by page.
-async fn pages(app: &TestApp, path: &str, query: &str) -> Vec<Value> {
-    let mut entries = Vec::new();
-    let mut next = Some(format!("{path}?{query}"));
-    while let Some(path) = next {
-        let page = app.get(&path).await.expect(200);
-        let list = page.json();
-        let list = list.as_array().expect("a list");
-        assert!(!list.is_empty() || entries.is_empty(), "an empty last page");
-        entries.extend(list.iter().cloned());
-        next = page.header("link").map(|link| {
-            let target = link.strip_prefix('<').and_then(|l| l.split_once('>'));
-            target.expect("a target").0.to_owned()
-        });
-    }
-    entries
-}
-
 #[tokio::test]
 async fn lists_page_to_their_end_and_neither_repeat_nor_lose_an_entry() {
     let app = TestApp::start().await;
@@ -350,10 +342,10 @@ async fn lists_page_to_their_end_and_neither_repeat_nor_lose_an_entry() {
         ("/v1/studies/sample/runs", "", 5),
         ("/v1/studies/a/runs", "", 0),
     ] {
-        let whole = pages(&app, path, query).await;
+        let whole = app.pages(&format!("{path}?{query}")).await;
         assert_eq!(whole.len(), count, "{path}?{query}");
         for limit in [1, 2, 3, count.max(1)] {
-            let paged = pages(&app, path, &format!("{query}&limit={limit}")).await;
+            let paged = app.pages(&format!("{path}?{query}&limit={limit}")).await;
             assert_eq!(paged, whole, "{path}?{query} by {limit}");
         }
     }
