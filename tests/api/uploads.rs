@@ -4,7 +4,7 @@ use std::io::Write as _;
 
 use flate2::Compression;
 use flate2::write::GzEncoder;
-use realterms::service::uploads::sweep_refused;
+use realterms::service::uploads::erase_old_refused;
 use realterms::store::Database;
 use reqwest::Method;
 use serde_json::Value;
@@ -395,20 +395,15 @@ async fn old_refused_uploads_are_swept_and_nothing_else() {
         .await
         .expect(422);
     let path = format!("/v1/uploads/{}", refused.at("/upload/id"));
-    let recorded = refused.at("/upload/recorded");
-    let recorded = chrono::DateTime::parse_from_rfc3339(recorded.as_str().unwrap())
-        .unwrap()
-        .to_utc();
-    let second = chrono::TimeDelta::seconds(1);
-    assert_eq!(
-        sweep_refused(&database, recorded - second).await.unwrap(),
-        0
-    );
+    let age = async |hours: i32| {
+        let older = "UPDATE upload SET recorded = clock_timestamp() - make_interval(hours => $1)";
+        let older = sqlx::query(older).bind(hours);
+        older.execute(database.pool()).await.unwrap();
+        erase_old_refused(&database, 30).await.unwrap()
+    };
+    assert_eq!(age(30 * 24 - 1).await, 0);
     app.get(&path).await.expect(200);
-    assert_eq!(
-        sweep_refused(&database, recorded + second).await.unwrap(),
-        1
-    );
+    assert_eq!(age(30 * 24 + 1).await, 1);
     app.get(&path).await.expect(404);
     app.get(&format!("{path}/raw")).await.expect(404);
     app.get(&format!("{path}/rejects")).await.expect(404);
