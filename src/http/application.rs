@@ -92,13 +92,12 @@ impl Application {
             gate: Gate::new(loopback),
             limits: options.limits,
         });
-        let routes: &'static [Route] = Box::leak(super::routes().into_boxed_slice());
         let for_workers = Arc::clone(&shared);
         let server = HttpServer::new(move || {
             let shared = Arc::clone(&for_workers);
             App::new()
                 .app_data(web::Data::from(Arc::clone(&shared)))
-                .configure(|config| mount(config, routes))
+                .configure(|config| mount(config, &super::ROUTES))
                 .default_service(web::route().to(no_such_path))
         })
         .workers(options.workers)
