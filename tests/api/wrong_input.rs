@@ -2,6 +2,7 @@
 
 use std::time::Duration;
 
+use realterms::config::Bytes;
 use reqwest::Method;
 use serde_json::{Value, json};
 
@@ -256,6 +257,47 @@ async fn a_body_that_stops_coming_is_given_up() {
     let answer = wire.answer().await.expect(408);
     assert_eq!(answer.header("connection"), Some("close"));
     assert_eq!(rows(&database).await, before);
+    app.stop().await;
+}
+
+#[tokio::test]
+async fn a_slow_database_does_not_count_against_the_client() {
+    let app = TestApp::start_with(|settings| {
+        settings.body_patience = 2;
+        settings.min_body_rate = Bytes(64 << 20);
+    })
+    .await;
+    let database = app.db.open().await;
+    sqlx::raw_sql(
+        "CREATE FUNCTION rest() RETURNS trigger LANGUAGE plpgsql AS
+             'BEGIN PERFORM pg_sleep(3); RETURN NEW; END';
+         CREATE TRIGGER rest BEFORE INSERT ON upload_part FOR EACH ROW WHEN (NEW.number = 0)
+             EXECUTE FUNCTION rest()",
+    )
+    .execute(database.pool())
+    .await
+    .unwrap();
+    // At first just enough for the first part to be stored, so that nothing is left to be read while it
+    // is; the rows are wrong, which is soon said.
+    let mut file = b"area,measure,currency,period,value\n".to_vec();
+    while file.len() <= (8 << 20) + 1000 {
+        file.resize(file.len() + 60_000, b'x');
+        file.push(b'\n');
+    }
+    let (first, last) = file.split_at((8 << 20) + 100);
+    let length = file.len().to_string();
+    let announced = ("Content-Length", length.as_str());
+    let mut wire = begin(&app, "kind=trade", announced, first).await;
+    let resting = "SELECT EXISTS (SELECT FROM pg_stat_activity WHERE wait_event = 'PgSleep'
+        AND datname = current_database())";
+    while !sqlx::query_scalar::<_, bool>(resting)
+        .fetch_one(database.pool())
+        .await
+        .unwrap()
+    {}
+    wire.send(last).await;
+    let answer = wire.answer().await.expect(422);
+    assert_eq!(answer.at("/code"), "upload_refused");
     app.stop().await;
 }
 
