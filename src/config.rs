@@ -128,7 +128,7 @@ pub struct Settings {
         env = "REALTERMS_BODY_PATIENCE",
         value_name = "SECONDS"
     )]
-    #[arg(default_value_t = 30, value_parser = clap::value_parser!(u64).range(1..))]
+    #[arg(default_value_t = 30, value_parser = clap::value_parser!(u64).range(1..=86_400))]
     pub body_patience: u64,
 
     /// Days that refused uploads are kept with their report and bytes

@@ -39,6 +39,7 @@ fn a_wrong_setting_is_named_by_flag_and_variable() {
         ("REALTERMS_LISTEN", "here", "--listen"),
         ("REALTERMS_MAX_UPLOAD_BYTES", "4GB", "--max-upload-bytes"),
         ("REALTERMS_WORKERS", "0", "--workers"),
+        ("REALTERMS_BODY_PATIENCE", "86401", "--body-patience"),
         ("REALTERMS_LOG", "x=y=z", "--log"),
     ];
     for (variable, value, flag) in wrong {
