@@ -178,6 +178,11 @@ async fn tokens_are_made_listed_and_revoked_by_the_command() {
         "{error}"
     );
 
+    for name in ["", " ", "a\nb", "office ", &"x".repeat(101)] {
+        let (made, _, error) = token(&["create", "--name", name, "--role", "read"]);
+        assert!(!made && error.contains("1 to 100 characters"), "{error}");
+    }
+
     // The running service asks for it from now on.
     until(&app, 401).await;
     app.use_token(Some(secret));
