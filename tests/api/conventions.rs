@@ -136,6 +136,7 @@ async fn texts_that_cannot_be_read_or_kept_are_refused_where_they_stand() {
         "/v1/uploads",
         "/v1/uploads/1/rejects",
         "/v1/studies/sample/runs",
+        "/v1/series/Q.XAA.exports/vintages",
     ] {
         let answer = app.get(&format!("{list}?after=here")).await.expect(400);
         assert_eq!(answer.error()["code"], "bad_cursor");
@@ -327,20 +328,31 @@ async fn lists_page_to_their_end_and_neither_repeat_nor_lose_an_entry() {
             .expect(201);
         app.post("/v1/studies/sample/runs", "").await.expect(201);
     }
+    // What comes last was released first and names a quarter more: three vintages in one revision.
+    for (released, value, more) in [
+        ("2022-01-01", "101", ""),
+        ("2023-01-01", "102", ""),
+        ("2021-06-30", "103", "2021-Q1,116\n"),
+    ] {
+        let query = TRADE_QUERY.replace("2021-03-31", released);
+        let file = TRADE.replace("104.5", value) + more;
+        app.upload(&query, file).await.expect(201);
+    }
     let bad = "period,value\n2019-Q1,a\n2019-Q2,b\n2019-Q3,c\n2019-Q4,d\n2020-Q1,e\n";
     let refused = app.upload(TRADE_QUERY, bad).await.expect(422);
     let refused = refused.at("/upload/id");
     for (path, query, count) in [
         ("/v1/series", "area=XAA,XBB&words=XAA%20a", 5),
         ("/v1/series", "", 6),
-        ("/v1/uploads", "", 4),
-        ("/v1/uploads", "state=landed&kind=trade", 2),
+        ("/v1/uploads", "", 7),
+        ("/v1/uploads", "state=landed&kind=trade", 5),
         (&format!("/v1/uploads/{refused}/rejects"), "", 5),
         ("/v1/preparations", "", 2),
         ("/v1/preparations/sample/runs", "", 5),
         ("/v1/studies", "", 5),
         ("/v1/studies/sample/runs", "", 5),
         ("/v1/studies/a/runs", "", 0),
+        ("/v1/series/Q.XAA.exports/vintages", "", 6),
     ] {
         let whole = app.pages(&format!("{path}?{query}")).await;
         assert_eq!(whole.len(), count, "{path}?{query}");
