@@ -3,7 +3,7 @@
 use crate::http;
 use crate::intake;
 use crate::service::receiving::Limits;
-use crate::store::cluster::ClusterOptions;
+use crate::store::cluster::{Binaries, ClusterOptions};
 use crate::store::{DatabaseOptions, Place};
 use crate::telemetry::LogFormat;
 use clap::builder::Resettable;
@@ -128,7 +128,7 @@ pub struct Settings {
         env = "REALTERMS_BODY_PATIENCE",
         value_name = "SECONDS"
     )]
-    #[arg(default_value_t = 30, value_parser = clap::value_parser!(u64).range(1..))]
+    #[arg(default_value_t = 30, value_parser = clap::value_parser!(u64).range(1..=86_400))]
     pub body_patience: u64,
 
     /// Days that refused uploads are kept with their report and bytes
@@ -204,6 +204,17 @@ impl Settings {
         }
     }
 
+    /// The programs that dump and restore: of a private cluster, those of the version that made it.
+    ///
+    /// # Errors
+    /// None that fit; or no data folder is set and none can be derived.
+    pub fn tools(&self, holder: &str) -> anyhow::Result<Binaries> {
+        Ok(match self.database_url {
+            Some(_) => Binaries::find(self.postgres_bin.as_deref(), &search_path(), None)?,
+            None => self.cluster(holder)?.find_binaries()?,
+        })
+    }
+
     /// The private cluster that these settings name.
     ///
     /// # Errors
@@ -213,11 +224,10 @@ impl Settings {
         let folder = folder.ok_or_else(|| {
             anyhow::anyhow!("no data folder: set --data-folder (REALTERMS_DATA_FOLDER), or HOME")
         })?;
-        let search_path = std::env::var_os("PATH").unwrap_or_default();
         Ok(ClusterOptions {
             folder,
             binaries: self.postgres_bin.clone(),
-            search_path: std::env::split_paths(&search_path).collect(),
+            search_path: search_path(),
             temp_folder: std::env::temp_dir(),
             keeper: std::env::current_exe()?,
             holder: holder.to_owned(),
@@ -225,6 +235,11 @@ impl Settings {
             disposable: false,
         })
     }
+}
+
+/// The folders of PATH.
+fn search_path() -> Vec<PathBuf> {
+    std::env::split_paths(&std::env::var_os("PATH").unwrap_or_default()).collect()
 }
 
 /// `/var/lib/realterms` for root, else `realterms` in the XDG data folder.

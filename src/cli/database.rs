@@ -45,7 +45,7 @@ impl DatabaseCommand {
             }
             Self::Dump { file } => {
                 let holder = "realterms database dump";
-                let tools = cluster::find_binaries(&settings.cluster(holder)?)?;
+                let tools = settings.tools(holder)?;
                 let options = settings.database(holder, true)?;
                 let database = Database::open_without_migrating(&options).await?;
                 let dumped = archive::dump(&database, &tools, &file).await;
@@ -56,7 +56,7 @@ impl DatabaseCommand {
             }
             Self::Restore { file } => {
                 let holder = "realterms database restore";
-                let tools = cluster::find_binaries(&settings.cluster(holder)?)?;
+                let tools = settings.tools(holder)?;
                 let database = Database::open(&settings.database(holder, false)?).await?;
                 let restored = archive::restore(&database, &tools, &file).await;
                 database.close().await;
@@ -109,8 +109,7 @@ async fn start(settings: &Settings) -> anyhow::Result<()> {
 
 fn stop(settings: &Settings) -> anyhow::Result<()> {
     only_private(settings)?;
-    let folder = settings.cluster("realterms database stop")?.folder;
-    match cluster::stop(&folder)? {
+    match cluster::stop(&settings.cluster("realterms database stop")?)? {
         Stopped::Holder(pid) => say(format!("stopped with process {pid}, which held it")),
         Stopped::Leftover => say("stopped a server that nobody held"),
         Stopped::Nothing => say("nothing was running"),

@@ -4,6 +4,7 @@ use std::fs::File;
 use std::io::Read;
 
 use anyhow::Context;
+use clap::builder::PossibleValue;
 use clap::{Subcommand, ValueEnum};
 
 use super::say;
@@ -21,7 +22,7 @@ pub(super) enum TokenCommand {
         name: String,
         /// What it may do
         #[arg(long, value_enum)]
-        role: RoleName,
+        role: Role,
     },
     /// List tokens, without their secrets
     List,
@@ -33,24 +34,18 @@ pub(super) enum TokenCommand {
     },
 }
 
-/// Roles as the command line names them.
-#[derive(Clone, Copy, Debug, ValueEnum)]
-pub(super) enum RoleName {
-    /// Read everything
-    Read,
-    /// Send data and documents and run them, too
-    Contribute,
-    /// Everything
-    Administer,
-}
+impl ValueEnum for Role {
+    fn value_variants<'a>() -> &'a [Self] {
+        &Self::ALL
+    }
 
-impl RoleName {
-    fn role(self) -> Role {
-        match self {
-            Self::Read => Role::Read,
-            Self::Contribute => Role::Contribute,
-            Self::Administer => Role::Administer,
-        }
+    fn to_possible_value(&self) -> Option<PossibleValue> {
+        let may = match self {
+            Self::Read => "Read everything",
+            Self::Contribute => "Send data and documents and run them, too",
+            Self::Administer => "Everything",
+        };
+        Some(PossibleValue::new(self.as_str()).help(may))
     }
 }
 
@@ -69,7 +64,7 @@ impl TokenCommand {
                 File::open("/dev/urandom")
                     .and_then(|mut source| source.read_exact(&mut random))
                     .context("no random bytes from /dev/urandom")?;
-                let secret = tokens::create(database, &name, role.role(), random).await;
+                let secret = tokens::create(database, &name, role, random).await;
                 say(secret.map_err(told)?);
             }
             Self::List => {

@@ -28,7 +28,7 @@ pub async fn run(
     let started = Instant::now();
     let mut settings = settings.clone();
     settings.listen = SocketAddr::from((Ipv4Addr::LOCALHOST, 0));
-    let database = Database::open(&database_options(&settings)?).await?;
+    let database = open(&database_options(&settings)?).await?;
     let application = Application::build(settings.serving(), database).await?;
     let base = format!("http://{}", application.address());
     let handle = application.handle();
@@ -65,6 +65,17 @@ async fn told(
         look_further("$api", walked.run, out)?;
     }
     Ok(())
+}
+
+/// Opens the database; a fresh folder goes again where that fails, since no keeper may have taken it over.
+async fn open(options: &DatabaseOptions) -> anyhow::Result<Database> {
+    let opened = Database::open(options).await;
+    if let (Err(_), Place::Held(cluster)) = (&opened, &options.place)
+        && cluster.disposable
+    {
+        let _ = std::fs::remove_dir_all(&cluster.folder);
+    }
+    Ok(opened?)
 }
 
 fn database_options(settings: &Settings) -> anyhow::Result<DatabaseOptions> {

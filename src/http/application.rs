@@ -92,13 +92,12 @@ impl Application {
             gate: Gate::new(loopback),
             limits: options.limits,
         });
-        let routes: &'static [Route] = Box::leak(super::routes().into_boxed_slice());
         let for_workers = Arc::clone(&shared);
         let server = HttpServer::new(move || {
             let shared = Arc::clone(&for_workers);
             App::new()
                 .app_data(web::Data::from(Arc::clone(&shared)))
-                .configure(|config| mount(config, routes))
+                .configure(|config| mount(config, &super::ROUTES))
                 .default_service(web::route().to(no_such_path))
         })
         .workers(options.workers)
@@ -200,7 +199,12 @@ fn mount(config: &mut web::ServiceConfig, routes: &'static [Route]) {
                         ),
                     )
                     .with_header("Allow", allow);
-                    finish(&request, Instant::now(), Err(problem))
+                    finish(
+                        &request,
+                        &request_id(&request),
+                        Instant::now(),
+                        Err(problem),
+                    )
                 }
             })),
         );
@@ -216,7 +220,12 @@ async fn no_such_path(request: HttpRequest) -> HttpResponse {
             request.path()
         ),
     );
-    finish(&request, Instant::now(), Err(problem))
+    finish(
+        &request,
+        &request_id(&request),
+        Instant::now(),
+        Err(problem),
+    )
 }
 
 /// Runs one operation: who calls, may they, are the parameters known, then the handler.
@@ -227,7 +236,8 @@ async fn dispatch(
     shared: Arc<Shared>,
 ) -> HttpResponse {
     let started = Instant::now();
-    let span = tracing::info_span!("request", operation = route.name);
+    let request_id = request_id(&request);
+    let span = tracing::info_span!("request", request.id = %request_id, operation = route.name);
     let outcome = async {
         let principal = admit(route, &request, &shared).await?;
         let call = Call::new(shared, route, request.clone(), payload, principal)?;
@@ -235,7 +245,7 @@ async fn dispatch(
     }
     .instrument(span)
     .await;
-    finish(&request, started, outcome)
+    finish(&request, &request_id, started, outcome)
 }
 
 async fn admit(
@@ -331,10 +341,10 @@ fn refuse_foreign_page(request: &HttpRequest) -> Result<(), Problem> {
 /// Numbers, logs and completes an answer.
 fn finish(
     request: &HttpRequest,
+    request_id: &str,
     started: Instant,
     outcome: Result<HttpResponse, Problem>,
 ) -> HttpResponse {
-    let request_id = request_id(request);
     let duration_ms = started.elapsed().as_secs_f64() * 1000.0;
     let (method, path) = (request.method().as_str(), request.path());
     let mut response = match outcome {
@@ -354,10 +364,10 @@ fn finish(
                     detail = problem.detail, "refused"
                 ),
             }
-            problem.answer(&request_id)
+            problem.answer(request_id)
         }
     };
-    if let Ok(value) = HeaderValue::from_str(&request_id) {
+    if let Ok(value) = HeaderValue::from_str(request_id) {
         response.headers_mut().insert(REQUEST_ID, value);
     }
     if request.headers().contains_key(TRANSFER_ENCODING) {

@@ -76,7 +76,7 @@ pub(super) fn routes() -> Vec<Route> {
             problems: &[],
             handler: |call| {
                 Box::pin(async move {
-                    let document = openapi::document().into_bytes();
+                    let document = openapi::document().as_bytes().to_vec();
                     Ok(call.body(StatusCode::OK, Media::Json, None, document))
                 })
             },

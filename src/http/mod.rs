@@ -20,7 +20,11 @@ mod uploads;
 
 pub use application::{Application, Options};
 
-/// All operations.
+use std::sync::LazyLock;
+
+/// The table of all operations.
+static ROUTES: LazyLock<Vec<route::Route>> = LazyLock::new(routes);
+
 fn routes() -> Vec<route::Route> {
     let mut routes = health::routes();
     routes.extend(uploads::routes());

@@ -1,13 +1,19 @@
 //! The `OpenAPI` 3.1 document, made from the table of routes.
 
+use std::sync::LazyLock;
+
 use super::route::{Route, Schemas};
+
+static DOCUMENT: LazyLock<String> = LazyLock::new(|| {
+    let mut text = serde_json::to_string_pretty(&value(&super::ROUTES)).unwrap_or_default();
+    text.push('\n');
+    text
+});
 
 /// The document as pretty-printed JSON with a final line break.
 #[must_use]
-pub fn document() -> String {
-    let mut text = serde_json::to_string_pretty(&value(&super::routes())).unwrap_or_default();
-    text.push('\n');
-    text
+pub fn document() -> &'static str {
+    &DOCUMENT
 }
 
 fn value(routes: &[Route]) -> serde_json::Value {

@@ -153,6 +153,13 @@ impl From<Fault> for Problem {
                     "the database did not answer as it should; nothing was changed; try again",
                 )
             },
+            Fault::Busy => Self::new(
+                StatusCode::SERVICE_UNAVAILABLE,
+                "busy",
+                "all connections to the database are in use, by uploads under way where this is one; \
+                 nothing was changed; try again",
+            )
+            .with_header("Retry-After", "10"),
             Fault::OutcomeUnknown(error) => Self {
                 internal: Some(error.to_string().into()),
                 ..Self::new(

@@ -262,14 +262,14 @@ impl Route {
     }
 
     /// Statuses of all problem answers. 400 can always happen, since unknown parameters are refused;
-    /// 401, 403 and 503 where a role is asked for, since tokens are in the database; 408 and 413 where
+    /// 401, 403 and 503 where a role is asked for, since tokens are in the database and pages from
+    /// elsewhere are refused; 408 and 413 where
     /// a body is read.
     fn problem_statuses(&self) -> Vec<u16> {
         let mut statuses = vec![400];
         match self.role {
             None => {}
-            Some(Role::Read) => statuses.extend([401, 503]),
-            Some(Role::Contribute | Role::Administer) => statuses.extend([401, 403, 503]),
+            Some(_) => statuses.extend([401, 403, 503]),
         }
         if !self.body.is_empty() {
             statuses.extend([408, 413]);
@@ -320,7 +320,10 @@ impl Route {
             let (description, headers): (&str, &[&str]) = match status {
                 400 => ("a parameter, a header or the syntax is wrong", &[]),
                 401 => ("no valid token", &["WWW-Authenticate"]),
-                403 => ("the token's role is too low", &[]),
+                403 => (
+                    "the token's role is too low, or a page from elsewhere asks without one",
+                    &[],
+                ),
                 404 => ("it does not exist", &[]),
                 406 => ("Accept allows none of the media types", &[]),
                 408 => ("the body comes too slowly", &[]),
@@ -329,7 +332,10 @@ impl Route {
                 413 => ("the body is too large", &[]),
                 415 => ("the body's type or coding is not taken", &[]),
                 422 => ("the content is wrong: see errors", &[]),
-                503 => ("the database does not answer", &[]),
+                503 => (
+                    "the database does not answer, or is busy: then Retry-After says how long",
+                    &[],
+                ),
                 _ => ("see the problem's detail and errors", &[]),
             };
             responses.insert(

@@ -156,17 +156,18 @@ pub(super) fn routes() -> Vec<Route> {
             method: Method::Get,
             path: "/v1/series/{key}/vintages",
             name: "list_vintages",
-            summary: "All vintages with what each changed, oldest release first",
+            summary: "The vintages with what each changed, oldest release first",
             role: Some(Role::Read),
-            parameters: Vec::new,
+            parameters: paging,
             headers: &[],
             body: &[],
-            successes: || vec![route::list::<VintageView>(200, "the vintages")],
+            successes: || vec![route::list::<VintageView>(200, "a page")],
             problems: &[404],
             handler: |call| {
                 Box::pin(async move {
-                    let views = series::vintages(&call.shared.database, &key(&call)?).await?;
-                    call.json(StatusCode::OK, &views)
+                    let (database, key) = (&call.shared.database, key(&call)?);
+                    let page = series::vintages(database, &key, call.after(), call.limit());
+                    call.page(&page.await?)
                 })
             },
         },

@@ -106,19 +106,27 @@ impl Receiver<'_> {
             let sender = to_worker.clone();
             tokio::select! {
                 biased;
-                event = from_worker.recv() => match event {
-                    Some(FromWorker::Part(bytes)) => {
-                        store::upload::insert_part(connection, self.upload, self.parts, &bytes).await?;
-                        self.parts += 1;
+                event = from_worker.recv() => {
+                    let began = Instant::now();
+                    match event {
+                        Some(FromWorker::Part(bytes)) => {
+                            store::upload::insert_part(connection, self.upload, self.parts, &bytes)
+                                .await?;
+                            self.parts += 1;
+                        }
+                        Some(FromWorker::Pieces(pieces)) => self.stage(connection, pieces).await?,
+                        Some(FromWorker::Done(body)) => return Ok(*body),
+                        Some(FromWorker::Failed(fatal)) => return Err(unreadable(&fatal)),
+                        None => {
+                            let reason = worker.await.err().map_or_else(String::new, |e| e.to_string());
+                            return Err(Fault::Internal(format!("the reading thread ended: {reason}")));
+                        }
                     }
-                    Some(FromWorker::Pieces(pieces)) => self.stage(connection, pieces).await?,
-                    Some(FromWorker::Done(body)) => return Ok(*body),
-                    Some(FromWorker::Failed(fatal)) => return Err(unreadable(&fatal)),
-                    None => {
-                        let reason = worker.await.err().map_or_else(String::new, |e| e.to_string());
-                        return Err(Fault::Internal(format!("the reading thread ended: {reason}")));
+                    // All that a chunk waits is excused when it goes on.
+                    if pending.is_none() {
+                        pace.excuse(began.elapsed());
                     }
-                },
+                }
                 permit = room(sender.as_ref()), if pending.is_some() => {
                     if let (Some(permit), Some(chunk)) = (permit, pending.take()) {
                         permit.send(chunk);

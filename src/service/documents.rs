@@ -269,7 +269,12 @@ pub async fn runs(
 
 /// Reads a cursor that is a number.
 pub(super) fn cursor(text: &str) -> Result<i64, Fault> {
-    text.parse().map_err(|_| Fault::BadRequest {
+    text.parse().map_err(|_| bad_cursor(text))
+}
+
+/// The answer to a cursor that no page can have given out.
+pub(super) fn bad_cursor(text: &str) -> Fault {
+    Fault::BadRequest {
         detail: format!("'{text}' is no cursor of this list"),
         errors: vec![
             Finding::error("bad_cursor", "the cursor was not given out by this list")
@@ -277,7 +282,7 @@ pub(super) fn cursor(text: &str) -> Result<i64, Fault> {
                 .found(text)
                 .remedy("take it from the header Link of the page before"),
         ],
-    })
+    }
 }
 
 /// RFC 3339 in UTC, to the microsecond that the database keeps.

@@ -61,8 +61,10 @@ pub enum Fault {
         /// Which rate was expected.
         detail: String,
     },
-    /// The database failed.
+    /// The database is away, or asks for another try.
     Store(store::Error),
+    /// More is asked for at once than there are connections.
+    Busy,
     /// The database went away while it committed: all was done, or nothing.
     OutcomeUnknown(store::Error),
     /// A fault of the program.
@@ -81,6 +83,7 @@ impl std::fmt::Display for Fault {
             | Self::TooSlow { detail } => f.write_str(detail),
             Self::NotFound { what } => write!(f, "there is no {what}"),
             Self::Store(error) => write!(f, "the database failed: {error}"),
+            Self::Busy => f.write_str("no connection to the database became free in time"),
             Self::OutcomeUnknown(error) => {
                 write!(f, "all was done, or nothing; look which: {error}")
             }
@@ -93,7 +96,11 @@ impl From<store::Error> for Fault {
     fn from(error: store::Error) -> Self {
         match error {
             store::Error::OutcomeUnknown(_) => Self::OutcomeUnknown(error),
-            store::Error::Database(_) | store::Error::Corrupt { .. } => Self::Store(error),
+            store::Error::Busy => Self::Busy,
+            store::Error::Database(_) if error.is_passing() => Self::Store(error),
+            store::Error::Database(_) | store::Error::Corrupt { .. } => {
+                Self::Internal(error.to_string())
+            }
         }
     }
 }

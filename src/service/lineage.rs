@@ -10,7 +10,8 @@ use super::views::Pin;
 use super::{Fault, preparations};
 use crate::finding::Finding;
 use crate::series::SeriesKey;
-use crate::series::provenance::{self, Origin};
+use crate::series::provenance::{self, Origin, OriginRun};
+use crate::store::upload::Publication;
 use crate::store::{self, Database};
 use crate::time::Period;
 
@@ -102,7 +103,13 @@ pub async fn lineage(
         }
     };
     let vintage = vintage(database, key, moment).await?;
-    let runs = provenance::decode(&vintage.provenance).unwrap_or_default();
+    let runs = provenance::decode(&vintage.provenance).ok_or_else(|| {
+        let revision = vintage.revision;
+        Fault::Internal(format!(
+            "the provenance of {key} at revision {revision} cannot be read"
+        ))
+    })?;
+    let publications = publications(database, &runs).await?;
     let mut spans = Vec::new();
     let mut origins: HashMap<i64, OriginView> = HashMap::new();
     let mut offset = 0_i32;
@@ -127,14 +134,18 @@ pub async fn lineage(
         let origin = match run.first {
             Origin::Absent => continue,
             Origin::Upload { id, line } => {
+                let publication = publications.get(&id).ok_or_else(|| {
+                    Fault::Internal(format!("upload {id} of a stored observation is gone"))
+                })?;
                 let first = i64::from(line) + run.line_step * i64::from(skipped);
-                upload(
-                    database,
-                    id,
-                    u32::try_from(first).unwrap_or(line),
-                    run.line_step,
-                )
-                .await?
+                OriginView::Upload {
+                    upload: id,
+                    title: publication.title.clone(),
+                    publisher: publication.publisher.clone(),
+                    released: store::date(publication.released)?.to_string(),
+                    line: u32::try_from(first).unwrap_or(line),
+                    line_step: run.line_step,
+                }
             }
             Origin::Run { id } => match origins.get(&id) {
                 Some(known) => known.clone(),
@@ -159,22 +170,19 @@ pub async fn lineage(
     })
 }
 
-async fn upload(
+/// The publications that observations come from, by number of the upload.
+async fn publications(
     database: &Database,
-    id: i64,
-    line: u32,
-    line_step: i64,
-) -> Result<OriginView, Fault> {
+    runs: &[OriginRun],
+) -> Result<HashMap<i64, Publication>, Fault> {
+    let upload = |run: &OriginRun| match run.first {
+        Origin::Upload { id, .. } => Some(id),
+        Origin::Absent | Origin::Run { .. } => None,
+    };
+    let mut ids: Vec<i64> = runs.iter().filter_map(upload).collect();
+    ids.sort_unstable();
+    ids.dedup();
     let mut connection = database.connection().await?;
-    let row = store::upload::get(&mut connection, id)
-        .await?
-        .ok_or_else(|| Fault::Internal(format!("upload {id} of a stored observation is gone")))?;
-    Ok(OriginView::Upload {
-        upload: id,
-        title: row.title,
-        publisher: row.publisher,
-        released: store::date(row.released)?.to_string(),
-        line,
-        line_step,
-    })
+    let found = store::upload::publications(&mut connection, &ids).await?;
+    Ok(found.into_iter().map(|p| (p.id, p)).collect())
 }

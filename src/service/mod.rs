@@ -13,6 +13,7 @@ pub mod lineage;
 pub mod preparations;
 mod preview;
 pub mod receiving;
+mod retry;
 pub mod series;
 pub mod studies;
 pub mod tokens;

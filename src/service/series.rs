@@ -3,13 +3,13 @@
 use std::collections::BTreeMap;
 
 use super::Fault;
-use super::documents::{cursor, timestamp};
+use super::documents::{bad_cursor, cursor, timestamp};
 use super::preview::series;
 use super::views::{ObservationView, ObservationsView, Page, SeriesView, VintageView};
 use crate::finding::Finding;
 use crate::series::algebra::{Over, growth};
 use crate::series::{GrowthKind, SeriesKey, Status};
-use crate::store::dynamic::{ListedSeries, Search};
+use crate::store::search::{ListedSeries, Search};
 use crate::store::vintage::{AsOf, ReadVintage};
 use crate::store::{self, Connection, Database};
 use crate::time::{Date, Frequency, Period};
@@ -128,7 +128,7 @@ pub async fn list(
         limit: limit + 1,
     };
     let mut connection = database.connection().await?;
-    let rows = store::dynamic::search(&mut connection, &search).await?;
+    let rows = store::search::search(&mut connection, &search).await?;
     let page = Page::cut(rows, limit, |r: &ListedSeries| r.id.to_string());
     Ok(Page {
         items: page
@@ -307,36 +307,62 @@ pub async fn version(
     Ok(store::vintage::version(&mut connection, key, as_of).await?)
 }
 
-/// All vintages of a series, oldest release first.
+/// Vintages of a series, oldest release first.
 ///
 /// # Errors
-/// [`Fault::NotFound`]; [`Fault::Store`].
-pub async fn vintages(database: &Database, key: &SeriesKey) -> Result<Vec<VintageView>, Fault> {
+/// [`Fault::NotFound`]; [`Fault::BadRequest`] for a wrong cursor; [`Fault::Store`].
+pub async fn vintages(
+    database: &Database,
+    key: &SeriesKey,
+    after: Option<&str>,
+    limit: i64,
+) -> Result<Page<VintageView>, Fault> {
+    // An upload released earlier may come between two pages: the cursor names a vintage, no number of them.
+    let after = after
+        .map(|text| vintage_cursor(text).ok_or_else(|| bad_cursor(text)))
+        .transpose()?;
     let mut connection = database.connection().await?;
     let rows = store::vintage::list(&mut connection, key).await?;
     if rows.is_empty() {
         return Err(no_series(key));
     }
-    rows.into_iter()
-        .map(|r| {
-            let ends = ends(key.frequency(), r.start_period, r.observation_count);
-            let (first, last) = ends.map_or((None, None), |(f, l)| (Some(f), Some(l)));
-            Ok(VintageView {
-                segment: r.segment,
-                unit_text: r.unit.0.to_string(),
-                released: store::date(r.released)?.to_string(),
-                recorded: timestamp(r.recorded),
-                revision: r.revision,
-                action: r.action,
-                upload: r.upload_id,
-                run: r.run_id,
-                first,
-                last,
-                observations: r.observation_count,
-                new: r.new_count,
-                revised: r.revised_count,
-                emptied: r.emptied_count,
-            })
-        })
-        .collect()
+    let mut views = Vec::new();
+    for r in rows {
+        let released = store::date(r.released)?;
+        if after.is_some_and(|after| (released, r.revision, r.segment) <= after) {
+            continue;
+        }
+        let ends = ends(key.frequency(), r.start_period, r.observation_count);
+        let (first, last) = ends.map_or((None, None), |(f, l)| (Some(f), Some(l)));
+        views.push(VintageView {
+            segment: r.segment,
+            unit_text: r.unit.0.to_string(),
+            released: released.to_string(),
+            recorded: timestamp(r.recorded),
+            revision: r.revision,
+            action: r.action,
+            upload: r.upload_id,
+            run: r.run_id,
+            first,
+            last,
+            observations: r.observation_count,
+            new: r.new_count,
+            revised: r.revised_count,
+            emptied: r.emptied_count,
+        });
+    }
+    Ok(Page::cut(views, limit, |v| {
+        format!("{}_{}_{}", v.released, v.revision, v.segment)
+    }))
+}
+
+/// Release date, revision and segment of a vintage: the order of their list.
+fn vintage_cursor(text: &str) -> Option<(Date, i64, i32)> {
+    let (released, rest) = text.split_once('_')?;
+    let (revision, segment) = rest.split_once('_')?;
+    Some((
+        released.parse().ok()?,
+        revision.parse().ok()?,
+        segment.parse().ok()?,
+    ))
 }

@@ -7,6 +7,7 @@ use std::time::{Duration, Instant};
 use sha2::{Digest, Sha256};
 
 use super::Fault;
+use crate::finding::Finding;
 use crate::store::{self, Connection, Database};
 
 /// What a caller may do; each role may do what the ones before it may.
@@ -153,11 +154,30 @@ fn hash(token: &str) -> [u8; 32] {
     Sha256::digest(token.as_bytes()).into()
 }
 
+/// Longest name of a token, in characters.
+const NAME_LENGTH: usize = 100;
+
+/// A name is an author: it has to be seen, and to stay on its line.
+fn check_name(name: &str) -> Result<(), Fault> {
+    let seen = !name.is_empty() && name.trim() == name && !name.contains(char::is_control);
+    if seen && name.chars().count() <= NAME_LENGTH {
+        return Ok(());
+    }
+    let expected = format!(
+        "1 to {NAME_LENGTH} characters without control characters and no space at either end"
+    );
+    let message = format!("{name:?} is no name for a token: it takes {expected}");
+    let fault = Finding::error("bad_name", message)
+        .found(name)
+        .expected(expected);
+    Err(Fault::invalid("bad_name", vec![fault]))
+}
+
 /// Makes a token and answers its secret, which is shown once and not stored. `random` must be 24
 /// unpredictable bytes.
 ///
 /// # Errors
-/// [`Fault::Conflict`] where a valid token has the name; [`Fault::Store`].
+/// [`Fault::Invalid`] for a name that cannot be one; [`Fault::Conflict`] where a valid token has the name; [`Fault::Store`].
 pub async fn create(
     database: &Database,
     name: &str,
@@ -165,6 +185,7 @@ pub async fn create(
     random: [u8; 24],
 ) -> Result<String, Fault> {
     use std::fmt::Write as _;
+    check_name(name)?;
     let mut secret = String::from(PREFIX);
     for byte in random {
         let _ = write!(secret, "{byte:02x}");

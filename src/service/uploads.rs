@@ -8,8 +8,9 @@ use futures_util::{StreamExt, TryStreamExt};
 use super::documents::{cursor, timestamp};
 use super::landing::{self, Landing};
 use super::receiving::Request;
+use super::retry::retried;
 use super::views::{ObservationCounts, OpenedSegment, Page, SeriesList, UploadReport, UploadView};
-use super::{Fault, preview};
+use super::{Fault, blocking, preview};
 use crate::clock;
 use crate::finding::{Finding, Severity};
 use crate::intake::{Intake, Reject, Understood};
@@ -243,9 +244,9 @@ pub async fn raw(
     let upload = get(database, id).await?;
     let bytes = store::upload::parts(database, id)
         .map_err(Fault::from)
-        .map(|part| {
-            let part = part?;
-            zstd::stream::decode_all(part.as_slice())
+        .and_then(|part| async move {
+            blocking(move || zstd::stream::decode_all(part.as_slice()))
+                .await?
                 .map_err(|e| Fault::Internal(format!("a stored part cannot be unpacked: {e}")))
         })
         .boxed();
@@ -257,7 +258,12 @@ pub async fn raw(
 /// # Errors
 /// [`Fault::NotFound`]; [`Fault::Conflict`] where it is not held; [`Fault::Store`].
 pub async fn accept(database: &Database, id: i64, author: &str) -> Result<UploadView, Fault> {
-    let mut transaction = database.begin_upload().await?;
+    retried(async || try_to_accept(database, id, author).await).await?;
+    get(database, id).await
+}
+
+async fn try_to_accept(database: &Database, id: i64, author: &str) -> Result<(), Fault> {
+    let mut transaction = database.begin().await?;
     let state = store::upload::lock(&mut transaction, id)
         .await?
         .ok_or_else(|| no_upload(id))?;
@@ -293,8 +299,7 @@ pub async fn accept(database: &Database, id: i64, author: &str) -> Result<Upload
         &report,
     )
     .await?;
-    store::commit(transaction).await?;
-    get(database, id).await
+    Ok(store::commit(transaction).await?)
 }
 
 /// Withdraws an upload: what it said no longer counts, as if it had never come.
@@ -302,43 +307,35 @@ pub async fn accept(database: &Database, id: i64, author: &str) -> Result<Upload
 /// # Errors
 /// [`Fault::NotFound`]; [`Fault::Conflict`] where it neither landed nor is held; [`Fault::Store`].
 pub async fn withdraw(database: &Database, id: i64, author: &str) -> Result<UploadView, Fault> {
-    let mut transaction = database.begin_upload().await?;
+    retried(async || try_to_withdraw(database, id, author).await).await?;
+    get(database, id).await
+}
+
+async fn try_to_withdraw(database: &Database, id: i64, author: &str) -> Result<(), Fault> {
+    let mut transaction = database.begin().await?;
     let state = store::upload::lock(&mut transaction, id)
         .await?
         .ok_or_else(|| no_upload(id))?;
+    if state != "held" && state != "landed" {
+        return Err(Fault::Conflict {
+            code: "not_current",
+            detail: format!("upload {id} is {state}; there is nothing to withdraw"),
+        });
+    }
     let row = store::upload::get(&mut transaction, id)
         .await?
         .ok_or_else(|| no_upload(id))?;
     let report = row.report.0;
-    match state.as_str() {
-        "held" => {
-            store::upload::set_state(&mut transaction, id, "withdrawn", None, None, &report)
-                .await?;
-        }
-        "landed" => {
-            store::upload::set_state(&mut transaction, id, "withdrawn", None, None, &report)
-                .await?;
-            let released = store::date(row.released)?;
-            let revision = landing::unland(&mut transaction, id, released, author).await?;
-            store::upload::set_state(
-                &mut transaction,
-                id,
-                "withdrawn",
-                None,
-                Some(revision.number),
-                &report,
-            )
-            .await?;
-        }
-        other => {
-            return Err(Fault::Conflict {
-                code: "not_current",
-                detail: format!("upload {id} is {other}; there is nothing to withdraw"),
-            });
-        }
+    let withdrawn = "withdrawn";
+    // What is replayed is what has landed, so the state comes first and the revision after.
+    store::upload::set_state(&mut transaction, id, withdrawn, None, None, &report).await?;
+    if state == "landed" {
+        let released = store::date(row.released)?;
+        let revision = landing::unland(&mut transaction, id, released, author).await?;
+        let revision = Some(revision.number);
+        store::upload::set_state(&mut transaction, id, withdrawn, None, revision, &report).await?;
     }
-    store::commit(transaction).await?;
-    get(database, id).await
+    Ok(store::commit(transaction).await?)
 }
 
 /// Erases refused uploads recorded more than so many days ago.
@@ -346,20 +343,10 @@ pub async fn withdraw(database: &Database, id: i64, author: &str) -> Result<Uplo
 /// # Errors
 /// [`Fault::Store`].
 pub async fn erase_old_refused(database: &Database, days: u32) -> Result<u64, Fault> {
-    match clock::now().checked_sub_days(chrono::Days::new(u64::from(days))) {
-        Some(before) => sweep_refused(database, before).await,
-        None => Ok(0),
-    }
-}
-
-/// Erases refused uploads that are older than the retention allows.
-///
-/// # Errors
-/// [`Fault::Store`].
-pub async fn sweep_refused(
-    database: &Database,
-    before: chrono::DateTime<chrono::Utc>,
-) -> Result<u64, Fault> {
+    let days = chrono::Days::new(u64::from(days));
+    let Some(before) = clock::now().checked_sub_days(days) else {
+        return Ok(0);
+    };
     let mut connection = database.connection().await?;
     Ok(store::upload::delete_refused_before(&mut connection, before).await?)
 }

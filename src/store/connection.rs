@@ -1,7 +1,7 @@
 //! Connections and transactions, as `service` holds them.
 
 use sqlx::postgres::{PgDatabaseError, PgSeverity};
-use sqlx::{Executor, PgConnection, Postgres};
+use sqlx::{Executor, PgConnection, PgPool, Postgres};
 
 use super::{Database, Error};
 
@@ -18,25 +18,37 @@ impl Database {
     /// A connection for reading, or for a single statement.
     ///
     /// # Errors
-    /// [`Error::Database`].
+    /// [`Error::Database`]; [`Error::Busy`].
     pub async fn connection(&self) -> Result<Borrowed, Error> {
-        Ok(self.pool().acquire().await?)
+        let pool = self.pool();
+        pool.acquire().await.map_err(|e| not_given(pool, e))
     }
 
     /// A transaction.
     ///
     /// # Errors
-    /// [`Error::Database`].
+    /// [`Error::Database`]; [`Error::Busy`].
     pub async fn begin(&self) -> Result<Transaction, Error> {
-        Ok(self.pool().begin().await?)
+        let pool = self.pool();
+        pool.begin().await.map_err(|e| not_given(pool, e))
     }
 
     /// A transaction from the pool of uploads, so that slow clients take nothing from readers.
     ///
     /// # Errors
-    /// [`Error::Database`].
+    /// [`Error::Database`]; [`Error::Busy`].
     pub async fn begin_upload(&self) -> Result<Transaction, Error> {
-        Ok(self.upload_pool().begin().await?)
+        let pool = self.upload_pool();
+        pool.begin().await.map_err(|e| not_given(pool, e))
+    }
+}
+
+/// A database that does not come up lets callers wait as long as one whose connections are all in use.
+fn not_given(pool: &PgPool, error: sqlx::Error) -> Error {
+    let all_in_use = pool.size() >= pool.options().get_max_connections();
+    match error {
+        sqlx::Error::PoolTimedOut if all_in_use => Error::Busy,
+        error => Error::Database(error),
     }
 }
 

@@ -1,7 +1,7 @@
 //! Everything that touches Postgres; the only user of sqlx.
 //!
-//! Functions take a connection; `service` owns the transactions. One file an aggregate. Static SQL is
-//! checked at compile time against the migrations.
+//! Functions take a connection; `service` owns the transactions. One file an aggregate. SQL is checked
+//! at compile time against the migrations.
 
 pub mod archive;
 pub mod change;
@@ -10,10 +10,10 @@ mod connection;
 mod copy;
 pub mod currency;
 pub mod document;
-pub mod dynamic;
 mod error;
 pub mod fragment;
 mod pool;
+pub mod search;
 pub mod series;
 pub mod staging;
 pub mod token;

@@ -213,6 +213,37 @@ pub async fn get(connection: &mut PgConnection, id: i64) -> Result<Option<Upload
     Ok(row)
 }
 
+/// What an upload says of the publication that its file is from.
+#[derive(Clone, Debug)]
+pub struct Publication {
+    /// Number of the upload.
+    pub id: i64,
+    /// Title.
+    pub title: String,
+    /// Publisher.
+    pub publisher: String,
+    /// Date of release.
+    pub released: NaiveDate,
+}
+
+/// The publications of some uploads.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn publications(
+    connection: &mut PgConnection,
+    ids: &[i64],
+) -> Result<Vec<Publication>, Error> {
+    let rows = sqlx::query_as!(
+        Publication,
+        "SELECT id, title, publisher, released FROM upload WHERE id = ANY($1)",
+        ids
+    )
+    .fetch_all(connection)
+    .await?;
+    Ok(rows)
+}
+
 /// Locks one upload until the transaction ends and answers its state.
 ///
 /// # Errors

@@ -5,7 +5,6 @@ use std::process::Command;
 use realterms::config::Settings;
 use realterms::http::Application;
 use realterms::service::tokens::{self, Role};
-use realterms::store;
 use reqwest::Method;
 use tokio::net::TcpStream;
 
@@ -159,9 +158,7 @@ async fn tokens_are_made_listed_and_revoked_by_the_command() {
     let mut app = TestApp::start().await;
     app.get("/v1/kinds").await.expect(200);
     let place = Place::new(&users()[0]);
-    let store::Place::Url(url) = app.db.options().place else {
-        panic!("the databases of the tests have URLs");
-    };
+    let url = app.db.url();
     let token = |arguments: &[&str]| {
         let mut command: Command = place.program(&[&["token"], arguments].concat());
         command.env("REALTERMS_DATABASE_URL", &url);
@@ -180,6 +177,11 @@ async fn tokens_are_made_listed_and_revoked_by_the_command() {
         !made && error.contains("read, contribute, administer"),
         "{error}"
     );
+
+    for name in ["", " ", "a\nb", "office ", &"x".repeat(101)] {
+        let (made, _, error) = token(&["create", "--name", name, "--role", "read"]);
+        assert!(!made && error.contains("1 to 100 characters"), "{error}");
+    }
 
     // The running service asks for it from now on.
     until(&app, 401).await;
@@ -245,7 +247,10 @@ async fn a_body_that_is_too_large_is_refused_before_it_comes() {
     let rows = "2019-Q1,100\n".repeat(6000);
     wire.send(format!("{:x}\r\nperiod,value\n{rows}\r\n", rows.len() + 13).as_bytes())
         .await;
-    wire.answer().await.expect(413);
+    let answer = wire.answer().await.expect(413);
+    assert!(answer.text().contains("65536 bytes"), "{}", answer.text());
+    let uploads = app.get("/v1/uploads").await.expect(200);
+    assert_eq!(uploads.text(), "[]\n");
     app.stop().await;
 }
 

@@ -53,7 +53,7 @@ fn allowed(room: &str) -> Option<Vec<&'static str>> {
         "service" => Some([&PURE[..], &["store", "clock"]].concat()),
         // Of `intake` only what describes kinds and layouts; the rest is for `service`.
         "http" => Some([&PURE[..], &["service"]].concat()),
-        "application" | "cli" | "config" | "telemetry" | "clock" | "demo" | "main" => None,
+        "cli" | "config" | "telemetry" | "clock" | "demo" | "main" => None,
         _ => panic!("room '{room}' is not in the table of rooms: add it here and in DEVELOPERS.md"),
     }
 }

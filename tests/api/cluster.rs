@@ -1,14 +1,15 @@
 //! The private cluster under SIGKILL: of the service, the keeper and the server, during a query, as root and as an
 //! ordinary user. What was committed is there at the next start, what was not is not, and nothing keeps running.
 
-use crate::support::cluster::{Held, Place, is_running, kill_hard, users, wait_until};
+use crate::support::cluster::{Guard, Held, Place, is_running, kill_hard, users, wait_until};
 use nix::sys::signal::{Signal, kill};
 use nix::unistd::{Pid, geteuid};
 use realterms::store::cluster::SUPERUSER;
 use sqlx::postgres::{PgConnectOptions, PgSslMode};
 use sqlx::{Connection, PgConnection};
-use std::fs;
+use std::fs::{self, File};
 use std::path::Path;
+use std::process::Command;
 use std::time::Duration;
 
 async fn connect(sockets: &Path) -> sqlx::Result<PgConnection> {
@@ -266,6 +267,40 @@ fn a_second_process_on_the_folder_is_told_who_holds_it() {
         let (stopped, said, _) = place.run(&["database", "stop"]);
         assert!(stopped && said.contains("nothing was running"), "{said}");
     }
+}
+
+#[test]
+fn a_lock_without_a_living_holder_is_waited_for_and_nobody_is_ended_for_it() {
+    let place = Place::new(&users()[0]);
+    fs::create_dir(place.data()).unwrap();
+    let path = place.data().join("lock");
+    // The number of a holder that was killed is now that of another process.
+    let mut other = Command::new("sleep").arg("600").spawn().unwrap();
+    let _guard = Guard::of(&other);
+    let stale = format!("{}\nrealterms serve\n", other.id());
+    // Whoever looks who holds the folder has the lock for a moment.
+    let with_lock = |run: &(dyn Fn() -> (bool, String) + Sync)| {
+        fs::write(&path, &stale).unwrap();
+        let look = File::open(&path).unwrap();
+        look.lock().unwrap();
+        std::thread::scope(|scope| {
+            let running = scope.spawn(run);
+            std::thread::sleep(Duration::from_millis(400));
+            drop(look);
+            running.join().unwrap()
+        })
+    };
+    let (ended, _) = with_lock(&|| (place.start().stop().success(), String::new()));
+    assert!(ended);
+    assert_eq!(fs::read_to_string(&path).unwrap(), "", "nobody is named");
+    let (ran, said) = with_lock(&|| {
+        let (ran, said, error) = place.run(&["database", "stop"]);
+        (ran, said + &error)
+    });
+    assert!(ran && said.contains("nothing was running"), "{said}");
+    assert!(other.try_wait().unwrap().is_none(), "it was ended");
+    other.kill().unwrap();
+    other.wait().unwrap();
 }
 
 #[test]

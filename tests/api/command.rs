@@ -1,6 +1,7 @@
 //! The commands, as a user runs them.
 
 use crate::support::cluster::{Place, finish, users};
+use crate::support::db::TestDb;
 use clap::{Args, Command};
 use realterms::config::Settings;
 use sqlx::postgres::{PgConnectOptions, PgSslMode};
@@ -38,6 +39,7 @@ fn a_wrong_setting_is_named_by_flag_and_variable() {
         ("REALTERMS_LISTEN", "here", "--listen"),
         ("REALTERMS_MAX_UPLOAD_BYTES", "4GB", "--max-upload-bytes"),
         ("REALTERMS_WORKERS", "0", "--workers"),
+        ("REALTERMS_BODY_PATIENCE", "86401", "--body-patience"),
         ("REALTERMS_LOG", "x=y=z", "--log"),
     ];
     for (variable, value, flag) in wrong {
@@ -117,6 +119,18 @@ async fn a_dump_brings_everything_back_and_a_failed_restore_changes_nothing() {
             "{said}{error}"
         );
     }
+}
+
+#[tokio::test(flavor = "multi_thread")]
+async fn a_database_of_the_users_is_dumped_without_a_data_folder() {
+    let place = Place::new(&users()[0]);
+    let db = TestDb::create();
+    let file = place.root.join("all.dump");
+    let mut command = place.program(&["database", "dump", file.to_str().unwrap()]);
+    command.env("REALTERMS_DATABASE_URL", db.url());
+    let (ran, _, error) = finish(command);
+    assert!(ran && file.exists(), "{error}");
+    assert!(!place.data().exists());
 }
 
 #[tokio::test(flavor = "multi_thread")]

@@ -136,6 +136,7 @@ async fn texts_that_cannot_be_read_or_kept_are_refused_where_they_stand() {
         "/v1/uploads",
         "/v1/uploads/1/rejects",
         "/v1/studies/sample/runs",
+        "/v1/series/Q.XAA.exports/vintages",
     ] {
         let answer = app.get(&format!("{list}?after=here")).await.expect(400);
         assert_eq!(answer.error()["code"], "bad_cursor");
@@ -151,7 +152,10 @@ async fn texts_that_cannot_be_read_or_kept_are_refused_where_they_stand() {
         "/v1/series?words=%00",
         "/v1/series?area=X%00",
         "/v1/studies?after=%00",
+        "/v1/uploads?after=%00",
+        "/v1/currencies/X%00D",
         "/v1/studies/a%00b",
+        "/v1/preparations/a%00b",
         "/v1/preparations/a%00b/runs",
         "/v1/series/Q.XAA.%00",
     ] {
@@ -159,7 +163,14 @@ async fn texts_that_cannot_be_read_or_kept_are_refused_where_they_stand() {
         assert_eq!(answer.error()["code"], "nul_character", "{path}");
     }
     let titled = TRADE_QUERY.replace("title=Trade", "title=%00");
-    app.upload(&titled, TRADE).await.expect(400);
+    let answer = app.upload(&titled, TRADE).await.expect(400);
+    assert_eq!(answer.error()["parameter"], "title");
+    assert_eq!(answer.at("/upload"), Value::Null);
+    // As an escape it is text of the document.
+    let escaped = sample::PREPARATION.replacen('{', r#"{"title": "a\u0000b", "#, 1);
+    app.put("/v1/preparations/escaped", &escaped)
+        .await
+        .expect(201);
     app.get("/v1/series/nonsense").await.expect(400);
     app.get("/v1/uploads/first").await.expect(404);
     app.get("/v1/uploads/99999999999999999999")
@@ -300,24 +311,6 @@ async fn a_sane_request_id_is_kept_and_any_other_replaced() {
     app.stop().await;
 }
 
-/// All entries of a list, page by page.
-async fn pages(app: &TestApp, path: &str, query: &str) -> Vec<Value> {
-    let mut entries = Vec::new();
-    let mut next = Some(format!("{path}?{query}"));
-    while let Some(path) = next {
-        let page = app.get(&path).await.expect(200);
-        let list = page.json();
-        let list = list.as_array().expect("a list");
-        assert!(!list.is_empty() || entries.is_empty(), "an empty last page");
-        entries.extend(list.iter().cloned());
-        next = page.header("link").map(|link| {
-            let target = link.strip_prefix('<').and_then(|l| l.split_once('>'));
-            target.expect("a target").0.to_owned()
-        });
-    }
-    entries
-}
-
 #[tokio::test]
 async fn lists_page_to_their_end_and_neither_repeat_nor_lose_an_entry() {
     let app = TestApp::start().await;
@@ -335,25 +328,36 @@ async fn lists_page_to_their_end_and_neither_repeat_nor_lose_an_entry() {
             .expect(201);
         app.post("/v1/studies/sample/runs", "").await.expect(201);
     }
+    // What comes last was released first and names a quarter more: three vintages in one revision.
+    for (released, value, more) in [
+        ("2022-01-01", "101", ""),
+        ("2023-01-01", "102", ""),
+        ("2021-06-30", "103", "2021-Q1,116\n"),
+    ] {
+        let query = TRADE_QUERY.replace("2021-03-31", released);
+        let file = TRADE.replace("104.5", value) + more;
+        app.upload(&query, file).await.expect(201);
+    }
     let bad = "period,value\n2019-Q1,a\n2019-Q2,b\n2019-Q3,c\n2019-Q4,d\n2020-Q1,e\n";
     let refused = app.upload(TRADE_QUERY, bad).await.expect(422);
     let refused = refused.at("/upload/id");
     for (path, query, count) in [
         ("/v1/series", "area=XAA,XBB&words=XAA%20a", 5),
         ("/v1/series", "", 6),
-        ("/v1/uploads", "", 4),
-        ("/v1/uploads", "state=landed&kind=trade", 2),
+        ("/v1/uploads", "", 7),
+        ("/v1/uploads", "state=landed&kind=trade", 5),
         (&format!("/v1/uploads/{refused}/rejects"), "", 5),
         ("/v1/preparations", "", 2),
         ("/v1/preparations/sample/runs", "", 5),
         ("/v1/studies", "", 5),
         ("/v1/studies/sample/runs", "", 5),
         ("/v1/studies/a/runs", "", 0),
+        ("/v1/series/Q.XAA.exports/vintages", "", 6),
     ] {
-        let whole = pages(&app, path, query).await;
+        let whole = app.pages(&format!("{path}?{query}")).await;
         assert_eq!(whole.len(), count, "{path}?{query}");
         for limit in [1, 2, 3, count.max(1)] {
-            let paged = pages(&app, path, &format!("{query}&limit={limit}")).await;
+            let paged = app.pages(&format!("{path}?{query}&limit={limit}")).await;
             assert_eq!(paged, whole, "{path}?{query} by {limit}");
         }
     }

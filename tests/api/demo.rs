@@ -1,6 +1,4 @@
-//! The demo: its walk through the API, and the command that a stranger pastes.
-
-use std::process::Command;
+//! The demo's walk through the API; `ending` has the command.
 
 use realterms::demo::economy::{
     EXPORT_INCOME_ELASTICITY, EXPORT_PRICE_ELASTICITY, IMPORT_INCOME_ELASTICITY,
@@ -69,22 +67,4 @@ async fn the_estimates_recover_the_known_elasticities_within_their_intervals() {
     let exports = get("/v1/series/Q.XAA.exports/observations".to_owned()).await;
     assert_eq!(exports["released"], "2020-03-31");
     app.stop().await;
-}
-
-#[test]
-fn the_command_prints_the_table_and_ends_with_0() {
-    let output = Command::new(env!("CARGO_BIN_EXE_realterms"))
-        .arg("demo")
-        .output()
-        .unwrap();
-    let text = String::from_utf8(output.stdout).unwrap();
-    let errors = String::from_utf8_lossy(&output.stderr);
-    assert!(output.status.success(), "{text}\n{errors}");
-    for part in [
-        "Growth that the balance of payments allows",
-        "strong form",
-        "curl -s",
-    ] {
-        assert!(text.contains(part), "no '{part}' in:\n{text}");
-    }
 }

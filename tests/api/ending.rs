@@ -1,6 +1,6 @@
 //! How the program ends: what is under way is answered, and nothing is left of it.
 
-use crate::support::cluster::{Place, users, wait_until};
+use crate::support::cluster::{Place, finish, users, wait_until};
 use crate::support::program::{Running, Sending, Service};
 use std::net::TcpStream;
 use std::path::Path;
@@ -44,6 +44,7 @@ fn the_demo_shows_the_whole_way_and_leaves_nothing_behind() {
         "Growth that the balance of payments allows",
         "Headline named in advance: strong form",
         "They are not a forecast\nand not advice",
+        "curl -s",
     ] {
         assert!(said.contains(part), "no '{part}' in:\n{said}");
     }
@@ -52,6 +53,16 @@ fn the_demo_shows_the_whole_way_and_leaves_nothing_behind() {
     let (low, rest) = number(rest.split_once('[').unwrap().1);
     let (high, _) = number(rest.strip_prefix(',').unwrap());
     assert!(low < rate && rate < high, "{headline}");
+}
+
+#[test]
+fn a_demo_that_cannot_start_leaves_no_folder_behind() {
+    let place = Place::new(&users()[0]);
+    let mut demo = demo(&place, &["demo"]);
+    demo.env("REALTERMS_POSTGRES_BIN", &place.root);
+    let (ran, _, error) = finish(demo);
+    assert!(!ran && error.contains("no initdb"), "{error}");
+    assert!(is_empty(&place.temp()));
 }
 
 #[test]

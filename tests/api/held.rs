@@ -1,5 +1,6 @@
 //! What holds an upload, what opens a segment, and what becomes of both.
 
+use reqwest::Method;
 use serde_json::{Value, json};
 
 use crate::support::app::{Answer, TestApp};
@@ -456,5 +457,78 @@ async fn a_report_shows_a_hundred_findings_and_counts_the_others() {
         findings[100]["message"],
         "30 more series have such findings"
     );
+    app.stop().await;
+}
+
+#[tokio::test]
+async fn what_the_database_gives_up_for_the_sake_of_another_is_done_all_the_same() {
+    let app = start().await;
+    let database = app.db.open().await;
+    let values = [100.0, 101.0, 102.5, 101.5];
+    send(&app, "2020-01-01", "", exports(6, &values))
+        .await
+        .expect(201);
+    let held = send(&app, "2020-02-01", "", exports(9, &values))
+        .await
+        .expect(202);
+    // Every first try fails: what a sequence counts outlives the transaction.
+    sqlx::raw_sql(
+        "CREATE SEQUENCE tries;
+         CREATE FUNCTION give_up() RETURNS trigger LANGUAGE plpgsql AS $$ BEGIN
+             IF nextval('tries') % 2 = 1 THEN
+                 RAISE 'try again' USING ERRCODE = 'serialization_failure';
+             END IF;
+             RETURN NEW;
+         END $$;
+         CREATE TRIGGER give_up BEFORE UPDATE ON upload FOR EACH ROW
+             WHEN (OLD.state <> NEW.state) EXECUTE FUNCTION give_up()",
+    )
+    .execute(database.pool())
+    .await
+    .unwrap();
+    let accept = format!("{}/accept", path(&held));
+    let accepted = app.post(&accept, "").await.expect(200);
+    assert_eq!(accepted.at("/state"), "landed");
+    let withdrawn = app.delete(&path(&held)).await.expect(200);
+    assert_eq!(withdrawn.at("/state"), "withdrawn");
+    let tries: i64 = sqlx::query_scalar("SELECT last_value FROM tries")
+        .fetch_one(database.pool())
+        .await
+        .unwrap();
+    assert_eq!(tries, 4);
+    app.stop().await;
+}
+
+#[tokio::test]
+async fn slow_uploads_lock_nobody_out_but_uploads() {
+    let app = start().await;
+    let values = [100.0, 101.0, 102.5, 101.5];
+    send(&app, "2020-01-01", "", exports(6, &values))
+        .await
+        .expect(201);
+    let held = send(&app, "2020-02-01", "", exports(9, &values))
+        .await
+        .expect(202);
+    let headers = [("Content-Length", "100"), ("Expect", "100-continue")];
+    let mut slow = Vec::new();
+    for _ in 0..app.db.options().upload_connections {
+        let mut wire = app
+            .wire(Method::POST, "/v1/uploads?kind=trade", &headers)
+            .await;
+        // Now it has its connection.
+        assert_eq!(wire.head().await.0, 100);
+        slow.push(wire);
+    }
+    let one_more = app.upload("kind=trade", exports(6, &values));
+    let others = async {
+        let accept = format!("{}/accept", path(&held));
+        app.post(&accept, "").await.expect(200);
+        app.delete(&path(&held)).await.expect(200);
+    };
+    let (refused, ()) = tokio::join!(one_more, others);
+    let refused = refused.expect(503);
+    assert_eq!(refused.at("/code"), "busy");
+    assert_eq!(refused.header("retry-after"), Some("10"));
+    drop(slow);
     app.stop().await;
 }

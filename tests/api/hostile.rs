@@ -1,14 +1,11 @@
 //! Files and clients that mean no good, or were made by programs that never met a table.
 
-use std::io::Write as _;
-use std::net::{Shutdown, TcpStream};
+use serde_json::json;
 
-use reqwest::Method;
-use serde_json::{Value, json};
-
-use crate::support::contract;
 use crate::uploads::{rows, start};
-use crate::wrong_input::{answer, head, speak};
+use crate::wrong_input::{CHUNKED, begin};
+
+const LENGTH_5000: (&str, &str) = ("Content-Length", "5000");
 
 #[tokio::test]
 async fn quotes_line_breaks_and_odd_spaces_keep_lines_right() {
@@ -131,38 +128,26 @@ async fn a_body_in_chunks_lands_and_one_that_breaks_off_leaves_nothing() {
     let before = rows(&database).await;
     // More of them than there are connections for uploads: each gives its connection back.
     for cut in [0, 10, 36, 40, 60, 70, 80, file.len(), 10, 60] {
-        let address = app.base.strip_prefix("http://").unwrap().to_owned();
-        let (chunked, announced) = if cut % 20 == 0 {
-            (false, "Content-Length: 5000")
+        let mut wire = if cut % 20 == 0 {
+            begin(&app, query, LENGTH_5000, &[]).await
         } else {
-            (true, "Transfer-Encoding: chunked")
+            let mut wire = begin(&app, query, CHUNKED, &[]).await;
+            wire.send(format!("{cut:x}\r\n").as_bytes()).await;
+            wire
         };
-        let mut request = head(query, announced);
-        if chunked && cut > 0 {
-            request.push_str(&format!("{cut:x}\r\n"));
+        wire.send(&file.as_bytes()[..cut]).await;
+        if cut == 60 {
+            // Half closed: the client still listens.
+            wire.half_close().await;
+            wire.answer().await.expect(400);
         }
-        request.push_str(&file[..cut]);
-        tokio::task::spawn_blocking(move || {
-            let mut stream = TcpStream::connect(address).unwrap();
-            stream.write_all(request.as_bytes()).unwrap();
-            if cut == 60 {
-                // Half closed: the client still listens.
-                stream.shutdown(Shutdown::Write).unwrap();
-                let answer = answer(&mut stream);
-                contract::check(&Method::POST, "/v1/uploads", &[], None, &answer);
-                assert_eq!(answer.status, 400, "{}", answer.text());
-            }
-        })
-        .await
-        .unwrap();
     }
-    let mut request = head(query, "Transfer-Encoding: chunked");
+    let mut wire = begin(&app, query, CHUNKED, &[]).await;
     for byte in file.chars() {
-        request.push_str(&format!("1\r\n{byte}\r\n"));
+        wire.send(format!("1\r\n{byte}\r\n").as_bytes()).await;
     }
-    request.push_str("0\r\n\r\n");
-    let landed = speak(&app, request).await;
-    assert_eq!(landed.status, 201, "{}", landed.text());
+    wire.send(b"0\r\n\r\n").await;
+    wire.answer().await.expect(201);
     let values = app.values("A.XAA.exports", "").await;
     assert_eq!(
         values,
@@ -198,42 +183,5 @@ async fn a_file_with_more_gaps_than_rows_is_refused() {
     let file = "area,measure,currency,period,value\nXAA,exports,USD,1500-01-01,1\nXAA,exports,USD,2020-12-31,1\n";
     let landed = app.upload("kind=trade", file).await.expect(201);
     assert_eq!(landed.at("/report/observations/new"), 2);
-    app.stop().await;
-}
-
-#[tokio::test]
-async fn text_that_the_database_cannot_hold_is_a_bad_request() {
-    let app = start().await;
-    for path in [
-        "/v1/series?words=%00",
-        "/v1/series?area=a%00b",
-        "/v1/series/A.%00.exports",
-        "/v1/currencies/X%00D",
-        "/v1/preparations/a%00b",
-        "/v1/uploads?after=%00",
-    ] {
-        let answer = app.get(path).await;
-        assert!(
-            (400..500).contains(&answer.status),
-            "{path}: {}",
-            answer.text()
-        );
-    }
-    for (path, body) in [
-        ("/v1/currencies/XCD", r#"{"name": "a\u0000b"}"#),
-        (
-            "/v1/preparations/a",
-            r#"{"title": "a\u0000b", "outputs": {"A.XAA.gdp": [{"take": "A.XAB.gdp"}]}}"#,
-        ),
-    ] {
-        let answer = app.put(path, body).await;
-        assert_ne!(answer.status / 100, 5, "{path}: {}", answer.text());
-    }
-    let answer = app
-        .upload("kind=trade&note=%00", "period,value\n")
-        .await
-        .expect(400);
-    assert_eq!(answer.at("/errors/0/parameter"), "note");
-    assert_eq!(answer.at("/upload"), Value::Null);
     app.stop().await;
 }

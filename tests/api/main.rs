@@ -14,6 +14,7 @@ mod ending;
 mod held;
 mod hostile;
 mod kill;
+mod logs;
 mod open_data;
 mod reading;
 mod readme;

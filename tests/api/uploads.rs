@@ -4,7 +4,7 @@ use std::io::Write as _;
 
 use flate2::Compression;
 use flate2::write::GzEncoder;
-use realterms::service::uploads::sweep_refused;
+use realterms::service::uploads::erase_old_refused;
 use realterms::store::Database;
 use reqwest::Method;
 use serde_json::Value;
@@ -59,19 +59,6 @@ async fn upload_gzip(app: &TestApp, query: &str, body: &[u8]) -> Answer {
     let path = format!("/v1/uploads?{query}");
     app.send(Method::POST, &path, &headers, Some(gzip(body)))
         .await
-}
-
-/// All entries of a list, page by page along its links.
-async fn pages(app: &TestApp, path: &str) -> Vec<Value> {
-    let mut items = Vec::new();
-    let mut next = Some(path.to_owned());
-    while let Some(path) = next {
-        let answer = app.get(&path).await.expect(200);
-        items.extend(answer.json().as_array().unwrap().iter().cloned());
-        let link = answer.header("link").map(str::to_owned);
-        next = link.map(|l| l[1..l.find('>').unwrap()].to_owned());
-    }
-    items
 }
 
 #[tokio::test]
@@ -281,7 +268,7 @@ async fn rejects_refuse_the_file_or_are_skipped() {
     assert_eq!(kept["title"], "Try");
     kept["recorded"] = upload["recorded"].clone();
     assert_eq!(kept, upload);
-    let rejects = pages(&app, &format!("{path}/rejects?limit=60")).await;
+    let rejects = app.pages(&format!("{path}/rejects?limit=60")).await;
     assert_eq!(rejects.len(), 151);
     assert_eq!(rejects[149]["line"], 201);
     assert_eq!(rejects[150]["code"], "duplicate_key");
@@ -289,10 +276,10 @@ async fn rejects_refuse_the_file_or_are_skipped() {
     assert_eq!(rejects[0]["row"], "XAA,exports,XAD,1851,n/a");
     let raw = app.get(&format!("{path}/raw")).await.expect(200);
     assert_eq!(raw.text(), file);
-    let listed = pages(&app, "/v1/uploads?state=refused").await;
+    let listed = app.pages("/v1/uploads?state=refused").await;
     assert_eq!(listed.len(), 1);
     app.get("/v1/series/A.XAA.exports").await.expect(404);
-    assert!(pages(&app, "/v1/series").await.is_empty());
+    assert!(app.pages("/v1/series").await.is_empty());
     assert_eq!(
         app.delete(&path).await.expect(409).at("/code"),
         "not_current"
@@ -311,7 +298,7 @@ async fn rejects_refuse_the_file_or_are_skipped() {
     // Of the contradicting rows the first is kept.
     assert_eq!(values[0], ("1801".to_owned(), Some(10.5)));
     let path = format!("/v1/uploads/{}/rejects", skipped.at("/id"));
-    assert_eq!(pages(&app, &path).await.len(), 151);
+    assert_eq!(app.pages(&path).await.len(), 151);
     app.stop().await;
 }
 
@@ -374,7 +361,7 @@ async fn what_is_said_of_a_publication_is_kept() {
         let sha256 = view.at("/sha256");
         assert_eq!(sha256.as_str().unwrap().len(), 64);
     }
-    let listed = pages(&app, "/v1/uploads?kind=ratio&limit=1").await;
+    let listed = app.pages("/v1/uploads?kind=ratio&limit=1").await;
     assert_eq!(listed.len(), 1);
     assert_eq!(listed[0]["title"], "Balance of payments, révisée");
     let lineage = app
@@ -408,20 +395,15 @@ async fn old_refused_uploads_are_swept_and_nothing_else() {
         .await
         .expect(422);
     let path = format!("/v1/uploads/{}", refused.at("/upload/id"));
-    let recorded = refused.at("/upload/recorded");
-    let recorded = chrono::DateTime::parse_from_rfc3339(recorded.as_str().unwrap())
-        .unwrap()
-        .to_utc();
-    let second = chrono::TimeDelta::seconds(1);
-    assert_eq!(
-        sweep_refused(&database, recorded - second).await.unwrap(),
-        0
-    );
+    let age = async |hours: i32| {
+        let older = "UPDATE upload SET recorded = clock_timestamp() - make_interval(hours => $1)";
+        let older = sqlx::query(older).bind(hours);
+        older.execute(database.pool()).await.unwrap();
+        erase_old_refused(&database, 30).await.unwrap()
+    };
+    assert_eq!(age(30 * 24 - 1).await, 0);
     app.get(&path).await.expect(200);
-    assert_eq!(
-        sweep_refused(&database, recorded + second).await.unwrap(),
-        1
-    );
+    assert_eq!(age(30 * 24 + 1).await, 1);
     app.get(&path).await.expect(404);
     app.get(&format!("{path}/raw")).await.expect(404);
     app.get(&format!("{path}/rejects")).await.expect(404);

@@ -1,75 +1,35 @@
 //! Wrong input of each sort: answered with line and remedy, early where it can be, and without effect.
 
-use std::io::{Read as _, Write as _};
-use std::net::TcpStream;
 use std::time::Duration;
 
 use realterms::config::Bytes;
 use reqwest::Method;
-use reqwest::header::{HeaderMap, HeaderName, HeaderValue};
 use serde_json::{Value, json};
 
-use crate::support::app::{Answer, TestApp};
-use crate::support::contract;
+use crate::support::app::TestApp;
+use crate::support::wire::Wire;
 use crate::uploads::{fixture, gzip, rows, start};
 
-/// Sends bytes as they are, goes on to say nothing, and reads the answer.
-pub(crate) async fn speak(app: &TestApp, request: impl Into<Vec<u8>>) -> Answer {
-    let address = app.base.strip_prefix("http://").unwrap().to_owned();
-    let request = request.into();
-    tokio::task::spawn_blocking(move || {
-        let mut stream = TcpStream::connect(address).unwrap();
-        stream
-            .set_read_timeout(Some(Duration::from_secs(30)))
-            .unwrap();
-        stream.write_all(&request).unwrap();
-        answer(&mut stream)
-    })
-    .await
-    .unwrap()
+/// The header of a body that comes in chunks.
+pub(crate) const CHUNKED: (&str, &str) = ("Transfer-Encoding", "chunked");
+
+/// Begins an upload whose body is announced by this header and sends what of it comes at first.
+pub(crate) async fn begin<'a>(
+    app: &'a TestApp,
+    query: &str,
+    announced: (&str, &str),
+    sent: &[u8],
+) -> Wire<'a> {
+    let headers = [("Content-Type", "text/csv"), announced];
+    let path = format!("/v1/uploads?{query}");
+    let mut wire = app.wire(Method::POST, &path, &headers).await;
+    wire.send(sent).await;
+    wire
 }
 
-/// Reads one answer from a connection.
-pub(crate) fn answer(stream: &mut TcpStream) -> Answer {
-    let mut bytes = Vec::new();
-    let mut piece = [0; 4096];
-    loop {
-        let end = bytes.windows(4).position(|w| w == b"\r\n\r\n");
-        if let Some(end) = end {
-            let head = String::from_utf8(bytes[..end].to_vec()).unwrap();
-            let mut lines = head.lines();
-            let status = lines.next().unwrap()[9..12].parse().unwrap();
-            let headers: HeaderMap = lines
-                .map(|line| line.split_once(": ").unwrap())
-                .map(|(name, value)| {
-                    let name = HeaderName::from_bytes(name.as_bytes()).unwrap();
-                    (name, HeaderValue::from_str(value).unwrap())
-                })
-                .collect();
-            let length: usize = headers["content-length"].to_str().unwrap().parse().unwrap();
-            if bytes.len() >= end + 4 + length {
-                return Answer {
-                    status,
-                    headers,
-                    bytes: bytes[end + 4..end + 4 + length].to_vec(),
-                };
-            }
-        }
-        let n = stream.read(&mut piece).expect("an answer comes in time");
-        assert!(
-            n > 0,
-            "the connection ended without an answer: {}",
-            String::from_utf8_lossy(&bytes)
-        );
-        bytes.extend_from_slice(&piece[..n]);
-    }
-}
-
-/// The head of an upload, the body of which is announced by this header.
-pub(crate) fn head(query: &str, body: &str) -> String {
-    format!(
-        "POST /v1/uploads?{query} HTTP/1.1\r\nHost: localhost\r\nContent-Type: text/csv\r\n{body}\r\n\r\n"
-    )
+/// A piece of a body as a chunk.
+fn chunk(text: &str) -> Vec<u8> {
+    format!("{:x}\r\n{text}\r\n", text.len()).into_bytes()
 }
 
 fn says_what_to_do(finding: &Value) -> bool {
@@ -215,9 +175,8 @@ async fn wrong_parameters_are_refused_before_the_body() {
         ),
     ] {
         // The body is announced and never sent.
-        let answer = speak(&app, head(query, "Content-Length: 100000")).await;
-        contract::check(&Method::POST, "/v1/uploads", &[], None, &answer);
-        assert_eq!(answer.status, 400, "{query}: {}", answer.text());
+        let wire = begin(&app, query, ("Content-Length", "100000"), b"").await;
+        let answer = wire.answer().await.expect(400);
         let finding = answer.at("/errors/0");
         assert_eq!(finding["parameter"], parameter, "{query}");
         let told = finding["expected"].as_str().unwrap_or_default();
@@ -232,66 +191,25 @@ async fn what_is_known_early_is_answered_before_the_body_has_come() {
     let app = start().await;
     let database = app.db.open().await;
     let before = rows(&database).await;
-    let chunk = |text: &str| format!("{:x}\r\n{text}\r\n", text.len());
     let column = "area,measure,currency,period,vlaue\n";
     let good = "area,measure,currency,period,value\nXAA,exports,XAD,2019,1\n";
-    let with = |body: &str, sent: &[u8]| {
-        let mut request = head("kind=trade", body).into_bytes();
-        request.extend_from_slice(sent);
-        request
-    };
     let mut encoding = good.as_bytes().to_vec();
     encoding.extend_from_slice(b"XAA,exports,XAD,2020,\xff\n");
     let mut spoilt = gzip(good.as_bytes());
     // The first block claims the reserved type.
     spoilt[10..].fill(0xff);
-    for (request, status, code, line) in [
-        (
-            with("Content-Length: 5368709120", b""),
-            413,
-            "too_large",
-            Value::Null,
-        ),
-        (
-            with("Content-Length: 1000000", column.as_bytes()),
-            422,
-            "unknown_column",
-            json!(1),
-        ),
-        (
-            with("Transfer-Encoding: chunked", chunk(column).as_bytes()),
-            422,
-            "unknown_column",
-            json!(1),
-        ),
-        (
-            with("Content-Length: 1000000", &encoding),
-            422,
-            "invalid_utf8",
-            json!(3),
-        ),
-        (
-            with("Content-Length: 1000000", &spoilt),
-            422,
-            "damaged_gzip",
-            json!(1),
-        ),
-        (
-            with("Content-Length: 1000000", &[b'x'; 100_000]),
-            422,
-            "row_too_long",
-            json!(1),
-        ),
+    let length = ("Content-Length", "1000000");
+    for (announced, sent, code, line) in [
+        (length, column.into(), "unknown_column", 1),
+        (CHUNKED, chunk(column), "unknown_column", 1),
+        (length, encoding, "invalid_utf8", 3),
+        (length, spoilt, "damaged_gzip", 1),
+        (length, vec![b'x'; 100_000], "row_too_long", 1),
     ] {
-        let answer = speak(&app, request).await;
-        contract::check(&Method::POST, "/v1/uploads", &[], None, &answer);
-        assert_eq!(answer.status, status, "{code}: {}", answer.text());
-        if line.is_null() {
-            assert_eq!(answer.at("/code"), code);
-        } else {
-            assert_eq!(answer.at("/errors/0/code"), code);
-            assert_eq!(answer.at("/errors/0/line"), line);
-        }
+        let wire = begin(&app, "kind=trade", announced, &sent).await;
+        let answer = wire.answer().await.expect(422);
+        assert_eq!(answer.at("/errors/0/code"), code);
+        assert_eq!(answer.at("/errors/0/line"), line);
     }
     assert_eq!(rows(&database).await, before);
     app.stop().await;
@@ -305,67 +223,81 @@ async fn a_client_that_sends_all_before_it_reads_gets_its_answer() {
     let header = "area,measure,currency,period,vlaue\n";
     let count = 24_000_000 / rows.len();
     let whole = header.len() + count * rows.len();
-    for announced in [
-        format!("Content-Length: {whole}"),
-        "Transfer-Encoding: chunked".to_owned(),
-    ] {
-        let address = app.base.strip_prefix("http://").unwrap().to_owned();
-        let chunked = announced.starts_with('T');
-        let head = head("kind=trade", &announced);
-        let rows = rows.clone();
-        let answer = tokio::task::spawn_blocking(move || {
-            let mut stream = TcpStream::connect(address).unwrap();
-            let patience = Some(Duration::from_secs(20));
-            stream.set_write_timeout(patience).unwrap();
-            stream.set_read_timeout(patience).unwrap();
-            stream.write_all(head.as_bytes())?;
-            let mut send = |piece: &str| {
-                let piece = match chunked {
-                    true => format!("{:x}\r\n{piece}\r\n", piece.len()),
-                    false => piece.to_owned(),
-                };
-                stream.write_all(piece.as_bytes())
-            };
-            send(header).and_then(|()| (0..count).try_for_each(|_| send(&rows)))?;
-            if chunked {
-                stream.write_all(b"0\r\n\r\n")?;
+    let length = whole.to_string();
+    for announced in [("Content-Length", length.as_str()), CHUNKED] {
+        let piece = |text: &str| match announced == CHUNKED {
+            true => chunk(text),
+            false => text.as_bytes().to_vec(),
+        };
+        let exchange = async {
+            let mut wire = begin(&app, "kind=trade", announced, &piece(header)).await;
+            let rows = piece(&rows);
+            for _ in 0..count {
+                wire.send(&rows).await;
             }
-            std::io::Result::Ok(answer(&mut stream))
-        });
-        let answer = answer.await.unwrap().expect("all could be sent");
-        assert_eq!(answer.status, 422, "{}", answer.text());
+            if announced == CHUNKED {
+                wire.send(b"0\r\n\r\n").await;
+            }
+            wire.answer().await
+        };
+        let answer = tokio::time::timeout(Duration::from_secs(60), exchange).await;
+        let answer = answer.expect("all could be sent").expect(422);
         assert_eq!(answer.at("/errors/0/code"), "unknown_column");
     }
     app.stop().await;
 }
 
 #[tokio::test]
-async fn a_body_that_grows_beyond_the_limit_or_stops_coming_is_given_up() {
+async fn a_body_that_stops_coming_is_given_up() {
+    let app = TestApp::start_with(|settings| settings.body_patience = 1).await;
+    let database = app.db.open().await;
+    let before = rows(&database).await;
+    let file = b"area,measure,currency,period,value\nXAA,exports,USD,";
+    let wire = begin(&app, "kind=trade", ("Content-Length", "9000"), file).await;
+    let answer = wire.answer().await.expect(408);
+    assert_eq!(answer.header("connection"), Some("close"));
+    assert_eq!(rows(&database).await, before);
+    app.stop().await;
+}
+
+#[tokio::test]
+async fn a_slow_database_does_not_count_against_the_client() {
     let app = TestApp::start_with(|settings| {
-        settings.max_upload_bytes = Bytes(10_000);
-        settings.body_patience = 1;
+        settings.body_patience = 2;
+        settings.min_body_rate = Bytes(64 << 20);
     })
     .await;
     let database = app.db.open().await;
-    let before = rows(&database).await;
-    let mut file = "area,measure,currency,period,value\n".to_owned();
-    while file.len() <= 10_000 {
-        file.push_str("XAA,exports,USD,2019,1\n");
+    sqlx::raw_sql(
+        "CREATE FUNCTION rest() RETURNS trigger LANGUAGE plpgsql AS
+             'BEGIN PERFORM pg_sleep(3); RETURN NEW; END';
+         CREATE TRIGGER rest BEFORE INSERT ON upload_part FOR EACH ROW WHEN (NEW.number = 0)
+             EXECUTE FUNCTION rest()",
+    )
+    .execute(database.pool())
+    .await
+    .unwrap();
+    // At first just enough for the first part to be stored, so that nothing is left to be read while it
+    // is; the rows are wrong, which is soon said.
+    let mut file = b"area,measure,currency,period,value\n".to_vec();
+    while file.len() <= (8 << 20) + 1000 {
+        file.resize(file.len() + 60_000, b'x');
+        file.push(b'\n');
     }
-    // Without a length the limit is met on the way.
-    let chunked = format!("{:x}\r\n{file}\r\n", file.len());
-    let request = head("kind=trade", "Transfer-Encoding: chunked") + &chunked;
-    let answer = speak(&app, request).await;
-    contract::check(&Method::POST, "/v1/uploads", &[], None, &answer);
-    assert_eq!(answer.status, 413, "{}", answer.text());
-    assert!(answer.text().contains("10000 bytes"));
-
-    let request = head("kind=trade", "Content-Length: 9000") + &file[..50];
-    let answer = speak(&app, request).await;
-    contract::check(&Method::POST, "/v1/uploads", &[], None, &answer);
-    assert_eq!(answer.status, 408, "{}", answer.text());
-    assert_eq!(answer.header("connection"), Some("close"));
-    assert_eq!(rows(&database).await, before);
+    let (first, last) = file.split_at((8 << 20) + 100);
+    let length = file.len().to_string();
+    let announced = ("Content-Length", length.as_str());
+    let mut wire = begin(&app, "kind=trade", announced, first).await;
+    let resting = "SELECT EXISTS (SELECT FROM pg_stat_activity WHERE wait_event = 'PgSleep'
+        AND datname = current_database())";
+    while !sqlx::query_scalar::<_, bool>(resting)
+        .fetch_one(database.pool())
+        .await
+        .unwrap()
+    {}
+    wire.send(last).await;
+    let answer = wire.answer().await.expect(422);
+    assert_eq!(answer.at("/code"), "upload_refused");
     app.stop().await;
 }
 

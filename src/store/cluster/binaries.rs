@@ -41,7 +41,7 @@ impl Binaries {
     pub fn find(
         setting: Option<&Path>,
         search_path: &[PathBuf],
-        cluster: &Path,
+        cluster: Option<&Path>,
     ) -> Result<Self, ClusterError> {
         let folders = match setting {
             Some(folder) => vec![folder.to_owned()],
@@ -62,7 +62,8 @@ impl Binaries {
             let looked = looked.join(", ");
             return Err(ClusterError::NoBinaries { looked });
         }
-        let Some(made_by) = made_by(cluster) else {
+        let made = cluster.and_then(|cluster| Some((cluster, made_by(cluster)?)));
+        let Some((cluster, made_by)) = made else {
             return Ok(usable.swap_remove(0));
         };
         if let Some(at) = usable.iter().position(|b| b.major == made_by) {
@@ -168,7 +169,7 @@ mod tests {
     #[test]
     fn a_folder_without_the_programs_is_named_with_what_is_missing() {
         let empty = Path::new("/nonexistent/bin");
-        let error = Binaries::find(Some(empty), &[], Path::new("/nonexistent")).unwrap_err();
+        let error = Binaries::find(Some(empty), &[], None).unwrap_err();
         let text = error.to_string();
         assert!(text.contains("/nonexistent/bin (no initdb"), "{text}");
         assert!(text.contains(".ci/setup"), "{text}");

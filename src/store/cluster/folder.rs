@@ -1,6 +1,7 @@
 //! The data folder: its parts, its lock, its owner, and the folder of its socket.
 
 use super::error::{ClusterError, Doing};
+use super::process::runs;
 use nix::unistd::{User, geteuid};
 use serde::{Deserialize, Serialize};
 use std::fs::{self, DirBuilder, File, OpenOptions, TryLockError};
@@ -15,6 +16,14 @@ use std::time::{Duration, Instant};
 const SOCKET_LIMIT: usize = if cfg!(target_os = "macos") { 103 } else { 107 };
 const SOCKET_PREFIX: &str = "rt-";
 pub(super) const PORT: u16 = 5432;
+
+/// The longest that the lock is held by someone who does not keep it.
+const GLANCE: Duration = Duration::from_secs(1);
+
+/// The cluster's own folder in a data folder.
+pub(super) fn cluster_in(data: &Path) -> PathBuf {
+    data.join("postgres")
+}
 
 /// A data folder, made if missing; its path is canonical.
 #[derive(Clone, Debug, Serialize, Deserialize)]
@@ -43,7 +52,7 @@ impl DataFolder {
 
     /// The cluster's own folder.
     pub(super) fn cluster(&self) -> PathBuf {
-        self.0.join("postgres")
+        cluster_in(&self.0)
     }
 
     /// What the running server wrote.
@@ -51,16 +60,26 @@ impl DataFolder {
         self.0.join("server.log")
     }
 
-    /// Takes the folder for this process; the lock ends with it, however it ends.
-    pub(super) fn lock(&self, holder: &str) -> Result<File, ClusterError> {
-        let Some(mut file) = self.lock_if_free()? else {
-            return Err(ClusterError::InUse {
-                folder: self.0.clone(),
-                holder: self.holder().map_or_else(
-                    || "another process".to_owned(),
-                    |(pid, what)| format!("process {pid} ({what})"),
-                ),
-            });
+    /// Takes the folder for this process; the lock ends with it, however it ends. `program` is what
+    /// holders run.
+    pub(super) fn lock(&self, holder: &str, program: &Path) -> Result<File, ClusterError> {
+        let patience = Instant::now() + GLANCE;
+        let mut file = loop {
+            if let Some(file) = self.lock_if_free()? {
+                break file;
+            }
+            // Whoever only looks who holds the folder has the lock for a moment and no name in it.
+            let living = self.holder().filter(|(pid, _)| runs(*pid, program));
+            if living.is_some() || Instant::now() > patience {
+                return Err(ClusterError::InUse {
+                    folder: self.0.clone(),
+                    holder: living.map_or_else(
+                        || "another process".to_owned(),
+                        |(pid, what)| format!("process {pid} ({what})"),
+                    ),
+                });
+            }
+            sleep(Duration::from_millis(20));
         };
         let write = |file: &mut File| -> io::Result<()> {
             file.set_len(0)?;
@@ -104,7 +123,7 @@ impl DataFolder {
         }
     }
 
-    /// Process and command written by whoever took the lock last.
+    /// Process and command written by whoever took the lock last and was killed, or has it still.
     pub(super) fn holder(&self) -> Option<(i32, String)> {
         let text = fs::read_to_string(self.0.join("lock")).ok()?;
         let (pid, what) = text.trim_end().split_once('\n')?;

@@ -99,7 +99,7 @@ pub struct Cluster {
     address: Address,
     link: Arc<Mutex<Link>>,
     supervisor: Option<JoinHandle<()>>,
-    _lock: File,
+    lock: File,
 }
 
 /// The holder's end of the keeper's pipe; None once the cluster is being stopped.
@@ -135,11 +135,11 @@ impl Cluster {
     pub fn start(options: &ClusterOptions) -> Result<Self, ClusterError> {
         let folder = DataFolder::open(&options.folder)?;
         let cluster = folder.cluster();
-        let binaries = find_binaries(options)?;
+        let binaries = options.find_binaries()?;
         let owner = Owner::of(&cluster)?;
         Owner::check_reach(owner.as_ref(), folder.path())?;
         Owner::check_reach(owner.as_ref(), &binaries.folder)?;
-        let lock = folder.lock(&options.holder)?;
+        let lock = folder.lock(&options.holder, &options.keeper)?;
         let sockets = folder::make_socket_folder(&options.temp_folder, owner.as_ref())?;
         let order = Order {
             folder,
@@ -169,7 +169,7 @@ impl Cluster {
             },
             link,
             supervisor: Some(supervisor),
-            _lock: lock,
+            lock,
         })
     }
 
@@ -204,12 +204,13 @@ impl Cluster {
 }
 
 impl Drop for Cluster {
-    /// Ends the server and waits until it has ended.
+    /// Ends the server, waits until it has ended, and takes this process's name off the folder.
     fn drop(&mut self) {
         hold(&self.link).0 = None;
         if let Some(supervisor) = self.supervisor.take() {
             let _ = supervisor.join();
         }
+        let _ = self.lock.set_len(0);
     }
 }
 
@@ -219,7 +220,7 @@ impl Drop for Cluster {
 /// Programs missing, or a folder that cannot be read.
 pub fn whereabouts(options: &ClusterOptions) -> Result<Whereabouts, ClusterError> {
     let folder = DataFolder::open(&options.folder)?;
-    let binaries = find_binaries(options)?;
+    let binaries = options.find_binaries()?;
     let address = running(&server_of(&folder)?);
     let holder = match folder.lock_if_free()? {
         Some(_) => None,
@@ -238,8 +239,8 @@ pub fn whereabouts(options: &ClusterOptions) -> Result<Whereabouts, ClusterError
 ///
 /// # Errors
 /// A holder of another user, or one that does not end within 90 s.
-pub fn stop(folder: &Path) -> Result<Stopped, ClusterError> {
-    let folder = DataFolder::open(folder)?;
+pub fn stop(options: &ClusterOptions) -> Result<Stopped, ClusterError> {
+    let folder = DataFolder::open(&options.folder)?;
     let mut asked = None;
     let patience = Instant::now() + Duration::from_secs(90);
     let _lock = loop {
@@ -249,6 +250,7 @@ pub fn stop(folder: &Path) -> Result<Stopped, ClusterError> {
         let holder = folder.holder();
         if let Some((pid, what)) = &holder
             && asked != Some(*pid)
+            && process::runs(*pid, &options.keeper)
         {
             kill(Pid::from_raw(*pid), Signal::SIGTERM).map_err(|errno| {
                 ClusterError::Failed(format!("cannot stop process {pid} ({what}): {errno}"))
@@ -273,14 +275,15 @@ pub fn stop(folder: &Path) -> Result<Stopped, ClusterError> {
     })
 }
 
-/// Finds the server's programs: those that made the cluster, where there is one.
-///
-/// # Errors
-/// None that fit.
-pub fn find_binaries(options: &ClusterOptions) -> Result<Binaries, ClusterError> {
-    let folder = DataFolder::open(&options.folder)?;
-    let setting = options.binaries.as_deref();
-    Binaries::find(setting, &options.search_path, &folder.cluster())
+impl ClusterOptions {
+    /// Finds the server's programs: those that made the cluster, where there is one.
+    ///
+    /// # Errors
+    /// None that fit.
+    pub fn find_binaries(&self) -> Result<Binaries, ClusterError> {
+        let cluster = folder::cluster_in(&self.folder);
+        Binaries::find(self.binaries.as_deref(), &self.search_path, Some(&cluster))
+    }
 }
 
 fn server_of(folder: &DataFolder) -> Result<Server, ClusterError> {

@@ -33,6 +33,8 @@ pub(super) struct PidFile {
 struct Process {
     pid: i32,
     uid: u32,
+    /// Its program as it was called; elsewhere than on Linux cut at the first space.
+    program: String,
     command: String,
 }
 
@@ -70,11 +72,7 @@ impl Server {
             process.uid == self.uid
                 && (process.command.starts_with(&title)
                     || (process.command.contains(&argument)
-                        && process
-                            .command
-                            .split(' ')
-                            .next()
-                            .is_some_and(|program| program.ends_with("postgres"))))
+                        && process.program.ends_with("postgres")))
         };
         all_processes()
             .into_iter()
@@ -147,6 +145,15 @@ pub(super) fn is_alive(pid: i32) -> bool {
     pid > 0 && kill(Pid::from_raw(pid), None) != Err(nix::errno::Errno::ESRCH)
 }
 
+/// Whether the process of this number runs a program of this name; a number may have been given away since
+/// it was written down.
+pub(super) fn runs(pid: i32, program: &Path) -> bool {
+    let mut all = all_processes().into_iter();
+    all.any(|process| {
+        process.pid == pid && Path::new(&process.program).file_name() == program.file_name()
+    })
+}
+
 #[cfg(target_os = "linux")]
 fn all_processes() -> Vec<Process> {
     use std::os::unix::fs::MetadataExt;
@@ -156,10 +163,12 @@ fn all_processes() -> Vec<Process> {
         .filter_map(|entry| {
             let pid = entry.file_name().to_str()?.parse().ok()?;
             let command = fs::read(entry.path().join("cmdline")).ok()?;
+            let command = String::from_utf8_lossy(&command);
             Some(Process {
                 pid,
                 uid: entry.metadata().ok()?.uid(),
-                command: String::from_utf8_lossy(&command).replace('\0', " "),
+                program: command.split('\0').next()?.to_owned(),
+                command: command.replace('\0', " "),
             })
         })
         .collect()
@@ -179,6 +188,7 @@ fn all_processes() -> Vec<Process> {
             Some(Process {
                 pid: pid.parse().ok()?,
                 uid: uid.parse().ok()?,
+                program: command.trim_start().split(' ').next()?.to_owned(),
                 command: format!("{} ", command.trim_start()),
             })
         })

@@ -187,6 +187,24 @@ impl TestApp {
             .await
     }
 
+    /// All entries of a list, page by page along its links.
+    pub(crate) async fn pages(&self, path: &str) -> Vec<Value> {
+        let mut entries = Vec::new();
+        let mut next = Some(path.to_owned());
+        while let Some(path) = next {
+            let page = self.get(&path).await.expect(200);
+            let list = page.json();
+            let list = list.as_array().expect("a list");
+            assert!(!list.is_empty() || entries.is_empty(), "an empty last page");
+            entries.extend(list.iter().cloned());
+            next = page.header("link").map(|link| {
+                let target = link.strip_prefix('<').and_then(|l| l.split_once('>'));
+                target.expect("a target").0.to_owned()
+            });
+        }
+        entries
+    }
+
     /// Sends any request and checks request and answer against the `OpenAPI` document.
     pub(crate) async fn send(
         &self,

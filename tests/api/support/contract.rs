@@ -202,6 +202,8 @@ fn request(
             "content-type",
             "accept-encoding",
             "x-request-id",
+            "host",
+            "origin",
         ];
         assert!(
             general.contains(&name.to_lowercase().as_str()) || named("header", name).is_some(),

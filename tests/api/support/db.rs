@@ -31,6 +31,14 @@ impl TestDb {
         options(&self.name)
     }
 
+    /// Where it is, for a command.
+    pub(crate) fn url(&self) -> String {
+        match self.options().place {
+            Place::Url(url) => url,
+            Place::Held(_) | Place::HeldOrJoined(_) => unreachable!("they have URLs"),
+        }
+    }
+
     /// Opens it as the service does.
     pub(crate) async fn open(&self) -> Database {
         open(&self.options()).await

@@ -44,6 +44,11 @@ impl<'a> Wire<'a> {
         self.stream.write_all(bytes).await.expect("bytes are taken");
     }
 
+    /// Says that nothing more will come; the answer can still be read.
+    pub(crate) async fn half_close(&mut self) {
+        self.stream.shutdown().await.expect("a socket");
+    }
+
     /// Reads a head: its status and headers.
     pub(crate) async fn head(&mut self) -> (u16, HeaderMap) {
         let line = self.line().await;

@@ -1,11 +1,7 @@
-//! SQL that is put together at run time: here and nowhere else, so that one look audits it.
-//!
-//! Only names from lists of this program enter the text; what a client sends is bound.
+//! Finding series by the places of their keys and by words.
 
-use std::fmt::Write as _;
-
+use sqlx::PgConnection;
 use sqlx::types::Json;
-use sqlx::{AssertSqlSafe, PgConnection};
 
 use super::Error;
 use super::series::key_of;
@@ -56,50 +52,64 @@ pub async fn search(
     connection: &mut PgConnection,
     search: &Search,
 ) -> Result<Vec<ListedSeries>, Error> {
-    let mut sql = String::from(
-        "SELECT s.id, s.frequency, s.area, s.measure, s.partner, s.product, s.currency, s.source,
-             s.adjustment, c.number, c.segments, c.unit, c.released, c.revision, c.start_period,
-             c.observation_count
-         FROM series s
-         JOIN LATERAL (
-             SELECT g.number, g.unit, v.said AS released, v.revision, v.start_period, v.observation_count,
-                 count(*) OVER () AS segments
-             FROM segment g
-             JOIN LATERAL (
-                 SELECT w.said, w.revision, w.start_period, w.observation_count FROM vintage w
-                 WHERE w.segment_id = g.id ORDER BY w.released DESC, w.revision DESC LIMIT 1
-             ) v ON v.observation_count > 0
-             WHERE g.series_id = s.id
-             ORDER BY v.said DESC, g.number DESC LIMIT 1
-         ) c ON true
-         WHERE s.id > $1",
-    );
-    for (i, place) in SeriesKey::PLACES.iter().enumerate() {
-        let _ = write!(
-            sql,
-            " AND (cardinality(${n}) = 0 OR s.{place} = ANY(${n}))",
-            n = i + 2
-        );
-    }
-    sql.push_str(
-        " AND NOT EXISTS (SELECT FROM unnest($10::text[]) AS w(word) WHERE strpos(lower(concat_ws('.',
-             s.frequency, s.area, s.measure, s.partner, s.product, s.currency, s.source,
-             s.adjustment) || ' ' || c.unit::text), lower(w.word)) = 0)
-          ORDER BY s.id LIMIT $11",
-    );
-    let mut query = sqlx::query_as::<_, SearchRow>(AssertSqlSafe(sql)).bind(search.after);
-    for place in &search.places {
-        query = query.bind(place);
-    }
-    let rows = query
-        .bind(&search.words)
-        .bind(search.limit)
-        .fetch_all(connection)
-        .await?;
+    let [
+        frequency,
+        area,
+        measure,
+        partner,
+        product,
+        currency,
+        source,
+        adjustment,
+    ] = &search.places;
+    let rows = sqlx::query_as!(
+        SearchRow,
+        r#"SELECT s.id, s.frequency, s.area, s.measure, s.partner, s.product, s.currency, s.source,
+             s.adjustment, c.number AS "number!", c.segments AS "segments!",
+             c.unit AS "unit!: Json<Unit>", c.released AS "released!", c.revision AS "revision!",
+             c.start_period AS "start_period!", c.observation_count AS "observation_count!"
+           FROM series s
+           JOIN LATERAL (
+               SELECT g.number, g.unit, v.said AS released, v.revision, v.start_period, v.observation_count,
+                   count(*) OVER () AS segments
+               FROM segment g
+               JOIN LATERAL (
+                   SELECT w.said, w.revision, w.start_period, w.observation_count FROM vintage w
+                   WHERE w.segment_id = g.id ORDER BY w.released DESC, w.revision DESC LIMIT 1
+               ) v ON v.observation_count > 0
+               WHERE g.series_id = s.id
+               ORDER BY v.said DESC, g.number DESC LIMIT 1
+           ) c ON true
+           WHERE s.id > $1
+             AND (cardinality($2::text[]) = 0 OR s.frequency = ANY($2))
+             AND (cardinality($3::text[]) = 0 OR s.area = ANY($3))
+             AND (cardinality($4::text[]) = 0 OR s.measure = ANY($4))
+             AND (cardinality($5::text[]) = 0 OR s.partner = ANY($5))
+             AND (cardinality($6::text[]) = 0 OR s.product = ANY($6))
+             AND (cardinality($7::text[]) = 0 OR s.currency = ANY($7))
+             AND (cardinality($8::text[]) = 0 OR s.source = ANY($8))
+             AND (cardinality($9::text[]) = 0 OR s.adjustment = ANY($9))
+             AND NOT EXISTS (SELECT FROM unnest($10::text[]) AS w(word) WHERE strpos(lower(concat_ws('.',
+                 s.frequency, s.area, s.measure, s.partner, s.product, s.currency, s.source,
+                 s.adjustment) || ' ' || c.unit::text), lower(w.word)) = 0)
+           ORDER BY s.id LIMIT $11"#,
+        search.after,
+        frequency,
+        area,
+        measure,
+        partner,
+        product,
+        currency,
+        source,
+        adjustment,
+        &search.words,
+        search.limit
+    )
+    .fetch_all(connection)
+    .await?;
     rows.into_iter().map(ListedSeries::try_from).collect()
 }
 
-#[derive(sqlx::FromRow)]
 struct SearchRow {
     id: i64,
     frequency: String,
