@@ -122,9 +122,9 @@ pub(super) fn describe(
             timing,
             prices,
             adjustment: match code {
+                "S" | "Y" => Adjustment::SeasonallyAdjusted("source".to_owned()),
                 // W removes working-day effects and leaves the seasons in.
-                "" | "W" => Adjustment::Raw,
-                _ => Adjustment::SeasonallyAdjusted("source".to_owned()),
+                _ => Adjustment::Raw,
             },
         },
         multiplier: texts.get(Column::UnitMultiplier).parse().unwrap_or(0),
@@ -232,12 +232,20 @@ fn index(
     currency: Option<CurrencyCode>,
     own: Option<CurrencyCode>,
 ) -> Result<Quantity, Box<Finding>> {
+    let prices = implied != IndexKind::Volume;
     let kind = match texts.get(Column::IndexKind) {
-        "price" => IndexKind::Price,
-        "unit_value" => IndexKind::UnitValue,
-        "volume" => IndexKind::Volume,
-        "value" => IndexKind::Value,
-        _ => implied,
+        "" => implied,
+        "price" if prices => IndexKind::Price,
+        "unit_value" if prices => IndexKind::UnitValue,
+        "volume" if !prices => IndexKind::Volume,
+        _ => {
+            let why = if prices {
+                "the measure is one of prices: price or unit_value"
+            } else {
+                "the measure is one of volumes: volume"
+            };
+            return Err(not_applicable(Column::IndexKind, why));
+        }
     };
     let currency = match (kind, currency) {
         (IndexKind::Volume, Some(_)) => {
