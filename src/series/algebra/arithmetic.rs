@@ -341,7 +341,7 @@ fn quotient_unit(left: &Unit, right: &Unit) -> Result<(Unit, f64), AlgebraError>
                 );
             };
             match (a, b) {
-                (IndexKind::Value, b) if prices(*b) => {
+                (IndexKind::Value, b) if prices(*b) && currency == other => {
                     Ok((index_unit(IndexKind::Volume, left, right), value))
                 }
                 (IndexKind::Value, IndexKind::Volume) => {

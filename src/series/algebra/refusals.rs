@@ -269,6 +269,12 @@ fn products_and_quotients_know_their_units() {
         shown(divide(&value, &prices("2015"))),
         "volume index, 2015 = 100"
     );
+    let foreign_value = annual(index(IndexKind::Value, Some("XBD"), Some("2015")));
+    refused(
+        divide(&foreign_value, &prices("2015")),
+        "unit_clash",
+        ["of prices in XBD", "of prices in XAD"],
+    );
     let cross = divide(&annual(rate("XAD", "XCD")), &annual(rate("XBD", "XCD")));
     assert_eq!(shown(cross), "XAD per XBD");
     let cross = multiply(&annual(rate("XAD", "XCD")), &annual(rate("XCD", "XBD")));
