@@ -62,40 +62,42 @@ fn sum_unit(operation: &'static str, left: &Unit, right: &Unit) -> Result<Unit, 
             "Take both sides as the same kind of flow or stock, both raw or both adjusted.",
         ));
     }
-    let mut unit = left.clone();
-    match (&left.prices, &right.prices) {
+    let prices = match (&left.prices, &right.prices) {
         (Prices::Chained { .. }, _) | (_, Prices::Chained { .. }) => {
             return Err(clash(
                 "chained volumes do not add up",
                 "Add in current prices or in prices of the year before, then deflate or chain.",
             ));
         }
+        (a, b) if unstated(a) || unstated(b) => return Err(clash(UNSTATED, SEND_REFERENCE)),
         (
             Prices::Deflated {
-                deflator,
+                deflator: a,
                 price_reference,
             },
-            Prices::Deflated {
-                deflator: other,
-                price_reference: other_reference,
-            },
-        ) if same_reference(price_reference, other_reference) => {
-            if deflator != other {
-                unit.prices = Prices::Deflated {
-                    deflator: format!("{deflator}, {other}"),
-                    price_reference: price_reference.clone(),
-                };
-            }
+            Prices::Deflated { deflator: b, .. },
+        ) if one_period(&left.prices, &right.prices) && a != b => Prices::Deflated {
+            deflator: format!("{a}, {b}"),
+            price_reference: price_reference.clone(),
+        },
+        // Not all of the sum is known to stand in constant prices proper.
+        (Prices::Constant { .. }, deflated @ Prices::Deflated { .. })
+            if one_period(&left.prices, deflated) =>
+        {
+            deflated.clone()
         }
-        (left, right) if left == right => {}
+        (a, b) if a == b || one_period(a, b) => a.clone(),
         _ => {
             return Err(clash(
                 "the price bases differ",
                 "Bring both sides to prices of one period.",
             ));
         }
-    }
-    Ok(unit)
+    };
+    Ok(Unit {
+        prices,
+        ..left.clone()
+    })
 }
 
 /// `left × right`.
@@ -260,21 +262,7 @@ fn quotient_unit(left: &Unit, right: &Unit) -> Result<(Unit, f64), AlgebraError>
                 );
             }
             match (&left.prices, &right.prices) {
-                (
-                    Prices::Chained {
-                        price_reference: None,
-                    },
-                    _,
-                )
-                | (
-                    Prices::Constant {
-                        price_reference: None,
-                    },
-                    _,
-                ) => clash(
-                    "the period of the prices is not stated",
-                    "Send the series again with its price reference.",
-                ),
+                (a, b) if unstated(a) || unstated(b) => clash(UNSTATED, SEND_REFERENCE),
                 (a, b) if a == b => Ok((ratio(), 1.0)),
                 (Prices::Current, real) if price_reference(real).is_some() => {
                     let quantity = Quantity::Index {
@@ -292,13 +280,11 @@ fn quotient_unit(left: &Unit, right: &Unit) -> Result<(Unit, f64), AlgebraError>
                         100.0,
                     ))
                 }
-                (a, b) => match (price_reference(a), price_reference(b)) {
-                    (Some(a), Some(b)) if same_reference(a, b) => Ok((ratio(), 1.0)),
-                    _ => clash(
-                        "the price bases differ",
-                        "Bring both sides to prices of one period.",
-                    ),
-                },
+                (a, b) if one_period(a, b) => Ok((ratio(), 1.0)),
+                _ => clash(
+                    "the price bases differ",
+                    "Bring both sides to prices of one period.",
+                ),
             }
         }
         (Quantity::Money { .. }, Quantity::Index { .. }) => clash(
@@ -488,6 +474,29 @@ fn price_reference(prices: &Prices) -> Option<&str> {
             price_reference, ..
         } => Some(price_reference),
         Prices::None | Prices::Current | Prices::PreviousYear => None,
+    }
+}
+
+const UNSTATED: &str = "the period of the prices is not stated";
+const SEND_REFERENCE: &str = "Send the series again with its price reference.";
+
+/// Whether an amount is said to be real without saying in whose prices.
+fn unstated(prices: &Prices) -> bool {
+    matches!(
+        prices,
+        Prices::Constant {
+            price_reference: None
+        } | Prices::Chained {
+            price_reference: None
+        }
+    )
+}
+
+/// Whether two real amounts stand in prices of one period.
+fn one_period(left: &Prices, right: &Prices) -> bool {
+    match (price_reference(left), price_reference(right)) {
+        (Some(a), Some(b)) => same_reference(a, b),
+        _ => false,
     }
 }
 

@@ -225,7 +225,39 @@ fn sums_refuse_what_does_not_add_up() {
         "no_overlap",
         ["2014 to 2016", "2020 to 2020"],
     );
+    let constant = |reference: Option<&str>| {
+        let price_reference = reference.map(str::to_owned);
+        annual(real("XAD", Prices::Constant { price_reference }))
+    };
+    for other in [constant(None), constant(Some("2015"))] {
+        for result in [
+            add(&constant(None), &other),
+            subtract(&other, &constant(None)),
+            divide(&other, &constant(None)),
+        ] {
+            refused(
+                result,
+                "unit_clash",
+                ["an unstated period", "period of the prices is not stated"],
+            );
+        }
+    }
     let deflated = |by: &str| deflate(&nominal, &prices, by, span("2015")).unwrap();
+    // Both in prices of one period; the weaker label stays.
+    for sum in [
+        add(&constant(Some("2015")), &deflated("A.XAA.p")),
+        add(&deflated("A.XAA.p"), &constant(Some("2015"))),
+    ] {
+        assert_eq!(
+            sum.unwrap().unit.to_string(),
+            "XAD, flow, deflated by A.XAA.p, prices of 2015"
+        );
+    }
+    refused(
+        add(&constant(Some("2010")), &deflated("A.XAA.p")),
+        "unit_clash",
+        ["constant prices of 2010", "prices of 2015"],
+    );
     assert_eq!(
         add(&deflated("A.XAA.p"), &deflated("A.XAA.q"))
             .unwrap()
