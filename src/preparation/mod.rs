@@ -20,7 +20,7 @@
 //! | `add`, `subtract` | anywhere | list of series | same currency, price basis and timing; chained volumes, indices and rates are refused |
 //! | `multiply` | anywhere | list of series | amount × ratio; real amount × its price index = current prices; price × volume index = value index; cross rates |
 //! | `divide` | anywhere | list of series | money ÷ money = ratio; current ÷ real = implicit price index (100 in its reference); index ÷ index of one reference = ratio; value ÷ price index = volume index; amount ÷ ratio; cross rates |
-//! | `geometric_mean` | first | `of`, `weights` (fixed; default equal) | indices, rates or ratios of one unit; reference unknown until rebased |
+//! | `geometric_mean` | first | `of`, `weights` (fixed; default equal) | indices, rates or ratios of one unit; indices keep their reference where it is held |
 //! | `link` | first | `target`, `with`, `over` (default: all common periods) | `target` where it reaches, else `with` × mean(target)/mean(with); growth inside each kept |
 //! | `foreign_income` | first | `partners` [{`income`, `weights`}], `reference`, `reference_value` (100), `weight_years` (1 or 3) | volume index: Δln = Σ w Δln Y, annual weights of the year before, over partners present in both periods |
 //! | `real_exchange_rate` | first | `home_price`, `foreign_price`, `rate`, `reference`, `reference_value` | P home / (E · P foreign), E home per foreign: up is a real appreciation |

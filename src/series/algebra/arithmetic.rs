@@ -5,7 +5,8 @@ mod units;
 pub(super) use units::adjusted;
 
 use self::units::{is_amount, product_unit, quotient_unit, sum_unit};
-use super::{AlgebraError, map_together, overlap, same_frequency, scaled};
+use super::index::rebase;
+use super::{AlgebraError, Span, map_together, overlap, same_frequency, scaled};
 use crate::series::{Quantity, Series, Unit};
 
 /// `left + right`.
@@ -96,8 +97,10 @@ pub fn negate(series: &Series) -> Result<Series, AlgebraError> {
 
 /// `exp(Σ w_k ln v_k / Σ w_k)` over series of one unit, weights equal unless given.
 ///
-/// The result of indices has no known reference until it is rebased. A value that is not positive
-/// leaves the mean without result.
+/// The mean of indices has their reference: in a reference of one period each stands at the reference
+/// value, hence so does the mean; over several periods the mean is rebased to it. Where a part of such a
+/// reference is not held, the mean has no known reference until it is rebased. A value that is not
+/// positive leaves the mean without result.
 ///
 /// # Errors
 /// No series; weights of another number, or not positive; units that differ in more than the year
@@ -138,9 +141,13 @@ pub fn geometric_mean(of: &[&Series], weights: Option<&[f64]>) -> Result<Series,
         }
         same_frequency(MEAN, first, other)?;
     }
-    match &mut unit.quantity {
-        Quantity::Index { reference, .. } => *reference = None,
-        Quantity::Rate { .. } | Quantity::Ratio => {}
+    let reference = match &mut unit.quantity {
+        Quantity::Index {
+            reference,
+            reference_value,
+            ..
+        } => reference.take().map(|text| (text, *reference_value)),
+        Quantity::Rate { .. } | Quantity::Ratio => None,
         Quantity::Money { .. }
         | Quantity::Growth { .. }
         | Quantity::Physical { .. }
@@ -152,14 +159,34 @@ pub fn geometric_mean(of: &[&Series], weights: Option<&[f64]>) -> Result<Series,
                 "Add the series, or take their growth by foreign_income.",
             ));
         }
-    }
+    };
     let total: f64 = weights.iter().sum();
-    Ok(map_together(unit, overlap(MEAN, of)?, of, |v| {
+    let mean = map_together(unit, overlap(MEAN, of)?, of, |v| {
         // A logarithm of zero would make the mean zero, which it is not.
         if v.iter().any(|v| *v <= 0.0) {
             return f64::NAN;
         }
         let logs = v.iter().zip(&weights).map(|(v, w)| w * v.ln());
         (logs.sum::<f64>() / total).exp()
-    }))
+    });
+    Ok(match reference {
+        Some((text, value)) => with_reference(mean, &text, value),
+        None => mean,
+    })
+}
+
+/// A mean of indices that all average `value` in a reference, brought to it where that can be done.
+fn with_reference(mut mean: Series, text: &str, value: f64) -> Series {
+    let Ok(span) = text.parse::<Span>() else {
+        return mean;
+    };
+    match span.at(mean.frequency()) {
+        Some((first, last)) if first == last => {
+            if let Quantity::Index { reference, .. } = &mut mean.unit.quantity {
+                *reference = Some(text.to_owned());
+            }
+            mean
+        }
+        _ => rebase(&mean, span, value).unwrap_or(mean),
+    }
 }

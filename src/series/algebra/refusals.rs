@@ -441,11 +441,40 @@ fn geometric_means_need_one_unit() {
         "invalid_option",
         ["weights", "0.0"],
     );
-    assert!(matches!(
-        mean.unit.quantity,
-        Quantity::Index {
-            reference: None,
-            ..
-        }
+    let reference = |mean: &Series| match &mean.unit.quantity {
+        Quantity::Index { reference, .. } => reference.clone(),
+        _ => panic!("{}", mean.unit),
+    };
+    assert_eq!(reference(&mean), None);
+
+    // In a reference of one period every index is 100, and so is the mean.
+    let based = index(IndexKind::Price, Some("XAD"), Some("2015"));
+    let (a, b) = (
+        annual(based.clone()),
+        series(based.clone(), "2014", &[40.0, 100.0, 40.0]),
+    );
+    let mean = geometric_mean(&[&a, &b], None).unwrap();
+    assert!(near(mean.values[0], 60.0, 4.0));
+    assert_eq!(reference(&mean).as_deref(), Some("2015"));
+    assert_eq!(divide(&a, &mean).unwrap().unit, Unit::ratio());
+    // In a longer one the mean of means is no mean: it is brought to 100 there, if it reaches so far.
+    let quarters = |start, values: &[f64]| series(based.clone(), start, values);
+    let (a, b) = (
+        quarters("2015-Q1", &[50.0, 150.0, 50.0, 150.0, 200.0]),
+        quarters("2015-Q1", &[150.0, 50.0, 150.0, 50.0, 200.0]),
+    );
+    let mean = geometric_mean(&[&a, &b], None).unwrap();
+    assert_eq!(reference(&mean).as_deref(), Some("2015"));
+    assert!(near(
+        span("2015").average_of("test", &mean).unwrap(),
+        100.0,
+        8.0
     ));
+    assert!(near(
+        mean.values[4] / mean.values[0],
+        200.0 / 7500.0_f64.sqrt(),
+        8.0
+    ));
+    let late = quarters("2016-Q1", &[200.0, 210.0]);
+    assert_eq!(reference(&geometric_mean(&[&late], None).unwrap()), None);
 }
