@@ -28,7 +28,7 @@
 //! | `rebase` | later | `reference`, `reference_value` (100) | index ÷ its mean in the reference |
 //! | `deflate` | later | `by`, `reference` | current-price money ÷ price index of the same currency, prices of the reference |
 //! | `convert` | later | `to`, `rates`, `at` | money or price index in another currency, rate of the same period; real money by the mean rate over `at`, the period of its prices |
-//! | `aggregate` | later | `to`, `by` (`sum`, `mean`, `first`, `last`; default by timing), `min_coverage` (means), `ends` (`drop`, `missing`) | lower frequency; sums and means need every sub-period |
+//! | `aggregate` | later | `to`, `by` (`sum`, `mean`, `first`, `last`; default by timing), `min_coverage` (means), `ends` (`drop`, `missing`) | lower frequency; sums and means need every sub-period; growth is taken of the aggregate |
 //! | `growth` | later | `kind` (`log`, `ratio`), `over` (`period`, `year`), `annualised` | growth as a fraction |
 //! | `negate` | later | `{}` | the other sign |
 

@@ -371,6 +371,19 @@ fn growth_refuses_growth_and_weeks_over_the_year() {
         ["over", "W"],
     );
     let quarters = series(money("XAD"), "2015-Q1", &[1.0, 1.02]);
+    let plain = growth(&quarters, GrowthKind::Log, Over::Period, false).unwrap();
+    let yearly = growth(&quarters, GrowthKind::Log, Over::Period, true).unwrap();
+    refused(
+        subtract(&plain, &yearly),
+        "unit_clash",
+        ["(log growth)", "(log growth at annual rate)"],
+    );
+    let year = aggregate(&plain, Frequency::Annual, None, Some(0.25), Ends::Drop);
+    refused(
+        year.map(|a| a.series),
+        "unsuitable_unit",
+        ["log growth", "the parts"],
+    );
     let annualised = growth(&quarters, GrowthKind::Ratio, Over::Period, true).unwrap();
     assert!((annualised.values[0] - (1.02_f64.powi(4) - 1.0)).abs() < 1e-15);
 }
