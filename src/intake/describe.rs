@@ -7,7 +7,7 @@ use super::kind::Kind;
 use super::measure::Form;
 use super::number;
 use super::settings::Context;
-use crate::finding::Finding;
+use crate::finding::{Finding, counted};
 use crate::series::{
     Adjustment, CurrencyCode, IndexKind, Prices, Quantity, RateTiming, RateType, Timing, Unit,
 };
@@ -168,7 +168,7 @@ pub(super) fn own_money_unknown(currency: CurrencyCode, areas: &BTreeSet<String>
         ),
     )
     .at_column(Column::OwnCurrency.name())
-    .found(format!("{} areas", areas.len()))
+    .found(counted(areas.len(), "area"))
     .remedy(format!(
         "where {currency} is an area's own money, send its rows with own_currency={currency}"
     ))

@@ -1,7 +1,7 @@
 //! What an evaluation is worth telling: coverage, link factors, periods left off. Thresholds are
 //! those of METHODS section 6 (common practice).
 
-use crate::finding::Finding;
+use crate::finding::{Finding, counted};
 use crate::series::algebra::{Aggregated, Effective, Incomplete, Linked};
 use crate::series::{IndexKind, Quantity, RateTiming, Series, Timing};
 
@@ -13,8 +13,9 @@ pub(super) fn of_link(linked: &Linked) -> Vec<Finding> {
         Finding::notice(
             "link_factor",
             format!(
-                "linked on {} periods, {first} to {last}: factor {}, spread over the overlap {spread}",
-                linked.periods, linked.factor
+                "linked on {}, {first} to {last}: factor {}, spread over the overlap {spread}",
+                counted(linked.periods, "period"),
+                linked.factor
             ),
         )
         .found(linked.factor.to_string()),
@@ -86,7 +87,10 @@ fn unmatched(code: &str, what: &str, amount: &Series, result: &Series) -> Vec<Fi
         .map(|period| {
             Finding::notice(
                 code,
-                format!("{lost} amounts have no {what} in their period and are missing"),
+                format!(
+                    "missing for want of the {what} of the period: {}",
+                    counted(lost, "amount")
+                ),
             )
             .at_period(period)
             .found(lost.to_string())
@@ -106,7 +110,7 @@ pub(super) fn of_aggregating(aggregated: &Aggregated) -> Vec<Finding> {
         ("incomplete_periods_missing", "missing", &aggregated.missing),
         (
             "partial_periods",
-            "rest on part of their sub-periods",
+            "resting on part of the sub-periods",
             &aggregated.partial,
         ),
     ]
@@ -117,8 +121,8 @@ pub(super) fn of_aggregating(aggregated: &Aggregated) -> Vec<Finding> {
             Finding::notice(
                 code,
                 format!(
-                    "{} incomplete periods {what}: {}",
-                    periods.len(),
+                    "{} {what}: {}",
+                    counted(periods.len(), "incomplete period"),
                     shown(periods)
                 ),
             )
@@ -150,10 +154,11 @@ pub(super) fn of_weights(effective: &Effective, partners: usize) -> Vec<Finding>
     let mean = coverage.iter().map(|c| c.share).sum::<f64>() / coverage.len() as f64;
     let share = format!("{:.1} %", 100.0 * lowest.share);
     let message = format!(
-        "weights of {partners} partners: on average {:.1} % covered, least in {} with {share} ({} partners)",
+        "weights of {}: on average {:.1} % covered, least in {} with {share} ({})",
+        counted(partners, "partner"),
         100.0 * mean,
         lowest.period,
-        lowest.partners
+        counted(lowest.partners, "partner")
     );
     let finding = if lowest.share < 0.6 {
         Finding::error("weight_coverage", message)

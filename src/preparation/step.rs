@@ -7,6 +7,7 @@ use serde::de::{MapAccess, Visitor};
 use serde::{Deserialize, Deserializer, Serialize};
 use utoipa::ToSchema;
 
+use crate::finding::counted;
 use crate::series::algebra::{Ends, Method, Over, Span, WeightYears};
 use crate::series::{CurrencyCode, GrowthKind, SeriesKey};
 use crate::time::Frequency;
@@ -294,8 +295,8 @@ impl Step {
                 reference_value,
                 weight_years,
             } => format!(
-                "foreign income of {} partners ({}), {}, {reference} = {reference_value}",
-                partners.len(),
+                "foreign income of {} ({}), {}, {reference} = {reference_value}",
+                counted(partners.len(), "partner"),
                 partners
                     .iter()
                     .map(|p| p.income.to_string())
@@ -320,8 +321,8 @@ impl Step {
                 reference_value,
                 weight_years,
             } => format!(
-                "real effective exchange rate (up: real appreciation): {home_price} over the prices of {} partners ({}), {}, {reference} = {reference_value}",
-                partners.len(),
+                "real effective exchange rate (up: real appreciation): {home_price} over the prices of {} ({}), {}, {reference} = {reference_value}",
+                counted(partners.len(), "partner"),
                 partners
                     .iter()
                     .map(|p| p.price.to_string())
