@@ -382,7 +382,7 @@ fn growth_refuses_growth_and_weeks_over_the_year() {
     refused(
         year.map(|a| a.series),
         "unsuitable_unit",
-        ["log growth", "the parts"],
+        ["log growth", "longer period"],
     );
     let annualised = growth(&quarters, GrowthKind::Ratio, Over::Period, true).unwrap();
     assert!((annualised.values[0] - (1.02_f64.powi(4) - 1.0)).abs() < 1e-15);
@@ -454,9 +454,11 @@ fn geometric_means_need_one_unit() {
         "invalid_option",
         ["weights", "0.0"],
     );
-    let reference = |mean: &Series| match &mean.unit.quantity {
-        Quantity::Index { reference, .. } => reference.clone(),
-        _ => panic!("{}", mean.unit),
+    let reference = |mean: &Series| {
+        let Quantity::Index { reference, .. } = &mean.unit.quantity else {
+            panic!("{}", mean.unit);
+        };
+        reference.clone()
     };
     assert_eq!(reference(&mean), None);
 
