@@ -2,8 +2,10 @@
 
 use serde::Deserialize;
 
+use super::arithmetic::adjusted;
 use super::index::rebase;
-use super::{AlgebraError, Span, all_positive, map_together, overlap, same_frequency};
+use super::money::quoted;
+use super::{AlgebraError, Span, all_positive, map_together, observed, overlap, same_frequency};
 use crate::series::{
     Adjustment, CurrencyCode, IndexKind, Prices, Quantity, Series, Status, Timing, Unit,
 };
@@ -135,31 +137,13 @@ fn relative_price(
         let extent = overlap(RER, &sides)?;
         return Ok(map_together(unit, extent, &sides, |v| v[0] / v[1]));
     };
-    let home_per_foreign = match rate.unit.quantity {
-        Quantity::Rate {
-            numerator,
-            denominator,
-            ..
-        } if (numerator, denominator) == (home, foreign) => true,
-        Quantity::Rate {
-            numerator,
-            denominator,
-            ..
-        } if (numerator, denominator) == (foreign, home) => false,
-        Quantity::Rate { .. }
-        | Quantity::Money { .. }
-        | Quantity::Index { .. }
-        | Quantity::Ratio
-        | Quantity::Growth { .. }
-        | Quantity::Physical { .. }
-        | Quantity::Count => {
-            return Err(AlgebraError::clash(
-                RER,
-                (&foreign_price.unit, &rate.unit),
-                "the rate is not between the currencies of the two price indices",
-                "Take the rate between home and foreign money.",
-            ));
-        }
+    let Some(home_per_foreign) = quoted(&rate.unit, foreign, home) else {
+        return Err(AlgebraError::clash(
+            RER,
+            (&foreign_price.unit, &rate.unit),
+            "the rate is not between the currencies of the two price indices",
+            "Take the rate between home and foreign money.",
+        ));
     };
     same_frequency(RER, home_price, rate)?;
     all_positive(RER, "the exchange rate", rate)?;
@@ -233,18 +217,19 @@ pub fn foreign_income(
     for partner in partners {
         let named = |e: AlgebraError| Err(e.with_partner(partner.name));
         let unit = &partner.level.unit;
-        let real = match &unit.quantity {
-            Quantity::Money { .. } => matches!(
-                unit.prices,
+        let real = matches!(
+            (&unit.quantity, &unit.prices),
+            (
+                Quantity::Money { .. },
                 Prices::Constant { .. } | Prices::Chained { .. } | Prices::Deflated { .. }
-            ),
-            Quantity::Index { kind, .. } => *kind == IndexKind::Volume,
-            Quantity::Rate { .. }
-            | Quantity::Ratio
-            | Quantity::Growth { .. }
-            | Quantity::Physical { .. }
-            | Quantity::Count => false,
-        };
+            ) | (
+                Quantity::Index {
+                    kind: IndexKind::Volume,
+                    ..
+                },
+                _
+            )
+        );
         if !real || unit.timing == Timing::FlowYearToDate {
             return named(AlgebraError::unsuitable(
                 INCOME,
@@ -413,17 +398,10 @@ fn check_partner(
         });
     }
     let unit = &partner.weights.unit;
-    let usable = match unit.quantity {
-        Quantity::Ratio => true,
-        Quantity::Money { .. } => {
-            unit.prices == Prices::Current && unit.timing != Timing::FlowYearToDate
-        }
-        Quantity::Index { .. }
-        | Quantity::Rate { .. }
-        | Quantity::Growth { .. }
-        | Quantity::Physical { .. }
-        | Quantity::Count => false,
-    };
+    let usable = unit.quantity == Quantity::Ratio
+        || matches!(unit.quantity, Quantity::Money { .. })
+            && unit.prices == Prices::Current
+            && unit.timing != Timing::FlowYearToDate;
     if !usable {
         return Err(AlgebraError::unsuitable(
             operation,
@@ -456,24 +434,20 @@ fn check_partner(
 
 /// The currency of a price index.
 fn price_currency(operation: &'static str, unit: &Unit) -> Result<CurrencyCode, AlgebraError> {
-    match unit.quantity {
-        Quantity::Index {
-            kind: IndexKind::Price | IndexKind::UnitValue,
-            currency: Some(currency),
-            ..
-        } => Ok(currency),
-        Quantity::Index { .. }
-        | Quantity::Money { .. }
-        | Quantity::Rate { .. }
-        | Quantity::Ratio
-        | Quantity::Growth { .. }
-        | Quantity::Physical { .. }
-        | Quantity::Count => Err(AlgebraError::unsuitable(
+    if let Quantity::Index {
+        kind: IndexKind::Price | IndexKind::UnitValue,
+        currency: Some(currency),
+        ..
+    } = unit.quantity
+    {
+        Ok(currency)
+    } else {
+        Err(AlgebraError::unsuitable(
             operation,
             unit,
             "it is not an index of prices in a stated currency",
             "Take a price index with its currency.",
-        )),
+        ))
     }
 }
 

@@ -63,10 +63,7 @@ impl Span {
             .map(|n| {
                 let period = first.plus(n);
                 period
-                    .and_then(|p| series.position(p))
-                    .filter(|i| series.status[*i] != Status::Forecast)
-                    .map(|i| series.values[i])
-                    .filter(|v| v.is_finite())
+                    .and_then(|p| observed(series, p))
                     .ok_or_else(|| not_covered(period))
             })
             .collect()
