@@ -4,6 +4,7 @@
 use crate::finding::{Finding, counted};
 use crate::series::algebra::{Aggregated, Effective, Incomplete, Linked};
 use crate::series::{IndexKind, Quantity, RateTiming, Series, Timing};
+use crate::time::Frequency;
 
 /// Factor and spread of a link; a spread above 1 % is told, above 5 % an error.
 pub(super) fn of_link(linked: &Linked) -> Vec<Finding> {
@@ -37,7 +38,7 @@ pub(super) fn of_link(linked: &Linked) -> Vec<Finding> {
     notes
 }
 
-/// Amounts without a price, and unit values as deflators.
+/// Amounts without a price, unit values as deflators, and one side alone adjusted for season.
 pub(super) fn of_deflating(nominal: &Series, index: &Series, result: &Series) -> Vec<Finding> {
     let mut notes = unmatched("no_matching_price", "price", nominal, result);
     if let Quantity::Index {
@@ -49,6 +50,18 @@ pub(super) fn of_deflating(nominal: &Series, index: &Series, result: &Series) ->
             "unit_value_deflator",
             "deflated by unit values, which move with the mix of goods as well as with prices",
         ));
+    }
+    if nominal.frequency() != Frequency::Annual
+        && nominal.unit.adjustment.is_raw() != index.unit.adjustment.is_raw()
+    {
+        notes.push(
+            Finding::notice(
+                "adjustment_differs",
+                "of amount and prices one is adjusted for season, the other is not",
+            )
+            .found(format!("{}; {}", nominal.unit, index.unit))
+            .remedy("Deflate unadjusted by unadjusted, then adjust, where both are held."),
+        );
     }
     notes
 }

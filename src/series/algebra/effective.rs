@@ -122,8 +122,8 @@ fn relative_price(
     same_frequency(RER, home_price, foreign_price)?;
     all_positive(RER, "the home price index", home_price)?;
     all_positive(RER, "the foreign price index", foreign_price)?;
-    let mut unit = relative_price_unit(IndexKind::ExchangeRate, 100.0);
-    unit.adjustment = home_price.unit.adjustment.clone();
+    let unit = relative_price_unit(IndexKind::ExchangeRate, 100.0);
+    let unit = adjusted(unit, &home_price.unit, &foreign_price.unit);
     let Some(rate) = rate else {
         if home != foreign {
             return Err(AlgebraError::clash(
@@ -149,6 +149,7 @@ fn relative_price(
     all_positive(RER, "the exchange rate", rate)?;
     let sides = [home_price, foreign_price, rate];
     let extent = overlap(RER, &sides)?;
+    let unit = adjusted(unit.clone(), &unit, &rate.unit);
     Ok(map_together(unit, extent, &sides, |v| {
         if home_per_foreign {
             v[0] / (v[2] * v[1])
@@ -184,14 +185,12 @@ pub fn real_effective_exchange_rate(
             weights: p.weights,
         })
         .collect();
-    let mut unit = relative_price_unit(IndexKind::ExchangeRate, reference.value);
-    unit.adjustment = home_price.unit.adjustment.clone();
     cumulate(
         "real_effective_exchange_rate",
         &weighted,
         years,
         reference,
-        unit,
+        IndexKind::ExchangeRate,
     )
 }
 
@@ -249,11 +248,7 @@ pub fn foreign_income(
             ));
         }
     }
-    let mut unit = relative_price_unit(IndexKind::Volume, reference.value);
-    if let Some(first) = partners.first() {
-        unit.adjustment = first.level.unit.adjustment.clone();
-    }
-    cumulate(INCOME, partners, years, reference, unit)
+    cumulate(INCOME, partners, years, reference, IndexKind::Volume)
 }
 
 /// The chained weighted growth behind both aggregates.
@@ -262,13 +257,17 @@ fn cumulate(
     partners: &[Partner<'_>],
     years: WeightYears,
     reference: Reference,
-    unit: Unit,
+    kind: IndexKind,
 ) -> Result<Effective, AlgebraError> {
     let (start, end) = check_partners(operation, partners)?;
+    let unit = relative_price_unit(kind, reference.value);
+    let unit = partners.iter().fold(unit, |unit, partner| {
+        adjusted(unit.clone(), &unit, &partner.level.unit)
+    });
     let n = usize::try_from(end.ordinal() - start.ordinal()).unwrap_or(0);
+    let nth = |n: usize| i32::try_from(n).ok().and_then(|n| start.plus(n));
     let steps: Vec<Option<Step>> = (1..=n)
-        .map(|n| start.plus(i32::try_from(n).ok()?))
-        .map(|period| growth_step(partners, years, period?))
+        .map(|n| growth_step(partners, years, nth(n)?))
         .collect();
     // The run of unbroken steps around the first period of the reference; a step leads from the
     // period of its own number to the next.

@@ -2,6 +2,7 @@
 
 use super::samples::*;
 use super::*;
+use crate::series::Adjustment;
 
 fn at(reference: &str) -> Reference {
     Reference {
@@ -108,11 +109,24 @@ fn up_is_a_real_appreciation_of_the_home_area() {
         rate: None,
         weights: &weights,
     };
-    let reer = real_effective_exchange_rate(&flat, &[partner, alike], WeightYears::One, at("2015"));
-    let reer = reer.unwrap();
+    let effective = |home: &Series, partners: &[TradePartner<'_>]| {
+        real_effective_exchange_rate(home, partners, WeightYears::One, at("2015")).unwrap()
+    };
+    let reer = effective(&flat, &[partner, alike]);
     // Half of Δln = −ln 2.
     assert!((reer.series.values[2] - 100.0 / 2.0_f64.sqrt()).abs() < 1e-12);
     assert_eq!(reer.coverage.len(), 2);
+
+    // Adjusted where any price is.
+    let adjusted = Unit {
+        adjustment: Adjustment::SeasonallyAdjusted("OFFICE".to_owned()),
+        ..price_index("XBD")
+    };
+    let price = &series(adjusted.clone(), "2014", &[100.0; 3]);
+    let rer = real_exchange_rate(&flat, price, Some(&falling), at("2015")).unwrap();
+    let reer = effective(&flat, &[alike, TradePartner { price, ..partner }]).series;
+    assert_eq!(rer.unit.adjustment, adjusted.adjustment);
+    assert_eq!(reer.unit.adjustment, adjusted.adjustment);
 }
 
 #[test]
