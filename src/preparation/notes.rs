@@ -158,7 +158,8 @@ fn shown(periods: &[Incomplete]) -> String {
     text
 }
 
-/// Lowest coverage of the weights; below 80 % is told as such, below 60 % an error.
+/// Lowest coverage of the weights (below 80 % is told as such, below 60 % an error), partners without
+/// a weight (most of them: an error), and periods beyond a break.
 pub(super) fn of_weights(effective: &Effective, partners: usize) -> Vec<Finding> {
     let coverage = &effective.coverage;
     let Some(lowest) = coverage.iter().min_by(|a, b| a.share.total_cmp(&b.share)) else {
@@ -179,11 +180,47 @@ pub(super) fn of_weights(effective: &Effective, partners: usize) -> Vec<Finding>
         Finding::notice("weight_coverage", message)
     };
     let finding = finding.at_period(lowest.period).found(share);
-    vec![if lowest.share < 0.8 {
+    let mut notes = vec![if lowest.share < 0.8 {
         finding
             .expected("at least 80 %")
             .remedy("Send the missing incomes, prices or weights, or name other partners.")
     } else {
         finding
-    }]
+    }];
+    // The first of the periods that lack most.
+    let fewest = coverage.iter().rev().max_by_key(|c| c.unweighted);
+    if let Some(fewest) = fewest.filter(|c| c.unweighted > 0) {
+        let message = format!(
+            "without a weight, which coverage does not show: in {} {} of {}",
+            fewest.period,
+            fewest.unweighted,
+            counted(partners, "partner")
+        );
+        let finding = if 2 * fewest.unweighted > partners {
+            Finding::error("weights_missing", message)
+        } else {
+            Finding::notice("weights_missing", message)
+        };
+        notes.push(
+            finding
+                .at_period(fewest.period)
+                .found(fewest.unweighted.to_string())
+                .remedy("Send the missing weights, zero for partners without trade."),
+        );
+    }
+    if let [first, rest @ ..] = &effective.left_off[..] {
+        let last = rest.last().unwrap_or(first);
+        notes.push(
+            Finding::notice(
+                "periods_left_off",
+                format!(
+                    "left off for want of weights or of values in between: {}, {first} to {last}",
+                    counted(effective.left_off.len(), "period")
+                ),
+            )
+            .at_period(first)
+            .found(effective.left_off.len().to_string()),
+        );
+    }
+    notes
 }

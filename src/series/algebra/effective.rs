@@ -78,8 +78,10 @@ pub struct Coverage {
     pub period: Period,
     /// Partners with a value in this period and the one before, and a weight.
     pub partners: usize,
-    /// Their share in the weight of all named partners.
+    /// Their share in the weight of all named partners that have one.
     pub share: f64,
+    /// Partners without a weight for this period, which therefore do not lower the share.
+    pub unweighted: usize,
 }
 
 /// What a weighted aggregate returns.
@@ -89,6 +91,8 @@ pub struct Effective {
     pub series: Series,
     /// Coverage of each period after the first.
     pub coverage: Vec<Coverage>,
+    /// Periods beyond a break, left off though some partner has a value.
+    pub left_off: Vec<Period>,
 }
 
 /// `P_home / (E · P_foreign)`, E in home money per unit of foreign money: **a rise is a real
@@ -201,7 +205,7 @@ pub fn real_effective_exchange_rate(
 ///
 /// Weights are annual (lagged export weights: ratios, or money in one currency) and those of the
 /// year before the period, or the mean of the three years before. Growth is cumulated only through
-/// an unbroken run of periods around the reference; periods beyond a break are left off.
+/// an unbroken run of periods around the reference; periods beyond a break are left off and named.
 ///
 /// # Errors
 /// No partner; incomes at current prices or of other quantities; incomes partly adjusted for season
@@ -295,14 +299,16 @@ fn cumulate(
         values.push(log_level.exp());
         status.push(step.status);
     }
-    let start = i32::try_from(first)
-        .ok()
-        .and_then(|n| start.plus(n))
-        .unwrap_or(start);
-    let series = Series::with_status(unit, start, values, status);
+    let series = Series::with_status(unit, nth(first).unwrap_or(start), values, status);
+    let held = |period: &Period| partners.iter().any(|p| p.level.at(*period).is_some());
     Ok(Effective {
         series: rebase(&series, reference.span, reference.value)?,
         coverage: run.iter().map(|step| step.coverage).collect(),
+        left_off: (0..first)
+            .chain(at + after + 1..=n)
+            .filter_map(nth)
+            .filter(held)
+            .collect(),
     })
 }
 
@@ -316,9 +322,10 @@ struct Step {
 fn growth_step(partners: &[Partner<'_>], years: WeightYears, period: Period) -> Option<Step> {
     let before = period.plus(-1)?;
     let (mut total, mut held, mut sum) = (0.0, 0.0, 0.0);
-    let (mut count, mut status) = (0, Status::Normal);
+    let (mut count, mut unweighted, mut status) = (0, 0, Status::Normal);
     for partner in partners {
         let Some(weight) = weight_at(partner.weights, period, years) else {
+            unweighted += 1;
             continue;
         };
         total += weight;
@@ -339,17 +346,19 @@ fn growth_step(partners: &[Partner<'_>], years: WeightYears, period: Period) -> 
             period,
             partners: count,
             share: held / total,
+            unweighted,
         },
     })
 }
 
-/// The weight for a period: that of the year before, or the mean of the three years before.
+/// The weight for a period: that of the year before, or the mean of the three years before. Forecasts
+/// do not count.
 fn weight_at(weights: &Series, period: Period, years: WeightYears) -> Option<f64> {
     let year = period.convert(Frequency::Annual);
     match years {
-        WeightYears::One => weights.at(year.plus(-1)?),
+        WeightYears::One => observed(weights, year.plus(-1)?),
         WeightYears::Three => (1..=3)
-            .map(|n| weights.at(year.plus(-n)?))
+            .map(|n| observed(weights, year.plus(-n)?))
             .sum::<Option<f64>>()
             .map(|sum| sum / 3.0),
     }
