@@ -97,7 +97,7 @@ pub enum Step {
         reference: Span,
         #[serde(default = "hundred")]
         reference_value: f64,
-        #[serde(default)]
+        #[serde(default = "three")]
         weight_years: WeightYears,
     },
     /// Home prices over foreign prices in home money; up is a real appreciation.
@@ -182,6 +182,10 @@ pub struct PricePartner {
 
 fn hundred() -> f64 {
     100.0
+}
+
+fn three() -> WeightYears {
+    WeightYears::Three
 }
 
 impl Step {

@@ -189,6 +189,60 @@ fn aggregates_of_partners_carry_their_coverage() {
 }
 
 #[test]
+fn foreign_income_takes_mean_weights_of_three_years_unless_asked() {
+    let income = json!({ "partners": [{ "income": "A.XKB.gdp_real", "weights": "A.XKA.exports.XKB" }],
+                         "reference": "2015" });
+    let outputs = evaluated(&json!({ "A.XKA.foreign_income": [{ "foreign_income": income }] }));
+    assert!(
+        outputs[0].steps[0].contains("mean weights of the three years before"),
+        "{:?}",
+        outputs[0].steps
+    );
+    // Weights of 2012 on serve 2015 at the earliest.
+    assert_eq!(outputs[0].series.start.to_string(), "2014");
+    assert_eq!(outputs[0].series.len(), 3);
+}
+
+/// No currency in a key means the area's own money, which rates tell as well as amounts.
+#[test]
+fn what_is_in_other_money_needs_its_currency_in_the_key() {
+    let refused = |inputs: &[(&str, Unit)], outputs: Value, expected: &str| {
+        let inputs = inputs
+            .iter()
+            .map(|(name, unit)| (key(name), series(unit.clone(), "2014", &[1.0, 2.0])))
+            .collect();
+        let faults = evaluate(&document(&outputs).unwrap(), &inputs).expect_err("a mismatch");
+        assert_eq!(faults[0].code, "currency_mismatch");
+        assert_eq!(faults[0].expected.as_deref(), Some(expected));
+    };
+    let (price, dollars) = (
+        ("A.XKC.export_price...USD", price_index("USD")),
+        ("A.XKC.exports...USD", money("USD")),
+    );
+    refused(
+        &[price.clone(), ("A.XKC.exports", money("XCD"))],
+        json!({ "A.XKC.price": [{ "take": "A.XKC.export_price...USD" }] }),
+        "XCD, the money of XKC",
+    );
+    refused(
+        &[price, ("A.XKC.exchange_rate...USD", rate("XCD", "USD"))],
+        json!({ "A.XKC.price": [{ "take": "A.XKC.export_price...USD" }] }),
+        "XCD, the money of XKC",
+    );
+    refused(
+        &[dollars, ("A.XKC.exchange_rate...USD", rate("USD", "XCD"))],
+        json!({ "A.XKC.sales": [{ "take": "A.XKC.exports...USD" }] }),
+        "XCD, the money of XKC",
+    );
+    // Own money unknown: what stands in the keys of the area's series is not it.
+    refused(
+        &[("A.XKC.exports...USD", money("USD"))],
+        json!({ "A.XKC.sales": [{ "take": "A.XKC.exports...USD" }] }),
+        "the money of XKC",
+    );
+}
+
+#[test]
 fn every_fault_of_a_document_has_a_pointer() {
     let parse = |outputs: Value| faults(document(&outputs));
     let exports = json!({ "take": "Q.XKA.exports" });

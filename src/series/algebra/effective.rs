@@ -20,7 +20,8 @@ pub struct Reference {
     pub value: f64,
 }
 
-/// Years before the current one whose weights count; 1 or 3 in documents.
+/// Years before the current one whose weights count; 1 or 3 in documents: three for foreign income and one
+/// for exchange rates unless asked.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Deserialize)]
 #[serde(try_from = "u8")]
 pub enum WeightYears {
