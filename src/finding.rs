@@ -1,6 +1,8 @@
 //! Findings: what was seen, where, what was expected and what to do. Data here; the JSON answer,
 //! the text table and the log line are renderings made elsewhere.
 
+use std::fmt::Display;
+
 use serde::{Deserialize, Serialize};
 use utoipa::ToSchema;
 
@@ -60,6 +62,13 @@ pub struct Finding {
     /// What to do about it.
     #[serde(default, skip_serializing_if = "Option::is_none")]
     pub remedy: Option<String>,
+}
+
+/// A number with its noun, `1 row` or `3 rows`, of nouns that take an s.
+#[must_use]
+pub fn counted<N: Display + PartialEq + From<u8>>(n: N, noun: &str) -> String {
+    let plural = if n == N::from(1) { "" } else { "s" };
+    format!("{n} {noun}{plural}")
 }
 
 impl Finding {
@@ -148,5 +157,17 @@ impl Finding {
     pub fn remedy(mut self, remedy: impl Into<String>) -> Self {
         self.remedy = Some(remedy.into());
         self
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn one_thing_is_no_plural() {
+        assert_eq!(counted(0_usize, "row"), "0 rows");
+        assert_eq!(counted(1_u64, "row"), "1 row");
+        assert_eq!(counted(2_i64, "incomplete period"), "2 incomplete periods");
     }
 }

@@ -50,6 +50,17 @@ impl BoundsDesign {
         simulation: Simulation,
         store: &dyn SimulationStore,
     ) -> Result<BoundsNull, SeriesError> {
+        if let Some(o) = &self.orders
+            && (o.q.len() != self.regressors || o.p == 0)
+        {
+            return Err(SeriesError::Option {
+                method: "bounds tests",
+                fault: format!(
+                    "orders with p of at least 1 and {} q are needed",
+                    self.regressors
+                ),
+            });
+        }
         let differences = self
             .orders
             .as_ref()
@@ -60,17 +71,6 @@ impl BoundsDesign {
                 series: "the simulated equation".to_owned(),
                 observations: self.observations,
                 needed: size + 2,
-            });
-        }
-        if let Some(o) = &self.orders
-            && (o.q.len() != self.regressors || o.p == 0)
-        {
-            return Err(SeriesError::Option {
-                method: "bounds tests",
-                fault: format!(
-                    "orders with p of at least 1 and {} q are needed",
-                    self.regressors
-                ),
             });
         }
         let terms: Vec<Vec<f64>> = self

@@ -168,7 +168,7 @@ fn sup_p_value(x: f64, k: usize, trim: f64) -> Option<f64> {
         .collect();
     // Row i (from 0) is at trimming 0.49 − i/50.
     let place = ((0.49 - trim) * 50.0).max(0.0);
-    let below = (0..24).take_while(|i| as_f64(i + 1) <= place).count();
+    let below = (0..23).take_while(|i| as_f64(i + 1) <= place).count();
     let weight = (place - as_f64(below)).min(1.0);
     Some(rows.get(below)? * (1.0 - weight) + rows.get(below + 1)? * weight)
 }
@@ -249,6 +249,9 @@ mod tests {
             }
         }
         assert!(sup_p_value(10.0, 41, 0.15).is_none());
+        // The narrowest trimming of the table has a value too; more dates, larger suprema.
+        let [narrow, next] = [0.01, 0.02].map(|trim| sup_p_value(10.0, 1, trim).unwrap());
+        assert!(narrow > next && narrow < 0.1, "{narrow} {next}");
     }
 
     /// The simulated limit, by its sup. Discrete steps miss peaks, so its quantile lies a little lower;

@@ -3,7 +3,7 @@
 use super::breaks::share;
 use super::ols::{as_f64, columns, dot};
 use super::outcome::{Distribution, TestResult};
-use super::{EstimateError, Ols, Regressor};
+use super::{Deterministic, EstimateError, Ols, Regressor};
 use crate::linalg::Matrix;
 use crate::random::Draws;
 
@@ -104,15 +104,6 @@ pub fn instability(input: &CointegratingScores) -> Result<Instability, EstimateE
     })
 }
 
-/// Deterministic part of a cointegrating regression.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum Deterministic {
-    /// A constant.
-    Constant,
-    /// A constant and a trend.
-    Trend,
-}
-
 /// One draw of the statistics under the null.
 ///
 /// Least squares of white noise on the deterministic part and `integrated` independent random walks, n
@@ -128,10 +119,7 @@ pub fn instability_null(
     seed: u64,
     replication: u64,
 ) -> Result<Instability, EstimateError> {
-    let mut regressors = vec![Regressor::constant(n)];
-    if deterministic == Deterministic::Trend {
-        regressors.push(Regressor::trend(n));
-    }
+    let mut regressors = deterministic.columns(n);
     let k = regressors.len() + integrated;
     if n < 20.max(5 * k) {
         return Err(EstimateError::TooShort {

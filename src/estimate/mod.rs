@@ -68,8 +68,7 @@ pub use diagnostics::{
 };
 pub use durbin_watson::{DurbinWatson, DurbinWatsonBounds, durbin_watson, durbin_watson_bounds};
 pub use hansen_1992::{
-    CointegratingScores, Deterministic as ScoreDeterministic, Instability, InstabilityTest,
-    hansen_1992, instability, instability_null,
+    CointegratingScores, Instability, InstabilityTest, hansen_1992, instability, instability_null,
 };
 pub use instrumental::{InstrumentedEquation, Overidentification, TwoStage, two_stage};
 pub use kernel::{BandwidthRule, Kernel, bandwidth, rule_of_thumb_lags};

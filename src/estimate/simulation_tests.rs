@@ -139,6 +139,18 @@ fn published_bounds_in_small_samples() {
 }
 
 #[test]
+fn orders_without_a_lag_of_the_dependent_variable_are_refused() {
+    let design = BoundsDesign {
+        observations: 40,
+        regressors: 1,
+        case: BoundsCase::III,
+        orders: Some(ArdlOrders { p: 0, q: vec![1] }),
+    };
+    let refused = design.simulate(simulation(10), &NoStore);
+    assert!(matches!(refused, Err(SeriesError::Option { .. })));
+}
+
+#[test]
 fn threads_change_no_digit_and_seeds_do() {
     let design = BoundsDesign {
         observations: 40,

@@ -379,7 +379,7 @@ fn instability_of_a_cointegrating_regression() {
         omega,
     };
     let null: Vec<Instability> = (0..200)
-        .map(|i| instability_null(55, ScoreDeterministic::Constant, 3, 1, i).unwrap())
+        .map(|i| instability_null(55, Deterministic::Constant, 3, 1, i).unwrap())
         .collect();
     let found = hansen_1992(&input, &null).unwrap();
     // M has condition 200², and its part less what the whole takes cancels: 1e-7.

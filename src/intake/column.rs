@@ -156,7 +156,7 @@ impl Column {
                 "adjustment",
                 "Adjustment as in SDMX CL_SEASONAL_ADJUST: N or empty for none, S seasonally adjusted, \
                  W working days only, Y both",
-                Cell::Code,
+                Cell::OneOf(&["N", "S", "W", "Y"]),
                 "S",
             ),
             Self::Frequency => (
@@ -198,8 +198,9 @@ impl Column {
             ),
             Self::IndexKind => (
                 "index_kind",
-                "What the index measures; as the measure implies where absent",
-                Cell::OneOf(&["price", "unit_value", "volume", "value"]),
+                "What the index measures; as the measure implies where absent: price or unit_value for \
+                 measures of prices, volume for those of volumes",
+                Cell::OneOf(&["price", "unit_value", "volume"]),
                 "price",
             ),
             Self::WeightsYear => (

@@ -7,7 +7,7 @@ use super::kind::Kind;
 use super::measure::Form;
 use super::number;
 use super::settings::Context;
-use crate::finding::Finding;
+use crate::finding::{Finding, counted};
 use crate::series::{
     Adjustment, CurrencyCode, IndexKind, Prices, Quantity, RateTiming, RateType, Timing, Unit,
 };
@@ -122,9 +122,9 @@ pub(super) fn describe(
             timing,
             prices,
             adjustment: match code {
+                "S" | "Y" => Adjustment::SeasonallyAdjusted("source".to_owned()),
                 // W removes working-day effects and leaves the seasons in.
-                "" | "W" => Adjustment::Raw,
-                _ => Adjustment::SeasonallyAdjusted("source".to_owned()),
+                _ => Adjustment::Raw,
             },
         },
         multiplier: texts.get(Column::UnitMultiplier).parse().unwrap_or(0),
@@ -168,7 +168,7 @@ pub(super) fn own_money_unknown(currency: CurrencyCode, areas: &BTreeSet<String>
         ),
     )
     .at_column(Column::OwnCurrency.name())
-    .found(format!("{} areas", areas.len()))
+    .found(counted(areas.len(), "area"))
     .remedy(format!(
         "where {currency} is an area's own money, send its rows with own_currency={currency}"
     ))
@@ -232,12 +232,20 @@ fn index(
     currency: Option<CurrencyCode>,
     own: Option<CurrencyCode>,
 ) -> Result<Quantity, Box<Finding>> {
+    let prices = implied != IndexKind::Volume;
     let kind = match texts.get(Column::IndexKind) {
-        "price" => IndexKind::Price,
-        "unit_value" => IndexKind::UnitValue,
-        "volume" => IndexKind::Volume,
-        "value" => IndexKind::Value,
-        _ => implied,
+        "" => implied,
+        "price" if prices => IndexKind::Price,
+        "unit_value" if prices => IndexKind::UnitValue,
+        "volume" if !prices => IndexKind::Volume,
+        _ => {
+            let why = if prices {
+                "the measure is one of prices: price or unit_value"
+            } else {
+                "the measure is one of volumes: volume"
+            };
+            return Err(not_applicable(Column::IndexKind, why));
+        }
     };
     let currency = match (kind, currency) {
         (IndexKind::Volume, Some(_)) => {

@@ -17,12 +17,6 @@ pub fn column(matrix: &Matrix, j: usize) -> Vec<f64> {
     matrix.0.column(j).iter().copied().collect()
 }
 
-/// The transpose.
-#[must_use]
-pub fn transpose(matrix: &Matrix) -> Matrix {
-    Matrix(matrix.0.transpose())
-}
-
 /// `X'X` of a matrix, or `X'Y`.
 #[must_use]
 pub fn cross(x: &Matrix, y: &Matrix) -> Matrix {
@@ -101,12 +95,6 @@ pub fn singular(matrix: &Matrix) -> Option<Singular> {
     })
 }
 
-/// The lower triangular L with `L L' = matrix` of a symmetric positive definite matrix.
-#[must_use]
-pub fn cholesky(matrix: &Matrix) -> Option<Matrix> {
-    matrix.0.clone().cholesky().map(|c| Matrix(c.l()))
-}
-
 /// The determinant of a square matrix.
 #[must_use]
 pub fn determinant(matrix: &Matrix) -> f64 {
@@ -140,12 +128,6 @@ mod tests {
         let gram = cross(&a, &a);
         let identity = gram.times(&inverse(&gram).unwrap());
         assert_relative_eq!(identity.at(1, 1), 1.0, max_relative = 1e-10);
-        let l = cholesky(&gram).unwrap();
-        assert_relative_eq!(
-            l.times(&transpose(&l)).at(2, 1),
-            gram.at(2, 1),
-            max_relative = 1e-12
-        );
         let product: f64 = svd.values.iter().map(|v| v * v).product();
         assert_relative_eq!(determinant(&gram), product, max_relative = 1e-10);
     }

@@ -6,26 +6,48 @@ use super::step::InputRef;
 use crate::finding::Finding;
 use crate::series::{CurrencyCode, Quantity, Series, SeriesKey, Unit};
 
-/// Own money of each area, as its series without a currency in their key say.
-pub(super) fn own_money(
-    inputs: &BTreeMap<InputRef, Series>,
-) -> BTreeMap<&str, BTreeSet<CurrencyCode>> {
-    let mut money: BTreeMap<&str, BTreeSet<CurrencyCode>> = BTreeMap::new();
+/// The money of an area, as the series of it that are inputs say.
+#[derive(Debug, Default)]
+pub(super) struct Moneys {
+    /// Its own: in series without a currency in their key, and against the one in the key of a rate.
+    own: BTreeSet<CurrencyCode>,
+    /// Currencies that stand in keys, as no own money does that is known.
+    named: BTreeSet<CurrencyCode>,
+}
+
+/// The money of each area.
+pub(super) fn moneys(inputs: &BTreeMap<InputRef, Series>) -> BTreeMap<&str, Moneys> {
+    let mut moneys: BTreeMap<&str, Moneys> = BTreeMap::new();
     for (input, series) in inputs {
-        if let Quantity::Money { currency } = series.unit.quantity
-            && input.key.currency().is_empty()
+        let money = moneys.entry(input.key.area()).or_default();
+        let named = CurrencyCode::parse(input.key.currency()).ok();
+        money.named.extend(named);
+        if let Quantity::Rate {
+            numerator,
+            denominator,
+            ..
+        } = series.unit.quantity
         {
-            money.entry(input.key.area()).or_default().insert(currency);
+            let own = match named {
+                Some(named) if named == denominator => Some(numerator),
+                Some(named) if named == numerator => Some(denominator),
+                _ => None,
+            };
+            money.own.extend(own);
+        } else if let Quantity::Money { currency } = series.unit.quantity
+            && named.is_none()
+        {
+            money.own.insert(currency);
         }
     }
-    money
+    moneys
 }
 
 /// Where a result contradicts the key that it is to have.
 pub(super) fn disagreement(
     key: &SeriesKey,
     series: &Series,
-    own_money: &BTreeMap<&str, BTreeSet<CurrencyCode>>,
+    moneys: &BTreeMap<&str, Moneys>,
 ) -> Option<Finding> {
     if series.frequency() != key.frequency() {
         return Some(
@@ -43,16 +65,26 @@ pub(super) fn disagreement(
         );
     }
     let held = currencies(&series.unit);
-    let own = own_money.get(key.area());
     let (fits, expected) = if key.currency().is_empty() {
-        let money = matches!(series.unit.quantity, Quantity::Money { .. });
-        let own = own.filter(|_| money);
+        // Rates name two currencies, one of them foreign.
+        let rate = matches!(series.unit.quantity, Quantity::Rate { .. });
+        let fits = |money: &Moneys, c: &CurrencyCode| {
+            money.own.contains(c) || money.own.is_empty() && !money.named.contains(c)
+        };
+        let money = moneys.get(key.area());
+        let own: Vec<&str> = money
+            .iter()
+            .flat_map(|m| &m.own)
+            .map(CurrencyCode::as_str)
+            .collect();
+        let of_area = format!("the money of {}", key.area());
         (
-            own.is_none_or(|own| held.iter().any(|c| own.contains(c))),
-            own.map_or_else(String::new, |own| {
-                let codes: Vec<&str> = own.iter().map(CurrencyCode::as_str).collect();
-                format!("{}, the money of {}", codes.join(" or "), key.area())
-            }),
+            rate || money.is_none_or(|money| held.iter().all(|c| fits(money, c))),
+            if own.is_empty() {
+                of_area
+            } else {
+                format!("{}, {of_area}", own.join(" or "))
+            },
         )
     } else {
         (

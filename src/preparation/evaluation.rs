@@ -2,7 +2,7 @@
 
 use std::collections::{BTreeMap, BTreeSet};
 
-use super::agreement::{disagreement, own_money};
+use super::agreement::{disagreement, moneys};
 use super::document::Document;
 use super::step::{IncomePartner, InputRef, PricePartner, Step};
 use super::{fault, notes};
@@ -50,7 +50,7 @@ pub(super) fn run(
     settle: impl Fn(Series) -> Series,
 ) -> Result<Vec<Evaluated>, Vec<Finding>> {
     let mut faults = unknown_inputs(document, inputs);
-    let own_money = own_money(inputs);
+    let moneys = moneys(inputs);
     let mut made: BTreeMap<SeriesKey, Series> = BTreeMap::new();
     let mut outputs = Vec::new();
     for (key, steps) in document.outputs() {
@@ -91,7 +91,7 @@ pub(super) fn run(
         let Some(last) = done.last().filter(|_| !halted) else {
             continue;
         };
-        if let Some(finding) = disagreement(key, &last.series, &own_money) {
+        if let Some(finding) = disagreement(key, &last.series, &moneys) {
             faults.push(finding.at_pointer(pointer).at_series(key));
             continue;
         }

@@ -20,15 +20,15 @@
 //! | `add`, `subtract` | anywhere | list of series | same currency, price basis and timing; chained volumes, indices and rates are refused |
 //! | `multiply` | anywhere | list of series | amount × ratio; real amount × its price index = current prices; price × volume index = value index; cross rates |
 //! | `divide` | anywhere | list of series | money ÷ money = ratio; current ÷ real = implicit price index (100 in its reference); index ÷ index of one reference = ratio; value ÷ price index = volume index; amount ÷ ratio; cross rates |
-//! | `geometric_mean` | first | `of`, `weights` (fixed; default equal) | indices, rates or ratios of one unit; reference unknown until rebased |
+//! | `geometric_mean` | first | `of`, `weights` (fixed; default equal) | indices, rates or ratios of one unit; indices keep their reference where it is held |
 //! | `link` | first | `target`, `with`, `over` (default: all common periods) | `target` where it reaches, else `with` × mean(target)/mean(with); growth inside each kept |
-//! | `foreign_income` | first | `partners` [{`income`, `weights`}], `reference`, `reference_value` (100), `weight_years` (1 or 3) | volume index: Δln = Σ w Δln Y, annual weights of the year before, over partners present in both periods |
+//! | `foreign_income` | first | `partners` [{`income`, `weights`}], `reference`, `reference_value` (100), `weight_years` (3, or 1) | volume index: Δln = Σ w Δln Y, annual weights of the three years before or of the one, over partners present in both periods |
 //! | `real_exchange_rate` | first | `home_price`, `foreign_price`, `rate`, `reference`, `reference_value` | P home / (E · P foreign), E home per foreign: up is a real appreciation |
-//! | `real_effective_exchange_rate` | first | `home_price`, `partners` [{`price`, `rate`, `weights`}], `reference`, `reference_value`, `weight_years` | the same against weighted partners: up is a real appreciation |
+//! | `real_effective_exchange_rate` | first | `home_price`, `partners` [{`price`, `rate`, `weights`}], `reference`, `reference_value`, `weight_years` (1, or 3) | the same against weighted partners: up is a real appreciation |
 //! | `rebase` | later | `reference`, `reference_value` (100) | index ÷ its mean in the reference |
 //! | `deflate` | later | `by`, `reference` | current-price money ÷ price index of the same currency, prices of the reference |
 //! | `convert` | later | `to`, `rates`, `at` | money or price index in another currency, rate of the same period; real money by the mean rate over `at`, the period of its prices |
-//! | `aggregate` | later | `to`, `by` (`sum`, `mean`, `first`, `last`; default by timing), `min_coverage` (means), `ends` (`drop`, `missing`) | lower frequency; sums and means need every sub-period |
+//! | `aggregate` | later | `to`, `by` (`sum`, `mean`, `first`, `last`; default by timing), `min_coverage` (means), `ends` (`drop`, `missing`) | lower frequency; sums and means need every sub-period; growth is taken of the aggregate |
 //! | `growth` | later | `kind` (`log`, `ratio`), `over` (`period`, `year`), `annualised` | growth as a fraction |
 //! | `negate` | later | `{}` | the other sign |
 
@@ -53,7 +53,7 @@ use crate::finding::Finding;
 use crate::series::{Series, SeriesKey};
 
 /// Version of the methods behind the steps; a change of any result changes it.
-pub const METHOD_VERSION: &str = "1";
+pub const METHOD_VERSION: &str = "2";
 
 /// An evaluated output.
 #[derive(Clone, Debug, PartialEq)]

@@ -1,9 +1,10 @@
 //! What an evaluation is worth telling: coverage, link factors, periods left off. Thresholds are
 //! those of METHODS section 6 (common practice).
 
-use crate::finding::Finding;
+use crate::finding::{Finding, counted};
 use crate::series::algebra::{Aggregated, Effective, Incomplete, Linked};
 use crate::series::{IndexKind, Quantity, RateTiming, Series, Timing};
+use crate::time::Frequency;
 
 /// Factor and spread of a link; a spread above 1 % is told, above 5 % an error.
 pub(super) fn of_link(linked: &Linked) -> Vec<Finding> {
@@ -13,8 +14,9 @@ pub(super) fn of_link(linked: &Linked) -> Vec<Finding> {
         Finding::notice(
             "link_factor",
             format!(
-                "linked on {} periods, {first} to {last}: factor {}, spread over the overlap {spread}",
-                linked.periods, linked.factor
+                "linked on {}, {first} to {last}: factor {}, spread over the overlap {spread}",
+                counted(linked.periods, "period"),
+                linked.factor
             ),
         )
         .found(linked.factor.to_string()),
@@ -36,7 +38,7 @@ pub(super) fn of_link(linked: &Linked) -> Vec<Finding> {
     notes
 }
 
-/// Amounts without a price, and unit values as deflators.
+/// Amounts without a price, unit values as deflators, and one side alone adjusted for season.
 pub(super) fn of_deflating(nominal: &Series, index: &Series, result: &Series) -> Vec<Finding> {
     let mut notes = unmatched("no_matching_price", "price", nominal, result);
     if let Quantity::Index {
@@ -48,6 +50,18 @@ pub(super) fn of_deflating(nominal: &Series, index: &Series, result: &Series) ->
             "unit_value_deflator",
             "deflated by unit values, which move with the mix of goods as well as with prices",
         ));
+    }
+    if nominal.frequency() != Frequency::Annual
+        && nominal.unit.adjustment.is_raw() != index.unit.adjustment.is_raw()
+    {
+        notes.push(
+            Finding::notice(
+                "adjustment_differs",
+                "of amount and prices one is adjusted for season, the other is not",
+            )
+            .found(format!("{}; {}", nominal.unit, index.unit))
+            .remedy("Deflate unadjusted by unadjusted, then adjust, where both are held."),
+        );
     }
     notes
 }
@@ -86,7 +100,10 @@ fn unmatched(code: &str, what: &str, amount: &Series, result: &Series) -> Vec<Fi
         .map(|period| {
             Finding::notice(
                 code,
-                format!("{lost} amounts have no {what} in their period and are missing"),
+                format!(
+                    "missing for want of the {what} of the period: {}",
+                    counted(lost, "amount")
+                ),
             )
             .at_period(period)
             .found(lost.to_string())
@@ -106,7 +123,7 @@ pub(super) fn of_aggregating(aggregated: &Aggregated) -> Vec<Finding> {
         ("incomplete_periods_missing", "missing", &aggregated.missing),
         (
             "partial_periods",
-            "rest on part of their sub-periods",
+            "resting on part of the sub-periods",
             &aggregated.partial,
         ),
     ]
@@ -117,8 +134,8 @@ pub(super) fn of_aggregating(aggregated: &Aggregated) -> Vec<Finding> {
             Finding::notice(
                 code,
                 format!(
-                    "{} incomplete periods {what}: {}",
-                    periods.len(),
+                    "{} {what}: {}",
+                    counted(periods.len(), "incomplete period"),
                     shown(periods)
                 ),
             )
@@ -141,7 +158,8 @@ fn shown(periods: &[Incomplete]) -> String {
     text
 }
 
-/// Lowest coverage of the weights; below 80 % is told as such, below 60 % an error.
+/// Lowest coverage of the weights (below 80 % is told as such, below 60 % an error), partners without
+/// a weight (most of them: an error), and periods beyond a break.
 pub(super) fn of_weights(effective: &Effective, partners: usize) -> Vec<Finding> {
     let coverage = &effective.coverage;
     let Some(lowest) = coverage.iter().min_by(|a, b| a.share.total_cmp(&b.share)) else {
@@ -150,10 +168,11 @@ pub(super) fn of_weights(effective: &Effective, partners: usize) -> Vec<Finding>
     let mean = coverage.iter().map(|c| c.share).sum::<f64>() / coverage.len() as f64;
     let share = format!("{:.1} %", 100.0 * lowest.share);
     let message = format!(
-        "weights of {partners} partners: on average {:.1} % covered, least in {} with {share} ({} partners)",
+        "weights of {}: on average {:.1} % covered, least in {} with {share} ({})",
+        counted(partners, "partner"),
         100.0 * mean,
         lowest.period,
-        lowest.partners
+        counted(lowest.partners, "partner")
     );
     let finding = if lowest.share < 0.6 {
         Finding::error("weight_coverage", message)
@@ -161,11 +180,47 @@ pub(super) fn of_weights(effective: &Effective, partners: usize) -> Vec<Finding>
         Finding::notice("weight_coverage", message)
     };
     let finding = finding.at_period(lowest.period).found(share);
-    vec![if lowest.share < 0.8 {
+    let mut notes = vec![if lowest.share < 0.8 {
         finding
             .expected("at least 80 %")
             .remedy("Send the missing incomes, prices or weights, or name other partners.")
     } else {
         finding
-    }]
+    }];
+    // The first of the periods that lack most.
+    let fewest = coverage.iter().rev().max_by_key(|c| c.unweighted);
+    if let Some(fewest) = fewest.filter(|c| c.unweighted > 0) {
+        let message = format!(
+            "without a weight, which coverage does not show: in {} {} of {}",
+            fewest.period,
+            fewest.unweighted,
+            counted(partners, "partner")
+        );
+        let finding = if 2 * fewest.unweighted > partners {
+            Finding::error("weights_missing", message)
+        } else {
+            Finding::notice("weights_missing", message)
+        };
+        notes.push(
+            finding
+                .at_period(fewest.period)
+                .found(fewest.unweighted.to_string())
+                .remedy("Send the missing weights, zero for partners without trade."),
+        );
+    }
+    if let [first, rest @ ..] = &effective.left_off[..] {
+        let last = rest.last().unwrap_or(first);
+        notes.push(
+            Finding::notice(
+                "periods_left_off",
+                format!(
+                    "left off for want of weights or of values in between: {}, {first} to {last}",
+                    counted(effective.left_off.len(), "period")
+                ),
+            )
+            .at_period(first)
+            .found(effective.left_off.len().to_string()),
+        );
+    }
+    notes
 }

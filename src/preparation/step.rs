@@ -7,6 +7,7 @@ use serde::de::{MapAccess, Visitor};
 use serde::{Deserialize, Deserializer, Serialize};
 use utoipa::ToSchema;
 
+use crate::finding::counted;
 use crate::series::algebra::{Ends, Method, Over, Span, WeightYears};
 use crate::series::{CurrencyCode, GrowthKind, SeriesKey};
 use crate::time::Frequency;
@@ -96,7 +97,7 @@ pub enum Step {
         reference: Span,
         #[serde(default = "hundred")]
         reference_value: f64,
-        #[serde(default)]
+        #[serde(default = "three")]
         weight_years: WeightYears,
     },
     /// Home prices over foreign prices in home money; up is a real appreciation.
@@ -181,6 +182,10 @@ pub struct PricePartner {
 
 fn hundred() -> f64 {
     100.0
+}
+
+fn three() -> WeightYears {
+    WeightYears::Three
 }
 
 impl Step {
@@ -294,8 +299,8 @@ impl Step {
                 reference_value,
                 weight_years,
             } => format!(
-                "foreign income of {} partners ({}), {}, {reference} = {reference_value}",
-                partners.len(),
+                "foreign income of {} ({}), {}, {reference} = {reference_value}",
+                counted(partners.len(), "partner"),
                 partners
                     .iter()
                     .map(|p| p.income.to_string())
@@ -320,8 +325,8 @@ impl Step {
                 reference_value,
                 weight_years,
             } => format!(
-                "real effective exchange rate (up: real appreciation): {home_price} over the prices of {} partners ({}), {}, {reference} = {reference_value}",
-                partners.len(),
+                "real effective exchange rate (up: real appreciation): {home_price} over the prices of {} ({}), {}, {reference} = {reference_value}",
+                counted(partners.len(), "partner"),
                 partners
                     .iter()
                     .map(|p| p.price.to_string())

@@ -6,8 +6,9 @@ use proptest::prelude::*;
 use serde_json::{Value, json};
 
 use super::*;
+use crate::finding::Severity;
 use crate::series::algebra::samples::{money, price_index, rate, real_money, series};
-use crate::series::{Unit, same};
+use crate::series::{Adjustment, Unit, same};
 
 /// The document of the module's documentation, with monthly rates beside quarterly trade.
 const REAL_EXPORTS: &str = r#"{ "title": "Real exports", "outputs": {
@@ -185,6 +186,60 @@ fn aggregates_of_partners_carry_their_coverage() {
     for (a, b) in rer.values.iter().zip(&reer.values) {
         assert!((a / b - 1.0).abs() < 1e-13);
     }
+}
+
+#[test]
+fn foreign_income_takes_mean_weights_of_three_years_unless_asked() {
+    let income = json!({ "partners": [{ "income": "A.XKB.gdp_real", "weights": "A.XKA.exports.XKB" }],
+                         "reference": "2015" });
+    let outputs = evaluated(&json!({ "A.XKA.foreign_income": [{ "foreign_income": income }] }));
+    assert!(
+        outputs[0].steps[0].contains("mean weights of the three years before"),
+        "{:?}",
+        outputs[0].steps
+    );
+    // Weights of 2012 on serve 2015 at the earliest.
+    assert_eq!(outputs[0].series.start.to_string(), "2014");
+    assert_eq!(outputs[0].series.len(), 3);
+}
+
+/// No currency in a key means the area's own money, which rates tell as well as amounts.
+#[test]
+fn what_is_in_other_money_needs_its_currency_in_the_key() {
+    let refused = |inputs: &[(&str, Unit)], outputs: Value, expected: &str| {
+        let inputs = inputs
+            .iter()
+            .map(|(name, unit)| (key(name), series(unit.clone(), "2014", &[1.0, 2.0])))
+            .collect();
+        let faults = evaluate(&document(&outputs).unwrap(), &inputs).expect_err("a mismatch");
+        assert_eq!(faults[0].code, "currency_mismatch");
+        assert_eq!(faults[0].expected.as_deref(), Some(expected));
+    };
+    let (price, dollars) = (
+        ("A.XKC.export_price...USD", price_index("USD")),
+        ("A.XKC.exports...USD", money("USD")),
+    );
+    refused(
+        &[price.clone(), ("A.XKC.exports", money("XCD"))],
+        json!({ "A.XKC.price": [{ "take": "A.XKC.export_price...USD" }] }),
+        "XCD, the money of XKC",
+    );
+    refused(
+        &[price, ("A.XKC.exchange_rate...USD", rate("XCD", "USD"))],
+        json!({ "A.XKC.price": [{ "take": "A.XKC.export_price...USD" }] }),
+        "XCD, the money of XKC",
+    );
+    refused(
+        &[dollars, ("A.XKC.exchange_rate...USD", rate("USD", "XCD"))],
+        json!({ "A.XKC.sales": [{ "take": "A.XKC.exports...USD" }] }),
+        "XCD, the money of XKC",
+    );
+    // Own money unknown: what stands in the keys of the area's series is not it.
+    refused(
+        &[("A.XKC.exports...USD", money("USD"))],
+        json!({ "A.XKC.sales": [{ "take": "A.XKC.exports...USD" }] }),
+        "the money of XKC",
+    );
 }
 
 #[test]
@@ -392,10 +447,81 @@ fn notes_tell_what_did_not_match() {
         Some("/outputs/Q.XKA.a/1")
     );
     assert_eq!(notes[2], ("link_spread", Some("10.00 %")));
-    assert_eq!(
-        outputs[1].notes[1].severity,
-        crate::finding::Severity::Error
+    assert_eq!(outputs[1].notes[1].severity, Severity::Error);
+}
+
+/// Two of three partners have no weight from 2013 on, and none has one for 2016.
+#[test]
+fn notes_tell_of_missing_weights_and_of_adjustment_on_one_side() {
+    let mut inputs = store();
+    let mut put = |name: &str, unit: Unit, start: &str, values: &[f64]| {
+        inputs.insert(key(name), series(unit, start, values));
+    };
+    for partner in ["XKC", "XKD"] {
+        let income = format!("A.{partner}.gdp_real");
+        put(&income, real_money("XBD", "2015"), "2014", &[1.0, 2.0, 3.0]);
+        let weights = format!("A.XKA.exports.{partner}");
+        put(&weights, money("XAD"), "2012", &[1.0]);
+    }
+    put("A.XKA.exports.XKB", money("XAD"), "2014", &[3.0]);
+    let adjusted = Unit {
+        adjustment: Adjustment::SeasonallyAdjusted("source".to_owned()),
+        ..money("XAD")
+    };
+    put(
+        "Q.XKA.imports.....S",
+        adjusted.clone(),
+        "2014-Q1",
+        &[1.0; 12],
     );
+    put("A.XKA.imports.....S", adjusted, "2014", &[1.0; 3]);
+    put("A.XKA.import_price", price_index("XAD"), "2014", &[1.0; 3]);
+    let partners = ["XKB", "XKC", "XKD"].map(|area| {
+        json!({ "income": format!("A.{area}.gdp_real"), "weights": format!("A.XKA.exports.{area}") })
+    });
+    let deflate = |price: &str| json!({ "deflate": { "by": price, "reference": "2015" } });
+    let document = document(&json!({
+        "A.XKA.foreign_income": [{ "foreign_income": {
+            "partners": partners, "reference": "2015", "weight_years": 1 } }],
+        "A.XKA.imports_real.....S": [{ "take": "A.XKA.imports.....S" }, deflate("A.XKA.import_price")],
+        "Q.XKA.imports_real.....S": [{ "take": "Q.XKA.imports.....S" }, deflate("Q.XKA.export_price")],
+    }))
+    .unwrap();
+    let outputs = evaluate(&document, &inputs).unwrap();
+    let told = |i: usize| -> Vec<(&str, Severity, Option<&str>, Option<&str>)> {
+        let notes = outputs[i].notes.iter();
+        notes
+            .map(|n| {
+                (
+                    n.code.as_str(),
+                    n.severity,
+                    n.place.period.as_deref(),
+                    n.found.as_deref(),
+                )
+            })
+            .collect()
+    };
+    assert_eq!(
+        told(0),
+        [
+            (
+                "weight_coverage",
+                Severity::Notice,
+                Some("2015"),
+                Some("100.0 %")
+            ),
+            ("weights_missing", Severity::Error, Some("2015"), Some("2")),
+            (
+                "periods_left_off",
+                Severity::Notice,
+                Some("2016"),
+                Some("1")
+            ),
+        ]
+    );
+    assert_eq!(told(1), []);
+    let codes: Vec<&str> = told(2).iter().map(|n| n.0).collect();
+    assert_eq!(codes, ["adjustment_differs"]);
 }
 
 proptest! {

@@ -1,8 +1,9 @@
 //! Currency codes.
 
 use std::fmt;
+use std::str::FromStr;
 
-use serde::{Deserialize, Deserializer, Serialize};
+use crate::time::serde_as_text;
 
 /// A currency code: three capital letters, as ISO 4217 has them or as a user declares them.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
@@ -44,18 +45,15 @@ impl fmt::Display for CurrencyCode {
     }
 }
 
-impl Serialize for CurrencyCode {
-    fn serialize<S: serde::Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
-        serializer.serialize_str(self.as_str())
+impl FromStr for CurrencyCode {
+    type Err = CurrencyError;
+
+    fn from_str(text: &str) -> Result<Self, Self::Err> {
+        Self::parse(text)
     }
 }
 
-impl<'de> Deserialize<'de> for CurrencyCode {
-    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        let text = String::deserialize(deserializer)?;
-        Self::parse(&text).map_err(serde::de::Error::custom)
-    }
-}
+serde_as_text!(CurrencyCode);
 
 /// Whether ISO 4217 lists the code, now or among withdrawn currencies.
 #[must_use]

@@ -3,9 +3,7 @@
 use std::fmt;
 use std::str::FromStr;
 
-use serde::{Deserialize, Deserializer, Serialize, Serializer};
-
-use crate::time::Frequency;
+use crate::time::{Frequency, serde_as_text};
 
 /// Which series: `FREQ.AREA.MEASURE.PARTNER.PRODUCT.CURRENCY.SOURCE.ADJUSTMENT`.
 ///
@@ -187,18 +185,7 @@ impl FromStr for SeriesKey {
     }
 }
 
-impl Serialize for SeriesKey {
-    fn serialize<S: Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
-        serializer.collect_str(self)
-    }
-}
-
-impl<'de> Deserialize<'de> for SeriesKey {
-    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        let text = String::deserialize(deserializer)?;
-        text.parse().map_err(serde::de::Error::custom)
-    }
-}
+serde_as_text!(SeriesKey);
 
 #[cfg(test)]
 mod tests {

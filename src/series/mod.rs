@@ -44,26 +44,8 @@ impl Series {
     /// A series of normal observations; NaN becomes [`Status::Missing`], −0 becomes 0.
     #[must_use]
     pub fn new(unit: Unit, start: Period, values: Vec<f64>) -> Self {
-        let status = values
-            .iter()
-            .map(|v| {
-                if v.is_finite() {
-                    Status::Normal
-                } else {
-                    Status::Missing
-                }
-            })
-            .collect();
-        let values = values
-            .into_iter()
-            .map(|v| if v.is_finite() { v + 0.0 } else { f64::NAN })
-            .collect();
-        Self {
-            unit,
-            start,
-            values,
-            status,
-        }
+        let status = vec![Status::Normal; values.len()];
+        Self::with_status(unit, start, values, status)
     }
 
     /// A series with given statuses. A value of missing status becomes NaN, a value that is not

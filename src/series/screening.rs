@@ -1,7 +1,7 @@
 //! Screening of what an upload says against what is stored.
 
 use super::vintage::{State, Statement};
-use crate::finding::Finding;
+use crate::finding::{Finding, counted};
 use crate::time::Period;
 
 /// Powers of ten that a wrong unit multiplier leaves behind (common practice, no source).
@@ -69,7 +69,7 @@ pub fn level_ratio(base: &State, statement: &Statement) -> Option<Finding> {
     }
     let (period, value, stored, ratio) = suspicious?;
     let times = if count > 1 {
-        format!(" and in {} more places", count - 1)
+        format!(" and in {}", counted(count - 1, "more place"))
     } else {
         String::new()
     };

@@ -6,6 +6,7 @@ use serde::{Deserialize, Serialize};
 use utoipa::ToSchema;
 
 use super::CurrencyCode;
+use super::algebra::Over;
 
 /// What the numbers of a series are. Two vintages with different units never merge: the second
 /// opens a segment.
@@ -70,6 +71,12 @@ pub enum Quantity {
     Growth {
         /// `log` for differences of logarithms, `ratio` for relative changes.
         growth: GrowthKind,
+        /// Distance over which it is measured: `period` unless stated.
+        #[serde(default, skip_serializing_if = "Over::is_period")]
+        over: Over,
+        /// Whether growth over one period is stated at annual rate.
+        #[serde(default, skip_serializing_if = "std::ops::Not::not")]
+        annualised: bool,
     },
     /// A physical quantity.
     Physical {
@@ -265,11 +272,21 @@ impl fmt::Display for Unit {
             } => write!(f, "{numerator} per {denominator}")?,
             Quantity::Ratio => write!(f, "ratio")?,
             Quantity::Growth {
-                growth: GrowthKind::Log,
-            } => write!(f, "log growth")?,
-            Quantity::Growth {
-                growth: GrowthKind::Ratio,
-            } => write!(f, "growth rate")?,
+                growth,
+                over,
+                annualised,
+            } => {
+                match growth {
+                    GrowthKind::Log => write!(f, "log growth")?,
+                    GrowthKind::Ratio => write!(f, "growth rate")?,
+                }
+                if *over == Over::Year {
+                    write!(f, " over the year")?;
+                }
+                if *annualised {
+                    write!(f, " at annual rate")?;
+                }
+            }
             Quantity::Physical { physical_unit } => write!(f, "{physical_unit}")?,
             Quantity::Count => write!(f, "count")?,
         }
@@ -305,5 +322,23 @@ impl fmt::Display for Unit {
             Adjustment::Raw => Ok(()),
             Adjustment::SeasonallyAdjusted(by) => write!(f, ", seasonally adjusted by {by}"),
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// Units stored before growth told its distance are read as growth over one period.
+    #[test]
+    fn growth_tells_its_distance_and_may_leave_it_out() {
+        let plain = r#"{"quantity":"growth","growth":"log","timing":"average"}"#;
+        let unit: Unit = serde_json::from_str(plain).unwrap();
+        assert_eq!(unit.to_string(), "log growth");
+        assert_eq!(serde_json::to_string(&unit).unwrap(), plain);
+        let yearly = plain.replace("\"log\"", "\"ratio\",\"over\":\"year\"");
+        let unit: Unit = serde_json::from_str(&yearly).unwrap();
+        assert_eq!(unit.to_string(), "growth rate over the year");
+        assert_eq!(serde_json::to_string(&unit).unwrap(), yearly);
     }
 }

@@ -68,6 +68,26 @@ impl Changes {
     pub fn any(self) -> bool {
         self.new + self.revised + self.emptied > 0
     }
+
+    /// Counts what became of one observation; whether it changed. What is absent before and after does
+    /// not count.
+    fn count(&mut self, before: (f64, Status), after: (f64, Status)) -> bool {
+        let unchanged = same(before.0, after.0) && before.1 == after.1;
+        let counter = if before.1 == Status::Absent {
+            if after.1 == Status::Absent {
+                return false;
+            }
+            &mut self.new
+        } else if unchanged {
+            &mut self.unchanged
+        } else if after.0.is_nan() && !before.0.is_nan() {
+            &mut self.emptied
+        } else {
+            &mut self.revised
+        };
+        *counter += 1;
+        !unchanged
+    }
 }
 
 /// Merges a statement into a state. A named period takes the new value and status, a missing mark
@@ -109,8 +129,10 @@ pub fn merge(base: Option<&State>, statement: &Statement) -> (State, Changes) {
         });
         let Some(j) = named else {
             if statement.scope == Scope::Replace && state.status[i] != Status::Absent {
-                changes.emptied += u32::from(!state.values[i].is_nan());
-                changes.revised += u32::from(state.values[i].is_nan());
+                changes.count(
+                    (state.values[i], state.status[i]),
+                    (f64::NAN, Status::Absent),
+                );
                 state.values[i] = f64::NAN;
                 state.status[i] = Status::Absent;
                 state.origins[i] = Origin::Absent;
@@ -118,15 +140,8 @@ pub fn merge(base: Option<&State>, statement: &Statement) -> (State, Changes) {
             continue;
         };
         let (value, status) = (statement.values[j], statement.status[j]);
-        if state.status[i] == Status::Absent {
-            changes.new += 1;
-        } else if same(state.values[i], value) && state.status[i] == status {
-            changes.unchanged += 1;
+        if !changes.count((state.values[i], state.status[i]), (value, status)) {
             continue;
-        } else if value.is_nan() && !state.values[i].is_nan() {
-            changes.emptied += 1;
-        } else {
-            changes.revised += 1;
         }
         state.values[i] = value;
         state.status[i] = status;
@@ -153,18 +168,7 @@ pub fn difference(old: &State, new: &State) -> Changes {
     let high = end(old).max(end(new));
     let mut changes = Changes::default();
     for ordinal in low..high {
-        let ((before, old_status), (after, new_status)) = (at(old, ordinal), at(new, ordinal));
-        if old_status == Status::Absent && new_status == Status::Absent {
-            continue;
-        } else if old_status == Status::Absent {
-            changes.new += 1;
-        } else if same(before, after) && old_status == new_status {
-            changes.unchanged += 1;
-        } else if after.is_nan() && !before.is_nan() {
-            changes.emptied += 1;
-        } else {
-            changes.revised += 1;
-        }
+        changes.count(at(old, ordinal), at(new, ordinal));
     }
     changes
 }

@@ -4,7 +4,7 @@ use std::collections::{BTreeMap, HashMap};
 use std::ops::Range;
 
 use super::Fault;
-use crate::finding::Finding;
+use crate::finding::{Finding, counted};
 use crate::series::{Piece, SeriesKey, Unit};
 use crate::store::{self, Connection};
 use crate::time::Period;
@@ -145,8 +145,8 @@ impl Source {
             )
             .at_series(&g.key)
             .found(format!(
-                "{} rows from {} to {}",
-                g.rows,
+                "{} from {} to {}",
+                counted(g.rows, "row"),
                 shown(g.first),
                 shown(g.last)
             ))

@@ -14,7 +14,7 @@ use super::uploads::{self, ReportParts};
 use super::views::UploadView;
 use super::{Fault, blocking, body, currencies, landing, preview};
 use crate::clock;
-use crate::finding::Finding;
+use crate::finding::{Finding, counted};
 use crate::intake::{self, Reader};
 use crate::series::provenance::Origin;
 use crate::series::vintage::{Scope, Statement};
@@ -241,9 +241,9 @@ pub async fn receive<E: std::fmt::Display>(
     if state == "refused" {
         let errors: Vec<Finding> = report.rejects.iter().map(|r| r.finding.clone()).collect();
         let detail = format!(
-            "{} rows were rejected, so nothing of the file counts; mend them, or send it with \
+            "{} rejected, so nothing of the file counts; mend what is wrong, or send it with \
              on_reject=skip",
-            report.understood.rows_rejected
+            counted(report.understood.rows_rejected, "row")
         );
         return Err(Fault::Refused {
             detail,

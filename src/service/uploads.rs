@@ -97,7 +97,7 @@ impl ReportParts {
         if landing.more_findings > 0 {
             self.landing_findings.push(Finding::error(
                 "more_findings",
-                format!("{} more series have such findings", landing.more_findings),
+                format!("such findings in {} more series", landing.more_findings),
             ));
         }
         self.opened = opened;

@@ -4,7 +4,8 @@ use std::fmt;
 use std::str::FromStr;
 
 use chrono::{Datelike, NaiveDate};
-use serde::{Deserialize, Deserializer, Serialize, Serializer};
+
+use super::serde_as_text;
 
 /// A calendar date of the proleptic Gregorian calendar, printed as ISO 8601 `YYYY-MM-DD`.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
@@ -105,18 +106,7 @@ impl FromStr for Date {
     }
 }
 
-impl Serialize for Date {
-    fn serialize<S: Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
-        serializer.collect_str(self)
-    }
-}
-
-impl<'de> Deserialize<'de> for Date {
-    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        let text = String::deserialize(deserializer)?;
-        text.parse().map_err(serde::de::Error::custom)
-    }
-}
+serde_as_text!(Date);
 
 #[cfg(test)]
 mod tests {

@@ -4,8 +4,10 @@
 //! periods of one frequency compare as numbers. Notations in and out are ISO 8601 and the SDMX
 //! `TIME_PERIOD` forms. This room knows no clock: today is a [`Date`] that a caller passes in.
 
+mod as_text;
 mod date;
 mod period;
 
+pub(crate) use as_text::serde_as_text;
 pub use date::{Date, DateError};
 pub use period::{Frequency, Period, PeriodError};

@@ -5,7 +5,7 @@ use std::str::FromStr;
 
 use serde::{Deserialize, Deserializer, Serialize, Serializer};
 
-use super::Date;
+use super::{Date, serde_as_text};
 
 /// How often a series is observed; codes as in the SDMX code list `CL_FREQ`.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
@@ -371,18 +371,7 @@ fn day_of(year: i32, ordinal: i32) -> Option<Period> {
         .then(|| Period::containing(Frequency::Daily, date))
 }
 
-impl Serialize for Period {
-    fn serialize<S: Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
-        serializer.collect_str(self)
-    }
-}
-
-impl<'de> Deserialize<'de> for Period {
-    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        let text = String::deserialize(deserializer)?;
-        text.parse().map_err(serde::de::Error::custom)
-    }
-}
+serde_as_text!(Period);
 
 #[cfg(test)]
 mod tests {

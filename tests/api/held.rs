@@ -453,10 +453,7 @@ async fn a_report_shows_a_hundred_findings_and_counts_the_others() {
     let findings = held.at("/report/findings");
     let findings = findings.as_array().unwrap();
     assert_eq!(findings.len(), 101);
-    assert_eq!(
-        findings[100]["message"],
-        "30 more series have such findings"
-    );
+    assert_eq!(findings[100]["message"], "such findings in 30 more series");
     app.stop().await;
 }
 

@@ -59,13 +59,7 @@ impl Ardl {
                 .filter(|j| !dropped.contains(j))
                 .map(|j| self.ecm.regressors[j].clone())
                 .collect();
-            let y: Vec<f64> = self
-                .ecm
-                .fitted
-                .iter()
-                .zip(&self.ecm.residuals)
-                .map(|(f, e)| f + e)
-                .collect();
+            let y = self.ecm.dependent();
             let ssr = if left.is_empty() {
                 y.iter().map(|v| v * v).sum()
             } else {

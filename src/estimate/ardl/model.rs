@@ -167,7 +167,7 @@ impl Ardl {
 
 /// `G V G'`, made symmetric to the last digit.
 fn sandwich(g: &Matrix, v: &Matrix) -> Matrix {
-    let product = g.times(v).times(&crate::linalg::decompose::transpose(g));
+    let product = g.times(v).times(&g.transposed());
     Matrix::from_fn(g.rows(), g.rows(), |i, j| {
         f64::midpoint(product.at(i, j), product.at(j, i))
     })

@@ -195,8 +195,14 @@ impl Walk<'_> {
         projector.residuals(&mut y);
         let grid: usize = self.most.q.iter().map(|q| q + 1).product();
         for p in 1..=self.most.p {
+            let left = (self.most.p - p + 1) * grid;
+            // One level a regressor is still to come.
+            if projector.len() + 1 + reduced.x_lags.len() > self.largest {
+                self.selection.too_large += left;
+                break;
+            }
             if projector.push(&reduced.y_lags[p - 1]).is_none() {
-                self.selection.collinear += (self.most.p - p + 1) * grid;
+                self.selection.collinear += left;
                 break;
             }
             projector.remove_last(&mut y);

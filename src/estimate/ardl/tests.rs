@@ -218,6 +218,15 @@ fn equations_that_leave_too_few_degrees_of_freedom_are_no_candidates() {
     assert_eq!(found.compared + found.too_large, 500);
     let most = |c: &Candidate| c.orders.p + c.orders.q.iter().sum::<usize>();
     assert!(found.best.iter().all(|c| most(c) + 4 <= 10));
+
+    // n = 12 and no regressor: at most 2 coefficients, the constant and one lag.
+    let data = ArdlData {
+        y: &y,
+        x: &[],
+        fixed: &[],
+    };
+    let found = select_orders(&data, 12, &[], terms, InformationCriterion::Aic).unwrap();
+    assert_eq!((found.compared, found.too_large), (1, 11));
 }
 
 #[test]

@@ -260,14 +260,14 @@ fn restrictions_on_relations_and_loadings() {
 /// Log-likelihood at rank 1 with loadings free in some equations only: generalised least squares for α
 /// given β, then for β given α, until nothing changes. Slow and independent of the eigenvalue problem.
 fn switching(system: &Johansen, free: &[usize]) -> f64 {
-    use crate::linalg::decompose::{cross, determinant, inverse, transpose};
+    use crate::linalg::decompose::{cross, determinant, inverse};
     let (p, n) = (system.series, system.observations as f64);
     let mut beta = Matrix::from_fn(system.vectors.rows(), 1, |i, _| system.vectors.at(i, 0));
     let mut alpha = Matrix::from_fn(p, 1, |i, _| if free.contains(&i) { 0.1 } else { 0.0 });
     let mut likelihood = f64::NEG_INFINITY;
     for _ in 0..5000 {
         let z = system.r1.times(&beta);
-        let fitted = z.times(&transpose(&alpha));
+        let fitted = z.times(&alpha.transposed());
         let e = Matrix::from_fn(z.rows(), p, |t, i| system.r0.at(t, i) - fitted.at(t, i));
         let ee = cross(&e, &e);
         let omega = Matrix::from_fn(p, p, |i, j| ee.at(i, j) / n);
@@ -293,7 +293,7 @@ fn switching(system: &Johansen, free: &[usize]) -> f64 {
                 .map_or(0.0, |f| solved.at(f, 0))
         });
         // β: regression of R0 Ω⁻¹ α / (α'Ω⁻¹α) on R1.
-        let scale = transpose(&alpha).times(&weight).times(&alpha).at(0, 0);
+        let scale = alpha.transposed().times(&weight).times(&alpha).at(0, 0);
         let y = system.r0.times(&weight).times(&alpha);
         let gram = inverse(&cross(&system.r1, &system.r1)).unwrap();
         let b = gram.times(&cross(&system.r1, &y));

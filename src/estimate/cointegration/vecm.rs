@@ -5,7 +5,7 @@ use super::super::series_error::regress;
 use super::super::{Ols, Regressor, SeriesError};
 use super::Johansen;
 use crate::linalg::Matrix;
-use crate::linalg::decompose::{cross, inverse, transpose};
+use crate::linalg::decompose::{cross, inverse};
 
 /// A vector error-correction model by maximum likelihood at rank r.
 #[derive(Clone, Debug)]
@@ -100,7 +100,7 @@ impl Johansen {
             (omega.at(i, i) * equations[i].inverse_gram.at(j, j)).sqrt()
         });
         let weight = inverse(&omega)
-            .map(|o| transpose(&alpha).times(&o).times(&alpha))
+            .map(|o| alpha.transposed().times(&o).times(&alpha))
             .and_then(|w| inverse(&w))
             .ok_or_else(no_normalisation)?;
         let free = Matrix::from_fn(self.observations, rows - rank, |t, j| {

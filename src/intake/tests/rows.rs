@@ -191,6 +191,40 @@ fn of_indices_say_whose_prices() {
 }
 
 #[test]
+fn adjustments_are_codes_of_the_list() {
+    let row = |code: &str| trade_row(&format!("XAA,exports,XAD,,{code},,,,,,2019-Q1,1,"));
+    for (code, adjusted) in [("N", false), ("S", true), ("W", false), ("Y", true)] {
+        assert_eq!(!row(code).unwrap().unit.adjustment.is_raw(), adjusted);
+    }
+    // What such codes mean elsewhere, trends for one, is not known here.
+    for code in ["T", "s", "SA", "NSA"] {
+        assert_eq!(row(code).unwrap_err(), "unknown_word", "{code}");
+    }
+}
+
+#[test]
+fn an_index_measures_what_its_name_says() {
+    for (measure, kind, expected) in [
+        ("export_price", "unit_value", None),
+        ("export_unit_value", "price", None),
+        ("export_volume", "volume", None),
+        ("export_price", "volume", Some("not_applicable")),
+        ("export_price", "value", Some("unknown_word")),
+        ("export_volume", "price", Some("not_applicable")),
+        (
+            "industrial_production",
+            "unit_value",
+            Some("not_applicable"),
+        ),
+    ] {
+        let text = format!("area,measure,index_kind,period,value\nXAA,{measure},{kind},2014,98\n");
+        let intake = read("price_index", &[], &text).unwrap();
+        let code = intake.rejects.first().map(|r| r.finding.code.as_str());
+        assert_eq!(code, expected, "{measure} {kind}");
+    }
+}
+
+#[test]
 fn of_one_series_and_two_units_become_two_pieces() {
     let text = "area,measure,reference,period,value\nXAA,export_price,2010,2014,98\n\
                 XAA,export_price,2015,2015,100\nXAA,export_price,2010,2015,102\n";

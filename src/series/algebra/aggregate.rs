@@ -66,8 +66,8 @@ pub struct Aggregated {
 /// one sub-period. A week counts where it begins.
 ///
 /// # Errors
-/// `to` not lower than the frequency held; a method that means nothing for the unit (the sum of an
-/// index, a stock or annual rates, one month of a flow); `min_coverage` with another method or
+/// `to` not lower than the frequency held; growth rates; a method that means nothing for the unit (the
+/// sum of an index, a stock or annual rates, one month of a flow); `min_coverage` with another method or
 /// outside (0, 1]; no period complete.
 pub fn aggregate(
     series: &Series,
@@ -224,6 +224,12 @@ fn default_method(unit: &Unit) -> Method {
 /// The unit after aggregation; refuses methods that mean nothing for it.
 fn aggregated_unit(unit: &Unit, method: Method, to: Frequency) -> Result<Unit, AlgebraError> {
     let refuse = |reason, remedy| Err(AlgebraError::unsuitable("aggregate", unit, reason, remedy));
+    if let Quantity::Growth { .. } = unit.quantity {
+        return refuse(
+            "growth rates of its parts are not the growth of the longer period",
+            "Aggregate the level, then take its growth.",
+        );
+    }
     let mut result = unit.clone();
     match (unit.timing, method) {
         (Timing::Flow, Method::Sum) | (Timing::Stock, Method::First | Method::Last) => {}

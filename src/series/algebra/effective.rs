@@ -2,8 +2,10 @@
 
 use serde::Deserialize;
 
+use super::arithmetic::adjusted;
 use super::index::rebase;
-use super::{AlgebraError, Span, all_positive, map_together, overlap, same_frequency};
+use super::money::quoted;
+use super::{AlgebraError, Span, all_positive, map_together, observed, overlap, same_frequency};
 use crate::series::{
     Adjustment, CurrencyCode, IndexKind, Prices, Quantity, Series, Status, Timing, Unit,
 };
@@ -18,7 +20,8 @@ pub struct Reference {
     pub value: f64,
 }
 
-/// Years before the current one whose weights count; 1 or 3 in documents.
+/// Years before the current one whose weights count; 1 or 3 in documents: three for foreign income and one
+/// for exchange rates unless asked.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Deserialize)]
 #[serde(try_from = "u8")]
 pub enum WeightYears {
@@ -76,8 +79,10 @@ pub struct Coverage {
     pub period: Period,
     /// Partners with a value in this period and the one before, and a weight.
     pub partners: usize,
-    /// Their share in the weight of all named partners.
+    /// Their share in the weight of all named partners that have one.
     pub share: f64,
+    /// Partners without a weight for this period, which therefore do not lower the share.
+    pub unweighted: usize,
 }
 
 /// What a weighted aggregate returns.
@@ -87,6 +92,8 @@ pub struct Effective {
     pub series: Series,
     /// Coverage of each period after the first.
     pub coverage: Vec<Coverage>,
+    /// Periods beyond a break, left off though some partner has a value.
+    pub left_off: Vec<Period>,
 }
 
 /// `P_home / (E · P_foreign)`, E in home money per unit of foreign money: **a rise is a real
@@ -120,8 +127,8 @@ fn relative_price(
     same_frequency(RER, home_price, foreign_price)?;
     all_positive(RER, "the home price index", home_price)?;
     all_positive(RER, "the foreign price index", foreign_price)?;
-    let mut unit = relative_price_unit(IndexKind::ExchangeRate, 100.0);
-    unit.adjustment = home_price.unit.adjustment.clone();
+    let unit = relative_price_unit(IndexKind::ExchangeRate, 100.0);
+    let unit = adjusted(unit, &home_price.unit, &foreign_price.unit);
     let Some(rate) = rate else {
         if home != foreign {
             return Err(AlgebraError::clash(
@@ -135,36 +142,19 @@ fn relative_price(
         let extent = overlap(RER, &sides)?;
         return Ok(map_together(unit, extent, &sides, |v| v[0] / v[1]));
     };
-    let home_per_foreign = match rate.unit.quantity {
-        Quantity::Rate {
-            numerator,
-            denominator,
-            ..
-        } if (numerator, denominator) == (home, foreign) => true,
-        Quantity::Rate {
-            numerator,
-            denominator,
-            ..
-        } if (numerator, denominator) == (foreign, home) => false,
-        Quantity::Rate { .. }
-        | Quantity::Money { .. }
-        | Quantity::Index { .. }
-        | Quantity::Ratio
-        | Quantity::Growth { .. }
-        | Quantity::Physical { .. }
-        | Quantity::Count => {
-            return Err(AlgebraError::clash(
-                RER,
-                (&foreign_price.unit, &rate.unit),
-                "the rate is not between the currencies of the two price indices",
-                "Take the rate between home and foreign money.",
-            ));
-        }
+    let Some(home_per_foreign) = quoted(&rate.unit, foreign, home) else {
+        return Err(AlgebraError::clash(
+            RER,
+            (&foreign_price.unit, &rate.unit),
+            "the rate is not between the currencies of the two price indices",
+            "Take the rate between home and foreign money.",
+        ));
     };
     same_frequency(RER, home_price, rate)?;
     all_positive(RER, "the exchange rate", rate)?;
     let sides = [home_price, foreign_price, rate];
     let extent = overlap(RER, &sides)?;
+    let unit = adjusted(unit.clone(), &unit, &rate.unit);
     Ok(map_together(unit, extent, &sides, |v| {
         if home_per_foreign {
             v[0] / (v[2] * v[1])
@@ -200,14 +190,12 @@ pub fn real_effective_exchange_rate(
             weights: p.weights,
         })
         .collect();
-    let mut unit = relative_price_unit(IndexKind::ExchangeRate, reference.value);
-    unit.adjustment = home_price.unit.adjustment.clone();
     cumulate(
         "real_effective_exchange_rate",
         &weighted,
         years,
         reference,
-        unit,
+        IndexKind::ExchangeRate,
     )
 }
 
@@ -218,7 +206,7 @@ pub fn real_effective_exchange_rate(
 ///
 /// Weights are annual (lagged export weights: ratios, or money in one currency) and those of the
 /// year before the period, or the mean of the three years before. Growth is cumulated only through
-/// an unbroken run of periods around the reference; periods beyond a break are left off.
+/// an unbroken run of periods around the reference; periods beyond a break are left off and named.
 ///
 /// # Errors
 /// No partner; incomes at current prices or of other quantities; incomes partly adjusted for season
@@ -233,18 +221,19 @@ pub fn foreign_income(
     for partner in partners {
         let named = |e: AlgebraError| Err(e.with_partner(partner.name));
         let unit = &partner.level.unit;
-        let real = match &unit.quantity {
-            Quantity::Money { .. } => matches!(
-                unit.prices,
+        let real = matches!(
+            (&unit.quantity, &unit.prices),
+            (
+                Quantity::Money { .. },
                 Prices::Constant { .. } | Prices::Chained { .. } | Prices::Deflated { .. }
-            ),
-            Quantity::Index { kind, .. } => *kind == IndexKind::Volume,
-            Quantity::Rate { .. }
-            | Quantity::Ratio
-            | Quantity::Growth { .. }
-            | Quantity::Physical { .. }
-            | Quantity::Count => false,
-        };
+            ) | (
+                Quantity::Index {
+                    kind: IndexKind::Volume,
+                    ..
+                },
+                _
+            )
+        );
         if !real || unit.timing == Timing::FlowYearToDate {
             return named(AlgebraError::unsuitable(
                 INCOME,
@@ -264,11 +253,7 @@ pub fn foreign_income(
             ));
         }
     }
-    let mut unit = relative_price_unit(IndexKind::Volume, reference.value);
-    if let Some(first) = partners.first() {
-        unit.adjustment = first.level.unit.adjustment.clone();
-    }
-    cumulate(INCOME, partners, years, reference, unit)
+    cumulate(INCOME, partners, years, reference, IndexKind::Volume)
 }
 
 /// The chained weighted growth behind both aggregates.
@@ -277,13 +262,17 @@ fn cumulate(
     partners: &[Partner<'_>],
     years: WeightYears,
     reference: Reference,
-    unit: Unit,
+    kind: IndexKind,
 ) -> Result<Effective, AlgebraError> {
     let (start, end) = check_partners(operation, partners)?;
+    let unit = relative_price_unit(kind, reference.value);
+    let unit = partners.iter().fold(unit, |unit, partner| {
+        adjusted(unit.clone(), &unit, &partner.level.unit)
+    });
     let n = usize::try_from(end.ordinal() - start.ordinal()).unwrap_or(0);
+    let nth = |n: usize| i32::try_from(n).ok().and_then(|n| start.plus(n));
     let steps: Vec<Option<Step>> = (1..=n)
-        .map(|n| start.plus(i32::try_from(n).ok()?))
-        .map(|period| growth_step(partners, years, period?))
+        .map(|n| growth_step(partners, years, nth(n)?))
         .collect();
     // The run of unbroken steps around the first period of the reference; a step leads from the
     // period of its own number to the next.
@@ -311,14 +300,16 @@ fn cumulate(
         values.push(log_level.exp());
         status.push(step.status);
     }
-    let start = i32::try_from(first)
-        .ok()
-        .and_then(|n| start.plus(n))
-        .unwrap_or(start);
-    let series = Series::with_status(unit, start, values, status);
+    let series = Series::with_status(unit, nth(first).unwrap_or(start), values, status);
+    let held = |period: &Period| partners.iter().any(|p| p.level.at(*period).is_some());
     Ok(Effective {
         series: rebase(&series, reference.span, reference.value)?,
         coverage: run.iter().map(|step| step.coverage).collect(),
+        left_off: (0..first)
+            .chain(at + after + 1..=n)
+            .filter_map(nth)
+            .filter(held)
+            .collect(),
     })
 }
 
@@ -332,9 +323,10 @@ struct Step {
 fn growth_step(partners: &[Partner<'_>], years: WeightYears, period: Period) -> Option<Step> {
     let before = period.plus(-1)?;
     let (mut total, mut held, mut sum) = (0.0, 0.0, 0.0);
-    let (mut count, mut status) = (0, Status::Normal);
+    let (mut count, mut unweighted, mut status) = (0, 0, Status::Normal);
     for partner in partners {
         let Some(weight) = weight_at(partner.weights, period, years) else {
+            unweighted += 1;
             continue;
         };
         total += weight;
@@ -355,17 +347,19 @@ fn growth_step(partners: &[Partner<'_>], years: WeightYears, period: Period) -> 
             period,
             partners: count,
             share: held / total,
+            unweighted,
         },
     })
 }
 
-/// The weight for a period: that of the year before, or the mean of the three years before.
+/// The weight for a period: that of the year before, or the mean of the three years before. Forecasts
+/// do not count.
 fn weight_at(weights: &Series, period: Period, years: WeightYears) -> Option<f64> {
     let year = period.convert(Frequency::Annual);
     match years {
-        WeightYears::One => weights.at(year.plus(-1)?),
+        WeightYears::One => observed(weights, year.plus(-1)?),
         WeightYears::Three => (1..=3)
-            .map(|n| weights.at(year.plus(-n)?))
+            .map(|n| observed(weights, year.plus(-n)?))
             .sum::<Option<f64>>()
             .map(|sum| sum / 3.0),
     }
@@ -413,17 +407,10 @@ fn check_partner(
         });
     }
     let unit = &partner.weights.unit;
-    let usable = match unit.quantity {
-        Quantity::Ratio => true,
-        Quantity::Money { .. } => {
-            unit.prices == Prices::Current && unit.timing != Timing::FlowYearToDate
-        }
-        Quantity::Index { .. }
-        | Quantity::Rate { .. }
-        | Quantity::Growth { .. }
-        | Quantity::Physical { .. }
-        | Quantity::Count => false,
-    };
+    let usable = unit.quantity == Quantity::Ratio
+        || matches!(unit.quantity, Quantity::Money { .. })
+            && unit.prices == Prices::Current
+            && unit.timing != Timing::FlowYearToDate;
     if !usable {
         return Err(AlgebraError::unsuitable(
             operation,
@@ -456,24 +443,20 @@ fn check_partner(
 
 /// The currency of a price index.
 fn price_currency(operation: &'static str, unit: &Unit) -> Result<CurrencyCode, AlgebraError> {
-    match unit.quantity {
-        Quantity::Index {
-            kind: IndexKind::Price | IndexKind::UnitValue,
-            currency: Some(currency),
-            ..
-        } => Ok(currency),
-        Quantity::Index { .. }
-        | Quantity::Money { .. }
-        | Quantity::Rate { .. }
-        | Quantity::Ratio
-        | Quantity::Growth { .. }
-        | Quantity::Physical { .. }
-        | Quantity::Count => Err(AlgebraError::unsuitable(
+    if let Quantity::Index {
+        kind: IndexKind::Price | IndexKind::UnitValue,
+        currency: Some(currency),
+        ..
+    } = unit.quantity
+    {
+        Ok(currency)
+    } else {
+        Err(AlgebraError::unsuitable(
             operation,
             unit,
             "it is not an index of prices in a stated currency",
             "Take a price index with its currency.",
-        )),
+        ))
     }
 }
 

@@ -2,6 +2,7 @@
 
 use super::samples::*;
 use super::*;
+use crate::series::Adjustment;
 
 fn at(reference: &str) -> Reference {
     Reference {
@@ -108,11 +109,24 @@ fn up_is_a_real_appreciation_of_the_home_area() {
         rate: None,
         weights: &weights,
     };
-    let reer = real_effective_exchange_rate(&flat, &[partner, alike], WeightYears::One, at("2015"));
-    let reer = reer.unwrap();
+    let effective = |home: &Series, partners: &[TradePartner<'_>]| {
+        real_effective_exchange_rate(home, partners, WeightYears::One, at("2015")).unwrap()
+    };
+    let reer = effective(&flat, &[partner, alike]);
     // Half of Δln = −ln 2.
     assert!((reer.series.values[2] - 100.0 / 2.0_f64.sqrt()).abs() < 1e-12);
     assert_eq!(reer.coverage.len(), 2);
+
+    // Adjusted where any price is.
+    let adjusted = Unit {
+        adjustment: Adjustment::SeasonallyAdjusted("OFFICE".to_owned()),
+        ..price_index("XBD")
+    };
+    let price = &series(adjusted.clone(), "2014", &[100.0; 3]);
+    let rer = real_exchange_rate(&flat, price, Some(&falling), at("2015")).unwrap();
+    let reer = effective(&flat, &[alike, TradePartner { price, ..partner }]).series;
+    assert_eq!(rer.unit.adjustment, adjusted.adjustment);
+    assert_eq!(reer.unit.adjustment, adjusted.adjustment);
 }
 
 #[test]
@@ -148,6 +162,10 @@ fn foreign_income_weighs_by_the_year_before_and_names_the_partner() {
     assert!((result.series.values[2] - expected * 1.1).abs() < 1e-10);
     assert_eq!(result.coverage[1].partners, 1);
     assert!((result.coverage[1].share - 0.5).abs() < 1e-15);
+    assert_eq!(
+        (result.coverage[1].unweighted, &result.left_off[..]),
+        (0, &[][..])
+    );
     let three = foreign_income(&both(&one, &two), WeightYears::Three, at("2014")).unwrap();
     // Means of 2012 to 2014: 0.4 and 0.8/3.
     let share = 0.4 / (0.4 + 0.8 / 3.0);
@@ -172,4 +190,32 @@ fn foreign_income_weighs_by_the_year_before_and_names_the_partner() {
         "invalid_option",
         ["partners", "none"],
     );
+}
+
+/// A weight that is a forecast is none, and what lies beyond periods without any weight is named.
+#[test]
+fn partners_without_a_weight_are_counted() {
+    let level = series(
+        real_money("XBD", "2015"),
+        "2012",
+        &[100.0, 110.0, 121.0, 130.0, 140.0],
+    );
+    let first = series(Unit::ratio(), "2013", &[0.5, 0.5, f64::NAN]);
+    let mut second = series(Unit::ratio(), "2013", &[0.5, 0.5, f64::NAN]);
+    second.status[1] = Status::Forecast;
+    let partner = |name, weights| Partner {
+        name,
+        level: &level,
+        weights,
+    };
+    let partners = [partner("XBB", &first), partner("XCC", &second)];
+    let result = foreign_income(&partners, WeightYears::One, at("2014")).unwrap();
+    // Growth of 2014 by the weights of 2013 and of 2015 by those of 2014; none for 2013 and 2016.
+    let ends = (result.series.start.to_string(), result.series.len());
+    assert_eq!(ends, ("2013".to_owned(), 3));
+    let unweighted: Vec<usize> = result.coverage.iter().map(|c| c.unweighted).collect();
+    assert_eq!(unweighted, [0, 1]);
+    assert_eq!(result.coverage[1].partners, 1);
+    let left_off: Vec<String> = result.left_off.iter().map(ToString::to_string).collect();
+    assert_eq!(left_off, ["2012", "2016"]);
 }

@@ -18,6 +18,14 @@ pub enum Over {
     Year,
 }
 
+impl Over {
+    /// Whether from one period to the next.
+    #[must_use]
+    pub fn is_period(&self) -> bool {
+        *self == Self::Period
+    }
+}
+
 /// Growth as a fraction: `ln(v_t / v_{t−s})` or `v_t / v_{t−s} − 1`, with s = 1 or the periods of a
 /// year.
 ///
@@ -34,7 +42,7 @@ pub fn growth(
     over: Over,
     annualised: bool,
 ) -> Result<Series, AlgebraError> {
-    let unit = growth_unit(&series.unit, kind, over)?;
+    let unit = growth_unit(&series.unit, kind, over, annualised)?;
     let per_year = series.frequency().periods_per_year();
     if annualised && over == Over::Year {
         return Err(AlgebraError::Argument {
@@ -79,7 +87,12 @@ pub fn growth(
     Ok(Series::with_status(unit, start, values, status))
 }
 
-fn growth_unit(unit: &Unit, kind: GrowthKind, over: Over) -> Result<Unit, AlgebraError> {
+fn growth_unit(
+    unit: &Unit,
+    growth: GrowthKind,
+    over: Over,
+    annualised: bool,
+) -> Result<Unit, AlgebraError> {
     let refuse = |reason, remedy| Err(AlgebraError::unsuitable("growth", unit, reason, remedy));
     if let Quantity::Growth { .. } = unit.quantity {
         return refuse(
@@ -100,7 +113,11 @@ fn growth_unit(unit: &Unit, kind: GrowthKind, over: Over) -> Result<Unit, Algebr
         );
     }
     Ok(Unit {
-        quantity: Quantity::Growth { growth: kind },
+        quantity: Quantity::Growth {
+            growth,
+            over,
+            annualised,
+        },
         timing: Timing::Average,
         prices: Prices::None,
         adjustment: unit.adjustment.clone(),

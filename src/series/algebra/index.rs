@@ -1,8 +1,8 @@
 //! Rebasing and linking.
 
 use super::span::same_reference;
-use super::{AlgebraError, Span, overlap, same_frequency, scaled};
-use crate::series::{Prices, Quantity, Series, Status, Unit};
+use super::{AlgebraError, Span, observed, overlap, same_frequency, scaled};
+use crate::series::{Prices, Quantity, Series, Unit};
 use crate::time::Period;
 
 /// An index brought to the reference `reference` = `reference_value`.
@@ -45,26 +45,26 @@ pub(super) fn reference_level(
     index: &Series,
     reference: Span,
 ) -> Result<f64, AlgebraError> {
-    match &index.unit.quantity {
-        Quantity::Index {
-            reference: Some(stated),
-            reference_value,
-            ..
-        } if same_reference(stated, &reference.to_string()) && *reference_value > 0.0 => {
-            Ok(*reference_value)
-        }
-        Quantity::Index { .. } => reference.average_of(operation, index),
-        Quantity::Money { .. }
-        | Quantity::Rate { .. }
-        | Quantity::Ratio
-        | Quantity::Growth { .. }
-        | Quantity::Physical { .. }
-        | Quantity::Count => Err(AlgebraError::unsuitable(
+    let Quantity::Index {
+        reference: stated,
+        reference_value,
+        ..
+    } = &index.unit.quantity
+    else {
+        return Err(AlgebraError::unsuitable(
             operation,
             &index.unit,
             "only index numbers have a reference period",
             "Take an index.",
-        )),
+        ));
+    };
+    match stated {
+        Some(stated)
+            if same_reference(stated, &reference.to_string()) && *reference_value > 0.0 =>
+        {
+            Ok(*reference_value)
+        }
+        _ => reference.average_of(operation, index),
     }
 }
 
@@ -101,11 +101,7 @@ pub fn link(target: &Series, other: &Series, over: Option<Span>) -> Result<Linke
     let common: Vec<(Period, f64, f64)> = (0..len)
         .filter_map(|n| {
             let period = start.plus(i32::try_from(n).ok()?)?;
-            let observed = |series: &Series| {
-                let i = series.position(period)?;
-                (series.status[i] != Status::Forecast).then_some(series.at(period)?)
-            };
-            Some((period, observed(target)?, observed(other)?))
+            Some((period, observed(target, period)?, observed(other, period)?))
         })
         .collect();
     let basis: Vec<(Period, f64, f64)> = match over {

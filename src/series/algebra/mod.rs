@@ -55,6 +55,12 @@ fn observation(series: &Series, start: Period, n: usize) -> (f64, Status) {
         })
 }
 
+/// Value at a period that is no forecast.
+fn observed(series: &Series, period: Period) -> Option<f64> {
+    let i = series.position(period)?;
+    (series.status[i] != Status::Forecast).then(|| series.at(period))?
+}
+
 /// `f` over the values of all `sides` at `len` periods from `start`. All frequencies are equal.
 fn map_together(
     unit: Unit,

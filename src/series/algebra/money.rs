@@ -61,40 +61,33 @@ fn deflated_unit(
             "Take the flow of each period.",
         ));
     }
-    match &index.quantity {
-        Quantity::Index {
-            kind: IndexKind::Price | IndexKind::UnitValue,
-            currency: Some(prices_in),
-            ..
-        } if *prices_in == currency => Ok(Unit {
-            prices: Prices::Deflated {
-                deflator: deflator.to_owned(),
-                price_reference: reference.to_string(),
-            },
-            ..nominal.clone()
-        }),
-        Quantity::Index {
-            kind: IndexKind::Price | IndexKind::UnitValue,
-            currency,
-            ..
-        } => Err(clash(
-            match currency {
+    let Quantity::Index {
+        kind: IndexKind::Price | IndexKind::UnitValue,
+        currency: prices_in,
+        ..
+    } = index.quantity
+    else {
+        return Err(clash(
+            "the deflator is not a price or unit value index",
+            "Deflate by a price index.",
+        ));
+    };
+    if prices_in != Some(currency) {
+        return Err(clash(
+            match prices_in {
                 Some(_) => "the index measures prices in another currency",
                 None => "the index does not say in which currency its prices are",
             },
             "Convert one side, or take an index of prices in the currency of the amount.",
-        )),
-        Quantity::Index { .. }
-        | Quantity::Money { .. }
-        | Quantity::Rate { .. }
-        | Quantity::Ratio
-        | Quantity::Growth { .. }
-        | Quantity::Physical { .. }
-        | Quantity::Count => Err(clash(
-            "the deflator is not a price or unit value index",
-            "Deflate by a price index.",
-        )),
+        ));
     }
+    Ok(Unit {
+        prices: Prices::Deflated {
+            deflator: deflator.to_owned(),
+            price_reference: reference.to_string(),
+        },
+        ..nominal.clone()
+    })
 }
 
 /// An amount or a price index in the currency `to`.
@@ -130,6 +123,21 @@ pub fn convert(
     }))
 }
 
+/// Whether an exchange rate is quoted as `to` per unit of `from`, so that it multiplies; `None` where it is
+/// not between the two.
+pub(super) fn quoted(rate: &Unit, from: CurrencyCode, to: CurrencyCode) -> Option<bool> {
+    let Quantity::Rate {
+        numerator,
+        denominator,
+        ..
+    } = rate.quantity
+    else {
+        return None;
+    };
+    let direct = (numerator, denominator) == (to, from);
+    (direct || (numerator, denominator) == (from, to)).then_some(direct)
+}
+
 /// The converted unit, and whether the rate multiplies.
 fn converted_unit(
     amount: &Unit,
@@ -139,49 +147,27 @@ fn converted_unit(
 ) -> Result<(Unit, bool), AlgebraError> {
     let clash = |reason, remedy| AlgebraError::clash("convert", (amount, rates), reason, remedy);
     let mut unit = amount.clone();
-    let from = match &mut unit.quantity {
-        Quantity::Money { currency } => std::mem::replace(currency, to),
-        Quantity::Index {
-            currency: Some(currency),
-            kind: IndexKind::Price | IndexKind::UnitValue,
-            reference,
-            ..
-        } => {
-            *reference = None;
-            std::mem::replace(currency, to)
-        }
-        Quantity::Index { .. }
-        | Quantity::Rate { .. }
-        | Quantity::Ratio
-        | Quantity::Growth { .. }
-        | Quantity::Physical { .. }
-        | Quantity::Count => {
-            return Err(AlgebraError::unsuitable(
-                "convert",
-                amount,
-                "only money and indices of prices in a stated currency can change currency",
-                "Take an amount of money or a price index with its currency.",
-            ));
-        }
-    };
-    let Quantity::Rate {
-        numerator,
-        denominator,
+    if let Quantity::Index { reference, .. } = &mut unit.quantity {
+        *reference = None;
+    }
+    let (Quantity::Money { currency }
+    | Quantity::Index {
+        currency: Some(currency),
+        kind: IndexKind::Price | IndexKind::UnitValue,
         ..
-    } = rates.quantity
+    }) = &mut unit.quantity
     else {
-        return Err(clash(
-            "the other side is not an exchange rate",
-            "Convert by an exchange rate.",
+        return Err(AlgebraError::unsuitable(
+            "convert",
+            amount,
+            "only money and indices of prices in a stated currency can change currency",
+            "Take an amount of money or a price index with its currency.",
         ));
     };
-    let direct = if (numerator, denominator) == (to, from) {
-        true
-    } else if (numerator, denominator) == (from, to) {
-        false
-    } else {
+    let from = std::mem::replace(currency, to);
+    let Some(direct) = quoted(rates, from, to) else {
         return Err(clash(
-            "the rate is not between the currency of the amount and the one asked for",
+            "it is not an exchange rate between the currency of the amount and the one asked for",
             "Take the rate between the two, or form it first from two rates by multiply or divide.",
         ));
     };

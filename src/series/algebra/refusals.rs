@@ -225,7 +225,39 @@ fn sums_refuse_what_does_not_add_up() {
         "no_overlap",
         ["2014 to 2016", "2020 to 2020"],
     );
+    let constant = |reference: Option<&str>| {
+        let price_reference = reference.map(str::to_owned);
+        annual(real("XAD", Prices::Constant { price_reference }))
+    };
+    for other in [constant(None), constant(Some("2015"))] {
+        for result in [
+            add(&constant(None), &other),
+            subtract(&other, &constant(None)),
+            divide(&other, &constant(None)),
+        ] {
+            refused(
+                result,
+                "unit_clash",
+                ["an unstated period", "period of the prices is not stated"],
+            );
+        }
+    }
     let deflated = |by: &str| deflate(&nominal, &prices, by, span("2015")).unwrap();
+    // Both in prices of one period; the weaker label stays.
+    for sum in [
+        add(&constant(Some("2015")), &deflated("A.XAA.p")),
+        add(&deflated("A.XAA.p"), &constant(Some("2015"))),
+    ] {
+        assert_eq!(
+            sum.unwrap().unit.to_string(),
+            "XAD, flow, deflated by A.XAA.p, prices of 2015"
+        );
+    }
+    refused(
+        add(&constant(Some("2010")), &deflated("A.XAA.p")),
+        "unit_clash",
+        ["constant prices of 2010", "prices of 2015"],
+    );
     assert_eq!(
         add(&deflated("A.XAA.p"), &deflated("A.XAA.q"))
             .unwrap()
@@ -268,6 +300,12 @@ fn products_and_quotients_know_their_units() {
     assert_eq!(
         shown(divide(&value, &prices("2015"))),
         "volume index, 2015 = 100"
+    );
+    let foreign_value = annual(index(IndexKind::Value, Some("XBD"), Some("2015")));
+    refused(
+        divide(&foreign_value, &prices("2015")),
+        "unit_clash",
+        ["of prices in XBD", "of prices in XAD"],
     );
     let cross = divide(&annual(rate("XAD", "XCD")), &annual(rate("XBD", "XCD")));
     assert_eq!(shown(cross), "XAD per XBD");
@@ -333,6 +371,19 @@ fn growth_refuses_growth_and_weeks_over_the_year() {
         ["over", "W"],
     );
     let quarters = series(money("XAD"), "2015-Q1", &[1.0, 1.02]);
+    let plain = growth(&quarters, GrowthKind::Log, Over::Period, false).unwrap();
+    let yearly = growth(&quarters, GrowthKind::Log, Over::Period, true).unwrap();
+    refused(
+        subtract(&plain, &yearly),
+        "unit_clash",
+        ["(log growth)", "(log growth at annual rate)"],
+    );
+    let year = aggregate(&plain, Frequency::Annual, None, Some(0.25), Ends::Drop);
+    refused(
+        year.map(|a| a.series),
+        "unsuitable_unit",
+        ["log growth", "longer period"],
+    );
     let annualised = growth(&quarters, GrowthKind::Ratio, Over::Period, true).unwrap();
     assert!((annualised.values[0] - (1.02_f64.powi(4) - 1.0)).abs() < 1e-15);
 }
@@ -403,11 +454,42 @@ fn geometric_means_need_one_unit() {
         "invalid_option",
         ["weights", "0.0"],
     );
-    assert!(matches!(
-        mean.unit.quantity,
-        Quantity::Index {
-            reference: None,
-            ..
-        }
+    let reference = |mean: &Series| {
+        let Quantity::Index { reference, .. } = &mean.unit.quantity else {
+            panic!("{}", mean.unit);
+        };
+        reference.clone()
+    };
+    assert_eq!(reference(&mean), None);
+
+    // In a reference of one period every index is 100, and so is the mean.
+    let based = index(IndexKind::Price, Some("XAD"), Some("2015"));
+    let (a, b) = (
+        annual(based.clone()),
+        series(based.clone(), "2014", &[40.0, 100.0, 40.0]),
+    );
+    let mean = geometric_mean(&[&a, &b], None).unwrap();
+    assert!(near(mean.values[0], 60.0, 4.0));
+    assert_eq!(reference(&mean).as_deref(), Some("2015"));
+    assert_eq!(divide(&a, &mean).unwrap().unit, Unit::ratio());
+    // In a longer one the mean of means is no mean: it is brought to 100 there, if it reaches so far.
+    let quarters = |start, values: &[f64]| series(based.clone(), start, values);
+    let (a, b) = (
+        quarters("2015-Q1", &[50.0, 150.0, 50.0, 150.0, 200.0]),
+        quarters("2015-Q1", &[150.0, 50.0, 150.0, 50.0, 200.0]),
+    );
+    let mean = geometric_mean(&[&a, &b], None).unwrap();
+    assert_eq!(reference(&mean).as_deref(), Some("2015"));
+    assert!(near(
+        span("2015").average_of("test", &mean).unwrap(),
+        100.0,
+        8.0
     ));
+    assert!(near(
+        mean.values[4] / mean.values[0],
+        200.0 / 7500.0_f64.sqrt(),
+        8.0
+    ));
+    let late = quarters("2016-Q1", &[200.0, 210.0]);
+    assert_eq!(reference(&geometric_mean(&[&late], None).unwrap()), None);
 }

@@ -3,11 +3,9 @@
 use std::fmt;
 use std::str::FromStr;
 
-use serde::{Deserialize, Deserializer, Serialize, Serializer};
-
-use super::AlgebraError;
-use crate::series::{Series, Status};
-use crate::time::{Frequency, Period};
+use super::{AlgebraError, observed};
+use crate::series::Series;
+use crate::time::{Frequency, Period, serde_as_text};
 
 /// One period or a run of periods that a level refers to: `2015`, `2015-Q1`, or `2010/2012` (first
 /// and last, as an ISO 8601 interval).
@@ -65,10 +63,7 @@ impl Span {
             .map(|n| {
                 let period = first.plus(n);
                 period
-                    .and_then(|p| series.position(p))
-                    .filter(|i| series.status[*i] != Status::Forecast)
-                    .map(|i| series.values[i])
-                    .filter(|v| v.is_finite())
+                    .and_then(|p| observed(series, p))
                     .ok_or_else(|| not_covered(period))
             })
             .collect()
@@ -133,18 +128,7 @@ impl FromStr for Span {
     }
 }
 
-impl Serialize for Span {
-    fn serialize<S: Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
-        serializer.collect_str(self)
-    }
-}
-
-impl<'de> Deserialize<'de> for Span {
-    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
-        let text = String::deserialize(deserializer)?;
-        text.parse().map_err(serde::de::Error::custom)
-    }
-}
+serde_as_text!(Span);
 
 #[cfg(test)]
 mod tests {

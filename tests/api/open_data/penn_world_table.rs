@@ -89,23 +89,17 @@ fn preparation() -> Value {
             "terms_of_trade",
             json!([{ "divide": [export_price, import_price] }]),
         );
-        // A mean of price indices has no known reference; a mean of prices over one and the same price has none
-        // to know. The price that all are taken over cancels in the end.
-        output(
-            "export_price_over_us",
-            json!([{ "divide": [export_price, "A.USA.export_price_level...USD"] }]),
-        );
         let competitors = AREAS.iter().filter(|a| **a != area);
         let prices: Vec<String> = competitors
-            .map(|a| format!("A.{a}.export_price_over_us"))
+            .map(|a| format!("A.{a}.export_price_level...USD"))
             .collect();
         output(
-            "competitors_price_over_us",
+            "competitors_price...USD",
             json!([{ "geometric_mean": { "of": prices } }]),
         );
         output(
             "export_relative_price",
-            json!([{ "divide": [key("export_price_over_us"), key("competitors_price_over_us")] }]),
+            json!([{ "divide": [export_price, key("competitors_price...USD")] }]),
         );
     }
     json!({ "title": "Trade volumes and relative prices of twelve countries", "outputs": outputs })
@@ -144,7 +138,7 @@ async fn prepared() -> TestApp {
     let run = put_and_run(&app, "/v1/preparations/trade", &preparation()).await;
     let outputs = run.at("/outputs");
     let outputs = outputs.as_array().expect("a list");
-    assert_eq!(outputs.len(), 8 * AREAS.len());
+    assert_eq!(outputs.len(), 7 * AREAS.len());
     for output in outputs {
         assert_eq!(output["notes"], json!([]), "{output}");
     }
