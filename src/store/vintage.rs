@@ -354,8 +354,10 @@ pub struct ListedVintage {
     pub segment: i32,
     /// Unit of the segment.
     pub unit: Json<Unit>,
-    /// Release date.
+    /// Date of the release that speaks.
     pub released: NaiveDate,
+    /// Date from which it is visible, by which lists are ordered.
+    pub visible_from: NaiveDate,
     /// When it was recorded.
     pub recorded: DateTime<Utc>,
     /// Revision.
@@ -389,9 +391,9 @@ pub async fn list(
     let rows = of_series!(
         query_as!(
             ListedVintage,
-            r#"SELECT g.number AS segment, g.unit AS "unit: Json<Unit>", v.said AS released, c.recorded,
-                 v.revision, c.action, c.upload_id, c.run_id, v.start_period, v.observation_count,
-                 v.new_count, v.revised_count, v.emptied_count
+            r#"SELECT g.number AS segment, g.unit AS "unit: Json<Unit>", v.said AS released,
+                 v.released AS visible_from, c.recorded, v.revision, c.action, c.upload_id, c.run_id,
+                 v.start_period, v.observation_count, v.new_count, v.revised_count, v.emptied_count
                FROM series s JOIN segment g ON g.series_id = s.id
                JOIN vintage v ON v.segment_id = g.id JOIN change c ON c.revision = v.revision"#,
             "ORDER BY v.released, v.revision, g.number"
