@@ -134,6 +134,8 @@ pub struct Fmols {
     pub residuals: Vec<f64>,
     /// Lags of the Bartlett kernel.
     pub kernel_lags: usize,
+    /// Least squares of `y⁺` on the regressors, before the correction `Δ⁺`.
+    pub regression: Ols,
 }
 
 /// Fully modified least squares of `y_t = d_t'δ + x_t'β + u_{1t}` with `Δx_t` (x cleared of the deterministic
@@ -231,6 +233,7 @@ pub fn fmols(
         conditional_variance,
         residuals,
         kernel_lags,
+        regression: fit,
     })
 }
 

@@ -67,7 +67,7 @@ pub(super) fn insert(inputs: &mut Inputs, measure: &str, start: &str, values: Ve
     inputs.insert(key(measure), series);
 }
 
-fn codes(findings: &[Finding]) -> Vec<&str> {
+pub(super) fn codes(findings: &[Finding]) -> Vec<&str> {
     findings.iter().map(|f| f.code.as_str()).collect()
 }
 
@@ -77,10 +77,10 @@ pub(super) fn close(found: f64, wanted: f64, what: &str) {
 }
 
 /// Elasticities and mean growth rates of the simulated economy.
-const PI: f64 = 1.6;
-const EPSILON: f64 = 1.3;
-const ETA: f64 = 0.7;
-const ETA_STAR: f64 = 0.5;
+pub(super) const PI: f64 = 1.6;
+pub(super) const EPSILON: f64 = 1.3;
+pub(super) const ETA: f64 = 0.7;
+pub(super) const ETA_STAR: f64 = 0.5;
 
 /// An economy in which demand in differences is as METHODS has it, with independent errors.
 fn simulated(seed: u64, years: usize) -> Inputs {

@@ -94,15 +94,25 @@ pub fn johansen(
     case: JohansenCase,
     exogenous: &[Regressor],
 ) -> Result<Johansen, SeriesError> {
-    let all: Vec<&Regressor> = series.iter().chain(exogenous).collect();
-    check(&all)?;
-    let (p, total) = (series.len(), series.first().map_or(0, |s| s.values.len()));
-    if p < 2 || lags == 0 {
+    if series.len() < 2 || lags == 0 {
         return Err(SeriesError::Option {
             method: "Johansen",
             fault: "at least two series and one lag are needed".to_owned(),
         });
     }
+    reduced_rank(series, lags, case, exogenous)
+}
+
+/// The same for any number of series, as null distributions need it.
+pub(super) fn reduced_rank(
+    series: &[Regressor],
+    lags: usize,
+    case: JohansenCase,
+    exogenous: &[Regressor],
+) -> Result<Johansen, SeriesError> {
+    let all: Vec<&Regressor> = series.iter().chain(exogenous).collect();
+    check(&all)?;
+    let (p, total) = (series.len(), series.first().map_or(0, |s| s.values.len()));
     let restricted = usize::from(matches!(
         case,
         JohansenCase::RestrictedConstant | JohansenCase::RestrictedTrend

@@ -3,6 +3,7 @@
 mod engle_granger;
 mod hypotheses;
 mod johansen;
+mod rank_null;
 mod vecm;
 
 #[cfg(test)]
@@ -11,4 +12,5 @@ mod tests;
 pub use engle_granger::{EngleGranger, engle_granger};
 pub use hypotheses::LikelihoodRatio;
 pub use johansen::{Johansen, JohansenCase, RankTest, johansen};
-pub use vecm::Vecm;
+pub use rank_null::rank_null;
+pub use vecm::{RelationErrors, Vecm};

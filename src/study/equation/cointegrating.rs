@@ -1,0 +1,115 @@
+//! Cointegrating regressions: dynamic and fully modified least squares.
+
+use super::super::outcome::{CovarianceUsed, DynamicsResult};
+use super::checks::{Residuals, diagnostics, failed, residual_test, series};
+use super::dependence::Linear;
+use super::least_squares::linear;
+use super::system::replaced;
+use super::{Dependence, Equation, Request, explain_series, small};
+use crate::estimate::{Deterministic, DolsCovariance, Ols, dols, fmols};
+use crate::finding::Finding;
+use crate::linalg::product;
+
+type Estimated<'a> = Result<(Equation<'a>, Dependence), Vec<Finding>>;
+
+fn deterministic(request: &Request<'_>) -> Deterministic {
+    if request.has_trend() {
+        Deterministic::Trend
+    } else {
+        Deterministic::Constant
+    }
+}
+
+/// Dynamic least squares.
+pub(super) fn dynamic<'a>(request: &Request<'a>) -> Estimated<'a> {
+    let options = request.document.dols.unwrap_or_default();
+    let count = |v: Option<u32>| usize::try_from(v.unwrap_or(1)).unwrap_or(usize::MAX);
+    let (leads, lags) = (count(options.leads), count(options.lags));
+    let kernel = DolsCovariance::LongRun {
+        lags: request
+            .document
+            .lags
+            .map(|l| usize::try_from(l).unwrap_or(usize::MAX)),
+    };
+    let terms = deterministic(request);
+    let found = dols(
+        &request.volume(),
+        &request.regressors(),
+        terms,
+        leads,
+        lags,
+        kernel,
+    )
+    .map_err(|e| explain_series(e, request))?;
+    let fit = found.regression;
+    let form = Linear::of(&fit, lags + 1, found.long_run_variance);
+    let own = form.covariance();
+    let mut result = request.told(&fit, form.first, &own, CovarianceUsed::LongRun);
+    result.lags = small(found.kernel_lags);
+    result.dynamics = Some(DynamicsResult {
+        lags: vec![small(lags)],
+        leads: Some(small(leads)),
+        case: None,
+        choice: None,
+    });
+    result.tests = diagnostics(request, &fit, Residuals::Static);
+    let equation = relation(request, &fit, linear(request, &fit, own, result));
+    Ok((equation, Dependence::LongRun(form, found.kernel_lags)))
+}
+
+/// Fully modified least squares.
+pub(super) fn fully_modified<'a>(request: &Request<'a>) -> Estimated<'a> {
+    let lags = request
+        .document
+        .lags
+        .map(|l| usize::try_from(l).unwrap_or(usize::MAX));
+    let found = fmols(
+        &request.volume(),
+        &request.regressors(),
+        deterministic(request),
+        lags,
+    )
+    .map_err(|e| explain_series(e, request))?;
+    let modified = found.regression.dependent();
+    let fitted = |t: usize| -> f64 {
+        let pairs = found.regression.regressors.iter().zip(&found.coefficients);
+        pairs.map(|(r, c)| r.values[t] * c).sum()
+    };
+    let errors: Vec<f64> = (0..modified.len())
+        .map(|t| modified[t] - fitted(t))
+        .collect();
+    let mut form = Linear::of(&found.regression, 1, found.conditional_variance);
+    form.errors = errors;
+    let own = form.covariance();
+    let fit = replaced(found.regression, &found.coefficients, &found.residuals);
+    let mut result = request.told(&fit, 1, &own, CovarianceUsed::LongRun);
+    result.lags = small(found.kernel_lags);
+    // Sums of squares of the modified series are not those of the volume.
+    (result.r_squared, result.adjusted_r_squared) = (None, None);
+    result.tests = diagnostics(request, &fit, Residuals::Oblique);
+    result.residual_std_dev =
+        (product(&found.residuals, &found.residuals) / f64::from(small(fit.df))).sqrt();
+    let equation = relation(request, &fit, linear(request, &fit, own, result));
+    Ok((equation, Dependence::LongRun(form, found.kernel_lags)))
+}
+
+/// Adds the test of the deviations from the relation over all observations.
+fn relation<'a>(request: &Request<'_>, fit: &Ols, mut equation: Equation<'a>) -> Equation<'a> {
+    let mut deviations = request.volume().values;
+    let mut columns = deterministic(request).columns(deviations.len());
+    columns.extend(request.regressors());
+    for column in columns {
+        let slope = fit.coefficient(&column.name).unwrap_or(0.0);
+        for (deviation, value) in deviations.iter_mut().zip(&column.values) {
+            *deviation -= slope * value;
+        }
+    }
+    let (tests, findings) =
+        residual_test(request, &deviations, request.has_trend(), series(request));
+    equation.result.tests.splice(0..0, tests);
+    equation.findings.extend(findings);
+    equation
+        .findings
+        .extend(failed(request, &equation.result.tests));
+    equation
+}
