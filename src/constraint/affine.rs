@@ -7,8 +7,10 @@ use std::ops::{Add, Mul, Neg, Sub};
 use crate::linalg::Matrix;
 
 /// A number that depends on the stacked coefficients β of one or more equations: its value at the
-/// estimates and its gradient. Variances follow from the joint covariance of β; sums and multiples are exact,
-/// products and quotients to first order.
+/// estimates and its gradient.
+///
+/// Variances follow from the joint covariance of β; sums and multiples are exact, products and quotients hold to
+/// first order.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub struct Affine {
     /// Value at the estimates.

@@ -7,7 +7,7 @@ use serde::{Deserialize, Serialize};
 use utoipa::ToSchema;
 
 use super::document::{CrossCovariance, Estimator, Headline};
-use super::options::ArdlCase;
+use super::options::{ArdlCase, SimulationOptions};
 use crate::constraint::{Form, IntervalMethod, Region};
 use crate::finding::Finding;
 
@@ -34,6 +34,9 @@ pub struct Outcome {
     pub growth: MeanGrowth,
     /// How the intervals were made.
     pub interval: IntervalSettings,
+    /// Draws and seed behind simulated critical values; null where none was needed.
+    #[serde(default)]
+    pub simulation: Option<SimulationOptions>,
     /// One a requested estimator, in the order of the document.
     pub estimators: Vec<EstimatorResult>,
     /// What concerns the whole study.

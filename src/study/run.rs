@@ -71,6 +71,8 @@ pub fn run_with(
     if !faults.is_empty() {
         return Err(faults);
     }
+    let simulates = |e: &Estimator| matches!(e, Estimator::Ardl | Estimator::Johansen);
+    let simulated = document.estimators.iter().any(simulates);
     let mean = |key: &SeriesKey| scale * logs.mean_growth(key);
     let (imports, exports) = (&document.import_demand, &document.export_demand);
     Ok(Outcome {
@@ -101,6 +103,7 @@ pub fn run_with(
             level: document.interval.level,
             cross_covariance: document.interval.cross_covariance,
         },
+        simulation: simulated.then(|| document.simulation.unwrap_or_default()),
         estimators,
         findings: [logs.notices.clone(), orders_of_integration(document, &logs)].concat(),
         caution: CAUTION.to_owned(),

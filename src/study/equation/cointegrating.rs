@@ -6,7 +6,7 @@ use super::dependence::Linear;
 use super::least_squares::linear;
 use super::system::replaced;
 use super::{Dependence, Equation, Request, explain_series, small};
-use crate::estimate::{Deterministic, DolsCovariance, Ols, dols, fmols};
+use crate::estimate::{Deterministic, DolsCovariance, EstimateError, Ols, dols, fmols};
 use crate::finding::Finding;
 use crate::linalg::product;
 
@@ -20,16 +20,26 @@ fn deterministic(request: &Request<'_>) -> Deterministic {
     }
 }
 
+/// Lags of the kernel as given, fewer than the rows that a regression has without `lost` observations.
+fn kernel_lags(request: &Request<'_>, lost: usize) -> Result<Option<usize>, Vec<Finding>> {
+    let lags = request.document.lags;
+    let lags = lags.map(|l| usize::try_from(l).unwrap_or(usize::MAX));
+    let observations = request.logs.periods.len().saturating_sub(lost);
+    match lags {
+        Some(lags) if lags >= observations => {
+            Err(request.fault(&EstimateError::TooManyLags { lags, observations }))
+        }
+        _ => Ok(lags),
+    }
+}
+
 /// Dynamic least squares.
 pub(super) fn dynamic<'a>(request: &Request<'a>) -> Estimated<'a> {
     let options = request.document.dols.unwrap_or_default();
     let count = |v: Option<u32>| usize::try_from(v.unwrap_or(1)).unwrap_or(usize::MAX);
     let (leads, lags) = (count(options.leads), count(options.lags));
     let kernel = DolsCovariance::LongRun {
-        lags: request
-            .document
-            .lags
-            .map(|l| usize::try_from(l).unwrap_or(usize::MAX)),
+        lags: kernel_lags(request, 1 + leads + lags)?,
     };
     let terms = deterministic(request);
     let found = dols(
@@ -59,15 +69,11 @@ pub(super) fn dynamic<'a>(request: &Request<'a>) -> Estimated<'a> {
 
 /// Fully modified least squares.
 pub(super) fn fully_modified<'a>(request: &Request<'a>) -> Estimated<'a> {
-    let lags = request
-        .document
-        .lags
-        .map(|l| usize::try_from(l).unwrap_or(usize::MAX));
     let found = fmols(
         &request.volume(),
         &request.regressors(),
         deterministic(request),
-        lags,
+        kernel_lags(request, 1)?,
     )
     .map_err(|e| explain_series(e, request))?;
     let modified = found.regression.dependent();

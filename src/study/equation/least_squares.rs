@@ -239,11 +239,8 @@ pub(super) fn in_levels(request: &Request<'_>, equation: &mut Equation<'_>, devi
         residual_test(request, deviations, request.has_trend(), series(request));
     equation.result.tests.splice(0..0, tests);
     equation.findings.extend(findings);
-    let message = format!(
-        "Standard errors of demand for {} in log levels are not valid where the series have unit roots, even where \
-         they cointegrate",
-        request.side.noun()
-    );
+    let message = "Standard errors in log levels are not valid where the series have unit roots, even where they \
+                   cointegrate";
     let finding = Finding::notice("levels_inference_invalid", message);
     equation
         .findings

@@ -113,6 +113,12 @@ impl Page<'_> {
              where p is large, tests of no level relation and of weak instruments where it is small.",
             "",
         );
+        if let Some(simulation) = outcome.simulation {
+            self.line(&format!(
+                "Critical values of bounds and trace tests: {} draws at the exact size, seed {}.",
+                simulation.draws, simulation.seed
+            ));
+        }
         for result in &outcome.estimators {
             let label = estimator_label(result.estimator);
             for (noun, equation) in [
