@@ -11,7 +11,11 @@ impl Page<'_> {
     pub(super) fn elasticities(&mut self) {
         self.section("Elasticities and equations");
         self.line("Standard errors in brackets.");
-        let plain = |e: &Estimate| format!("{:.2} ({:.2})", e.value, e.std_error);
+        // A third digit where two would show no error at all.
+        let plain = |e: &Estimate| {
+            let digits = if e.std_error < 0.01 { 3 } else { 2 };
+            format!("{:.digits$} ({:.digits$})", e.value, e.std_error)
+        };
         let rate = |e: &Option<Estimate>| e.as_ref().map(plain);
         let rows: [(&str, Cell<'_>); 14] = [
             ("imports: income elasticity", &|r| {
