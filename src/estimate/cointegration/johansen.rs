@@ -62,14 +62,18 @@ pub struct Johansen {
     /// Lagged levels (n × p or p + 1) likewise.
     pub(super) r1: Matrix,
     /// `Δy_t` and lagged levels as they are, and the short-run terms with their names.
-    pub(super) raw: Raw,
+    pub raw: JohansenRows,
 }
 
+/// The rows of a reduced-rank regression.
 #[derive(Clone, Debug)]
-pub(super) struct Raw {
-    pub(super) changes: Vec<Vec<f64>>,
-    pub(super) levels: Vec<Vec<f64>>,
-    pub(super) short_run: Vec<Regressor>,
+pub struct JohansenRows {
+    /// `Δy_t`, one column a series.
+    pub changes: Vec<Vec<f64>>,
+    /// Lagged levels, one column a name of the system.
+    pub levels: Vec<Vec<f64>>,
+    /// Short-run terms.
+    pub short_run: Vec<Regressor>,
 }
 
 /// Johansen's reduced-rank regression of p series with k lags in levels:
@@ -94,25 +98,15 @@ pub fn johansen(
     case: JohansenCase,
     exogenous: &[Regressor],
 ) -> Result<Johansen, SeriesError> {
-    if series.len() < 2 || lags == 0 {
+    let all: Vec<&Regressor> = series.iter().chain(exogenous).collect();
+    check(&all)?;
+    let (p, total) = (series.len(), series.first().map_or(0, |s| s.values.len()));
+    if p < 2 || lags == 0 {
         return Err(SeriesError::Option {
             method: "Johansen",
             fault: "at least two series and one lag are needed".to_owned(),
         });
     }
-    reduced_rank(series, lags, case, exogenous)
-}
-
-/// The same for any number of series, as null distributions need it.
-pub(super) fn reduced_rank(
-    series: &[Regressor],
-    lags: usize,
-    case: JohansenCase,
-    exogenous: &[Regressor],
-) -> Result<Johansen, SeriesError> {
-    let all: Vec<&Regressor> = series.iter().chain(exogenous).collect();
-    check(&all)?;
-    let (p, total) = (series.len(), series.first().map_or(0, |s| s.values.len()));
     let restricted = usize::from(matches!(
         case,
         JohansenCase::RestrictedConstant | JohansenCase::RestrictedTrend
@@ -215,7 +209,7 @@ pub(super) fn reduced_rank(
         tests,
         r0,
         r1,
-        raw: Raw {
+        raw: JohansenRows {
             changes,
             levels,
             short_run,

@@ -11,6 +11,6 @@ mod tests;
 
 pub use engle_granger::{EngleGranger, engle_granger};
 pub use hypotheses::LikelihoodRatio;
-pub use johansen::{Johansen, JohansenCase, RankTest, johansen};
-pub use rank_null::rank_null;
+pub use johansen::{Johansen, JohansenCase, JohansenRows, RankTest, johansen};
+pub use rank_null::{RankNull, simulate_rank};
 pub use vecm::{RelationErrors, Vecm};

@@ -8,7 +8,7 @@ use super::system::replaced;
 use super::{Dependence, Equation, Request, explain_series, small};
 use crate::estimate::{Deterministic, DolsCovariance, EstimateError, Ols, dols, fmols};
 use crate::finding::Finding;
-use crate::linalg::product;
+use crate::linalg::Matrix;
 
 type Estimated<'a> = Result<(Equation<'a>, Dependence), Vec<Finding>>;
 
@@ -76,25 +76,24 @@ pub(super) fn fully_modified<'a>(request: &Request<'a>) -> Estimated<'a> {
         kernel_lags(request, 1)?,
     )
     .map_err(|e| explain_series(e, request))?;
-    let modified = found.regression.dependent();
-    let fitted = |t: usize| -> f64 {
-        let pairs = found.regression.regressors.iter().zip(&found.coefficients);
-        pairs.map(|(r, c)| r.values[t] * c).sum()
+    let columns = found.scores.regressors;
+    let variance = found.conditional_variance;
+    let form = Linear {
+        first: 1,
+        regressors: columns.iter().map(|r| r.values.clone()).collect(),
+        // The score of the constant is the error itself.
+        errors: found.scores.scores[0].clone(),
+        inverse_gram: Matrix::from_fn(columns.len(), columns.len(), |i, j| {
+            found.covariance.at(i, j) / variance
+        }),
+        variance,
     };
-    let errors: Vec<f64> = (0..modified.len())
-        .map(|t| modified[t] - fitted(t))
-        .collect();
-    let mut form = Linear::of(&found.regression, 1, found.conditional_variance);
-    form.errors = errors;
     let own = form.covariance();
-    let fit = replaced(found.regression, &found.coefficients, &found.residuals);
+    let plain = Ols::fit(&request.volume().values[1..], columns).map_err(|e| request.fault(&e))?;
+    let fit = replaced(plain, &found.coefficients, &found.residuals);
     let mut result = request.told(&fit, 1, &own, CovarianceUsed::LongRun);
     result.lags = small(found.kernel_lags);
-    // Sums of squares of the modified series are not those of the volume.
-    (result.r_squared, result.adjusted_r_squared) = (None, None);
     result.tests = diagnostics(request, &fit, Residuals::Oblique);
-    result.residual_std_dev =
-        (product(&found.residuals, &found.residuals) / f64::from(small(fit.df))).sqrt();
     let equation = relation(request, &fit, linear(request, &fit, own, result));
     Ok((equation, Dependence::LongRun(form, found.kernel_lags)))
 }

@@ -10,7 +10,7 @@ use super::checks::{
 use super::dependence::Linear;
 use super::{Dependence, Equation, Request, explain_series, finite, small};
 use crate::constraint::Affine;
-use crate::estimate::{Johansen, JohansenCase, Regressor, johansen, rank_null};
+use crate::estimate::{Johansen, JohansenCase, Regressor, johansen, simulate_rank};
 use crate::finding::Finding;
 use crate::linalg::decompose;
 use crate::series::SeriesKey;
@@ -80,7 +80,7 @@ pub(super) fn fit<'a>(request: &Request<'a>) -> Result<(Equation<'a>, Dependence
         case: None,
         choice: None,
     });
-    let (tests, mut findings) = rank_tests(request, &system);
+    let (tests, mut findings) = rank_tests(request, &system)?;
     result.tests = tests;
     findings.extend(judge_adjustment(request, speed, half_life));
     if let Some((test, finding)) = exogeneity(request, &system) {
@@ -119,20 +119,24 @@ fn system(
 }
 
 /// Trace tests of no relation and of at most one, with critical values at the exact size.
-fn rank_tests(request: &Request<'_>, system: &Johansen) -> (Vec<EquationTest>, Vec<Finding>) {
+fn rank_tests(
+    request: &Request<'_>,
+    system: &Johansen,
+) -> Result<(Vec<EquationTest>, Vec<Finding>), Vec<Finding>> {
     let (mut tests, mut findings) = (Vec::new(), Vec::new());
     for (rank, null) in [(0, "No level relation"), (1, "At most one level relation")] {
         let Some(found) = system.tests.get(rank) else {
             continue;
         };
-        let distribution = rank_null(
-            system.observations,
+        let null_of_rank = simulate_rank(
             system.series - rank,
-            system.lags,
             system.case,
+            system.observations,
             request.simulation(),
             request.machine.store,
-        );
+        )
+        .map_err(|e| explain_series(e, request))?;
+        let distribution = null_of_rank.trace;
         let critical = distribution.quantile(1.0 - SIGNIFICANCE);
         let rejected = found.trace > critical;
         let verdict = if rejected { "is" } else { "is not" };
@@ -172,7 +176,7 @@ fn rank_tests(request: &Request<'_>, system: &Johansen) -> (Vec<EquationTest>, V
         };
         findings.push(at(request, finding));
     }
-    (tests, findings)
+    Ok((tests, findings))
 }
 
 /// Do income and prices react to deviations from the demand relation?

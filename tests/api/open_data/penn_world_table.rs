@@ -518,13 +518,12 @@ async fn every_estimator_is_taken_by_name() {
     document["ardl"] = json!({ "criterion": "aic", "lags": 2 });
     let refused = app.put(path, &document.to_string()).await.expect(422);
     assert_eq!(refused.at("/errors/0/pointer"), "/ardl/lags");
+    an_equation_without_adjustment_gives_no_rate(&app).await;
     app.stop().await;
 }
 
 /// Italy and Japan by ARDL(1,1,1): nothing draws trade back to a level relation, so that no rate is told.
-#[tokio::test]
-async fn an_equation_without_adjustment_gives_no_rate() {
-    let app = prepared().await;
+async fn an_equation_without_adjustment_gives_no_rate(app: &TestApp) {
     for area in ["ITA", "JPN"] {
         let mut document = study(area);
         document["estimators"] = json!(["ardl"]);
@@ -535,7 +534,7 @@ async fn an_equation_without_adjustment_gives_no_rate() {
             .as_object_mut()
             .expect("an object")
             .remove("covariance");
-        let run = put_and_run(&app, &format!("/v1/studies/{area}"), &document).await;
+        let run = put_and_run(app, &format!("/v1/studies/{area}"), &document).await;
         let forms = run.at("/result/estimators/0/forms");
         for form in forms.as_array().expect("a list") {
             assert!(form["rate"].is_null(), "{area}: {form}");
@@ -554,5 +553,4 @@ async fn an_equation_without_adjustment_gives_no_rate() {
         assert!(page.contains("Balance-of-payments limit   "), "{page}");
         assert!(!page.contains("interval ["), "{page}");
     }
-    app.stop().await;
 }
