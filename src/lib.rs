@@ -11,6 +11,7 @@ pub mod series;
 pub mod time;
 
 pub mod dist;
+pub mod document;
 pub mod estimate;
 
 pub mod constraint;

@@ -22,6 +22,13 @@ impl Logs {
         self.by_key.get(key).map_or(&[], Vec::as_slice)
     }
 
+    /// Mean log growth a period of one input over the sample.
+    pub(super) fn mean_growth(&self, key: &SeriesKey) -> f64 {
+        let changes: Vec<f64> = self.of(key).windows(2).map(|w| w[1] - w[0]).collect();
+        let count = u32::try_from(changes.len()).unwrap_or(u32::MAX);
+        changes.iter().sum::<f64>() / f64::from(count)
+    }
+
     /// Share of an input's observations that are estimated or imputed.
     pub(super) fn guessed(&self, key: &SeriesKey) -> f64 {
         self.guessed.get(key).copied().unwrap_or(0.0)
@@ -210,6 +217,7 @@ fn check_unit(role: &Role<'_>, series: &Series) -> Option<Finding> {
             .expected(expected)
     };
     match role.kind {
+        Kind::Any => None,
         Kind::RelativePrice => match &unit.quantity {
             Quantity::Ratio
             | Quantity::Index {
