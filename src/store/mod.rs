@@ -14,6 +14,7 @@ pub mod dynamic;
 mod error;
 mod pool;
 pub mod series;
+pub mod simulation;
 pub mod staging;
 pub mod token;
 pub mod upload;

@@ -18,6 +18,7 @@ mod open_data;
 mod reading;
 mod readme;
 mod representations;
+mod simulations;
 mod storing;
 mod support;
 mod uploads;
