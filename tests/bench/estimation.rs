@@ -11,6 +11,7 @@ mod estimation {
     pub(crate) mod economy;
     pub(crate) mod estimators;
     pub(crate) mod library;
+    pub(crate) mod marks;
     pub(crate) mod size;
     pub(crate) mod speed;
 }
@@ -18,7 +19,7 @@ mod estimation {
 mod table;
 
 use anyhow::Context;
-use estimation::{coverage, size, speed};
+use estimation::{coverage, marks, size, speed};
 
 /// Runs a cell of the coverage table: all cells within ten minutes on two cores.
 const COVERAGE_RUNS: usize = 300;
@@ -37,6 +38,7 @@ fn main() -> anyhow::Result<()> {
         None => None,
     };
     size::print(runs.unwrap_or(SIZE_RUNS), threads);
+    marks::print(runs.unwrap_or(SIZE_RUNS), threads);
     coverage::print(runs.unwrap_or(COVERAGE_RUNS), threads);
     Ok(())
 }

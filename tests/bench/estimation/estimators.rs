@@ -102,7 +102,7 @@ pub(crate) fn estimate(
     let pi = slope(&sample.imports, home)?;
     let epsilon = slope(&sample.exports, abroad)?;
     // Scores of one sample, where both equations have them.
-    let across = if pi.scores.len() == epsilon.scores.len() {
+    let across = if !pi.scores.is_empty() && pi.scores.len() == epsilon.scores.len() {
         covariance(&pi.scores, &epsilon.scores, estimator)
     } else {
         0.0

@@ -1,12 +1,14 @@
 //! How often each test rejects at 5 % where its null hypothesis holds.
 
 use realterms::estimate::{
-    ArdlData, ArdlOrders, Blocks, BoundsCase, BoundsDesign, Break, Deterministic, JohansenCase,
-    KpssLags, LagCriterion, Lags, NoStore, NullDistribution, Ols, Regressor, Simulation, adf, arch,
-    bootstrap_bounds, breusch_godfrey, breusch_pagan, breusch_pagan_studentised, chow,
-    cusum_of_squares, cusum_ols, cusum_recursive, df_gls, durbin_watson, engle_granger,
-    jarque_bera, johansen, kpss, ljung_box, phillips_perron, replicate, reset, simulate,
-    simulate_unit_root, unknown_break, white, zivot_andrews,
+    ArdlData, ArdlOrders, AuxiliaryTest, Blocks, BoundsCase, BoundsDesign, Break,
+    CointegratingScores, Deterministic, Instability, JohansenCase, KpssLags, LagCriterion, Lags,
+    NoStore, NullDistribution, Ols, Regressor, ScoreDeterministic, Simulation, TestResult,
+    UnknownBreak, adf, arch, bootstrap_bounds, breusch_godfrey, breusch_pagan,
+    breusch_pagan_studentised, chow, cusum_of_squares, cusum_ols, cusum_recursive, df_gls,
+    durbin_watson, engle_granger, hansen_1992, in_parallel, instability_null, jarque_bera,
+    johansen, kpss, ljung_box, phillips_perron, replicate, reset, simulate, simulate_unit_root,
+    unknown_break, white, zivot_andrews,
 };
 use realterms::random::Draws;
 
@@ -22,6 +24,7 @@ struct Nulls {
     zivot_andrews: NullDistribution,
     trace: NullDistribution,
     bounds: [NullDistribution; 3],
+    hansen: Vec<Instability>,
 }
 
 fn lags() -> Lags {
@@ -73,10 +76,15 @@ impl Nulls {
         let bounds = design.simulate(simulation, &NoStore);
         let bounds = bounds.expect("the orders suit the design");
         let upper = |null: &[NullDistribution; 2]| null[1].clone();
+        let terms = ScoreDeterministic::Constant;
+        let hansen = in_parallel(NULL_DRAWS, threads, |r| {
+            instability_null(n, terms, 1, 5, r as u64).ok()
+        });
         Self {
             df_gls: one("DF-GLS", &df_gls_statistic),
             zivot_andrews: one("Zivot–Andrews", &zivot_andrews_statistic),
             trace,
+            hansen: hansen.into_iter().flatten().collect(),
             bounds: [
                 upper(&bounds.f),
                 upper(&bounds.t),
@@ -138,6 +146,7 @@ type Row = (&'static str, &'static str, f64);
 fn run(n: usize, draws: &mut Draws, nulls: &Nulls) -> Vec<Row> {
     let [y, x, z] = ["y", "x", "z"].map(|name| walk(name, n, draws));
     let mut rows = unit_roots(&y, nulls);
+    rows.extend(stability(&x, draws, nulls));
     rows.extend(cointegration(&y, &[x, z], draws, nulls));
     rows.extend(diagnostics(n, draws));
     rows
@@ -174,6 +183,34 @@ fn unit_roots(y: &Regressor, nulls: &Nulls) -> Vec<Row> {
             "white noise",
             p(kpss(&noise, CONSTANT, KpssLags::Automatic).map(|t| t.p_value)),
         ),
+    ]
+}
+
+/// Hansen's tests on a regression in levels with independent errors, which is cointegrated and stable.
+fn stability(x: &Regressor, draws: &mut Draws, nulls: &Nulls) -> Vec<Row> {
+    const NULL: &str = "stable cointegration, simulated null";
+    let regressors = vec![Regressor::constant(x.values.len()), x.clone()];
+    let y: Vec<f64> = x.values.iter().map(|x| 2.0 * x + draws.normal()).collect();
+    let Ok(fit) = Ols::fit(&y, regressors) else {
+        return Vec::new();
+    };
+    let score = |r: &Regressor| {
+        let products = r.values.iter().zip(&fit.residuals);
+        products.map(|(x, e)| x * e).collect()
+    };
+    let input = CointegratingScores {
+        scores: fit.regressors.iter().map(score).collect(),
+        regressors: fit.regressors.clone(),
+        omega: fit.s2,
+    };
+    let found = hansen_1992(&input, &nulls.hansen);
+    let p = found.map_or([f64::NAN; 3], |t| {
+        [t.lc.p_value, t.mean_f.p_value, t.sup_f.p_value]
+    });
+    vec![
+        ("Hansen 1992, Lc", NULL, p[0]),
+        ("Hansen 1992, MeanF", NULL, p[1]),
+        ("Hansen 1992, SupF", NULL, p[2]),
     ]
 }
 
@@ -251,9 +288,8 @@ fn diagnostics(n: usize, draws: &mut Draws) -> Vec<Row> {
     let Ok(fit) = Ols::fit(&y, regressors) else {
         return Vec::new();
     };
-    let p =
-        |found: Result<realterms::estimate::TestResult, _>| found.map_or(f64::NAN, |t| t.p_value);
-    let lm = |found: Result<realterms::estimate::AuxiliaryTest, _>| {
+    let p = |found: Result<TestResult, _>| found.map_or(f64::NAN, |t| t.p_value);
+    let lm = |found: Result<AuxiliaryTest, _>| {
         found.map_or([f64::NAN; 2], |t| [t.lm.p_value, t.f.p_value])
     };
     let godfrey = lm(breusch_godfrey(&fit, 2));
@@ -261,9 +297,7 @@ fn diagnostics(n: usize, draws: &mut Draws) -> Vec<Row> {
     let pagan = lm(breusch_pagan_studentised(&fit));
     let white = lm(white(&fit));
     let unknown = unknown_break(&fit, 0.15).ok();
-    let of_unknown = |pick: fn(&realterms::estimate::UnknownBreak) -> f64| {
-        unknown.as_ref().map_or(f64::NAN, pick)
-    };
+    let of_unknown = |pick: fn(&UnknownBreak) -> f64| unknown.as_ref().map_or(f64::NAN, pick);
     let watson = durbin_watson(&fit, false).map_or(f64::NAN, |t| t.p_positive);
     [
         ("Durbin–Watson, against positive", watson),
