@@ -207,7 +207,7 @@ pub(super) fn next_change(equation: &[f64], t: usize, lags: usize, levels: &[Vec
 #[cfg(test)]
 mod tests {
     use super::super::test_data::{close, penn};
-    use super::super::{ArdlOrders, BoundsCase, Simulation, replicate};
+    use super::super::{ArdlOrders, BoundsCase, QuickArdl, Simulation, replicate};
     use super::*;
 
     struct Demand {
@@ -282,38 +282,39 @@ mod tests {
         let [m, x] = fits(&data);
         let equations = [(&m, data[0].clone()), (&x, data[1].clone())];
         let system = SystemBootstrap::new(&equations, &demand.drivers, Some(1)).unwrap();
-        let run = |threads: usize| {
+        let run = |blocks: Blocks, threads: usize| {
             let simulation = Simulation {
                 draws: 200,
                 seed: 5,
                 threads,
             };
             replicate(simulation, |draws| {
-                let r = system.replicate(Blocks::Stationary(3.0), draws);
+                let r = system.replicate(blocks, draws);
                 let data = ArdlData {
                     y: &r.dependent[0],
                     x: &r.drivers[..2],
                     fixed: &[],
                 };
-                Ardl::fit(&data, m.orders.clone(), m.case)
-                    .unwrap()
-                    .adjustment
+                let fit = QuickArdl::fit(&data, &m.orders, m.case, m.orders.longest());
+                fit.unwrap().adjustment()
             })
         };
-        let found = run(2);
-        assert_eq!(found, run(1));
-        let mean = found.iter().sum::<f64>() / 200.0;
-        let spread = (found.iter().map(|f| (f - mean).powi(2)).sum::<f64>() / 199.0).sqrt();
-        // Adjustment is biased away from zero in small samples, by less than two standard errors.
-        assert!(
-            (mean - m.adjustment).abs() < 2.0 * m.adjustment_error,
-            "{mean} {}",
-            m.adjustment
-        );
-        assert!(
-            spread > 0.5 * m.adjustment_error && spread < 3.0 * m.adjustment_error,
-            "{spread}"
-        );
+        for blocks in [Blocks::Stationary(3.0), Blocks::DependentWild(3)] {
+            let found = run(blocks, 2);
+            assert_eq!(found, run(blocks, 1));
+            let mean = found.iter().sum::<f64>() / 200.0;
+            let spread = (found.iter().map(|f| (f - mean).powi(2)).sum::<f64>() / 199.0).sqrt();
+            // Adjustment is biased away from zero in small samples, by less than two standard errors.
+            assert!(
+                (mean - m.adjustment).abs() < 2.0 * m.adjustment_error,
+                "{blocks:?}: {mean} {}",
+                m.adjustment
+            );
+            assert!(
+                spread > 0.5 * m.adjustment_error && spread < 3.0 * m.adjustment_error,
+                "{blocks:?}: {spread}"
+            );
+        }
         assert_eq!(system.shocks().len(), 6);
         let missing = SystemBootstrap::new(&equations, &demand.drivers[1..], Some(1)).unwrap_err();
         assert!(

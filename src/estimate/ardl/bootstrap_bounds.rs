@@ -1,5 +1,8 @@
 //! Bounds tests with a bootstrap null distribution in place of two bounds.
 
+use serde::Serialize;
+use utoipa::ToSchema;
+
 use super::super::blocks::Blocks;
 use super::super::bootstrap_equation::{BootstrapEquation, centred, weigh};
 use super::super::series_error::{differences, regress};
@@ -27,7 +30,7 @@ pub struct BootstrapBounds {
 }
 
 /// p-values of the three tests.
-#[derive(Clone, Copy, Debug, PartialEq)]
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, ToSchema)]
 pub struct BootstrapBoundsP {
     /// Overall F, upper tail.
     pub f: f64,
