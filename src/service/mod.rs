@@ -24,6 +24,7 @@ pub use fault::Fault;
 pub use views::*;
 
 pub use crate::store::Database;
+pub use crate::store::simulation::Simulations;
 
 /// Runs pure work on a blocking thread, in the current span.
 async fn blocking<T: Send + 'static>(

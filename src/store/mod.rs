@@ -15,6 +15,7 @@ pub mod fragment;
 mod pool;
 pub mod search;
 pub mod series;
+pub mod simulation;
 pub mod staging;
 pub mod token;
 pub mod upload;

@@ -20,6 +20,7 @@ mod reading;
 mod readme;
 mod representations;
 mod runs;
+mod simulations;
 mod storing;
 mod support;
 mod uploads;
