@@ -270,10 +270,16 @@ fn quarterly_rates_are_per_year() {
         .into_iter()
         .map(|(key, mut series)| {
             series.start = Period::in_year(Frequency::Quarterly, 1990, 1).unwrap();
+            if key.to_string().ends_with("gdp_real") {
+                let by = "the source".to_owned();
+                series.unit.adjustment = crate::series::Adjustment::SeasonallyAdjusted(by);
+            }
             (quarterly(&key.to_string()).parse().unwrap(), series)
         })
         .collect();
     let found = run(&parse(&value), &inputs).unwrap();
+    assert!(codes(&found.findings).contains(&"filtered_series"));
+    assert!(!codes(&annual.findings).contains(&"filtered_series"));
     close(found.actual_growth, 4.0 * annual.actual_growth, "actual");
     let rate = |o: &Outcome| {
         let form = &o.estimators[1].forms[2];

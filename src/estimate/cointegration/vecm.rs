@@ -156,3 +156,30 @@ impl Johansen {
         })
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::super::{JohansenCase, johansen};
+    use crate::estimate::test_data::{close, danish};
+    use crate::linalg::decompose::column;
+
+    /// The errors' variance and gram give the standard errors of β, and at the maximum of the likelihood the errors
+    /// do not correlate with the lagged levels.
+    #[test]
+    fn errors_of_the_relation_are_those_of_its_coefficients() {
+        let series = ["lrm", "lry", "ibo", "ide"].map(danish);
+        for case in [JohansenCase::Constant, JohansenCase::RestrictedTrend] {
+            let model = johansen(&series, 2, case, &[]).unwrap().vecm(1).unwrap();
+            let relation = &model.relation;
+            for j in 0..relation.regressors.columns() {
+                let error = (relation.variance * relation.inverse_gram.at(j, j)).sqrt();
+                close("error", error, model.beta_errors.at(j + 1, 0), 1e-10);
+                let x = column(&relation.regressors, j);
+                let products: Vec<f64> =
+                    x.iter().zip(&relation.errors).map(|(x, w)| x * w).collect();
+                let size: f64 = products.iter().map(|p| p.abs()).sum();
+                assert!(products.iter().sum::<f64>().abs() < 1e-9 * size);
+            }
+        }
+    }
+}
