@@ -12,6 +12,7 @@ pub mod currency;
 pub mod document;
 pub mod dynamic;
 mod error;
+pub mod estimate;
 mod pool;
 pub mod series;
 pub mod staging;

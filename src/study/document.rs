@@ -3,11 +3,11 @@
 use std::collections::BTreeSet;
 
 use serde::{Deserialize, Serialize};
-use serde_json::Value;
 use utoipa::ToSchema;
 
-use super::reader::Reader;
+use super::reader;
 use crate::constraint::{Form, IntervalMethod};
+use crate::document;
 use crate::finding::Finding;
 use crate::series::SeriesKey;
 use crate::time::{Frequency, Period};
@@ -184,14 +184,7 @@ impl Document {
     /// The findings, all of severity error: `invalid_json`, `unknown_field` (lists the known ones),
     /// `missing_field`, `invalid_value`.
     pub fn parse(text: &str) -> Result<Self, Vec<Finding>> {
-        let value: Value = serde_json::from_str(text).map_err(|e| {
-            let line = u64::try_from(e.line()).unwrap_or_default();
-            vec![
-                Finding::error("invalid_json", format!("The document is not JSON: {e}"))
-                    .at_line(line),
-            ]
-        })?;
-        let document = Reader::read(&value)?;
+        let document = reader::read(&document::parse(text)?)?;
         let findings = document.check();
         if findings.is_empty() {
             Ok(document)

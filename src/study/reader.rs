@@ -1,30 +1,22 @@
 //! Reading a study's document from JSON, with a pointer for every fault.
 
-use serde::de::DeserializeOwned;
 use serde_json::{Map, Value};
 
 use super::document::{
     CrossCovariance, Demand, Document, Headline, Interval, SampleBounds, default_level,
 };
 use crate::constraint::IntervalMethod;
+use crate::document::Reader;
 use crate::finding::Finding;
 
-/// Reads JSON objects field by field, so that every fault has its pointer.
-#[derive(Default)]
-pub(super) struct Reader {
-    findings: Vec<Finding>,
+/// The document, or every fault found.
+pub(super) fn read(value: &Value) -> Result<Document, Vec<Finding>> {
+    let mut reader = Reader::default();
+    let document = reader.document(value);
+    reader.finish(document)
 }
 
 impl Reader {
-    /// The document, or every fault found.
-    pub(super) fn read(value: &Value) -> Result<Document, Vec<Finding>> {
-        let mut reader = Self::default();
-        match reader.document(value) {
-            Some(document) if reader.findings.is_empty() => Ok(document),
-            _ => Err(reader.findings),
-        }
-    }
-
     fn document(&mut self, value: &Value) -> Option<Document> {
         let known = [
             "title",
@@ -131,99 +123,5 @@ impl Reader {
             level: level?.unwrap_or_else(default_level),
             cross_covariance: cross?.unwrap_or_default(),
         })
-    }
-
-    /// A list that holds at least one element.
-    fn list<T: DeserializeOwned>(
-        &mut self,
-        map: &Map<String, Value>,
-        name: &str,
-    ) -> Option<Vec<T>> {
-        let list: Vec<Value> = self.field(map, "", name)?;
-        if list.is_empty() {
-            let message = format!("{name} is empty");
-            let finding = Finding::error("invalid_value", message).at_pointer(format!("/{name}"));
-            self.findings.push(finding);
-            return None;
-        }
-        let items: Vec<Option<T>> = list
-            .iter()
-            .enumerate()
-            .map(|(i, v)| self.value(v, &format!("/{name}/{i}")))
-            .collect();
-        items.into_iter().collect()
-    }
-
-    /// An object inside the document.
-    fn part<'a>(
-        &mut self,
-        map: &'a Map<String, Value>,
-        name: &str,
-        known: &[&str],
-    ) -> Option<&'a Map<String, Value>> {
-        let Some(value) = map.get(name) else {
-            self.missing(&format!("/{name}"), name);
-            return None;
-        };
-        self.object(value, &format!("/{name}"), known)
-    }
-
-    fn object<'a>(
-        &mut self,
-        value: &'a Value,
-        pointer: &str,
-        known: &[&str],
-    ) -> Option<&'a Map<String, Value>> {
-        let Some(map) = value.as_object() else {
-            let finding = Finding::error("invalid_value", "An object is expected here")
-                .at_pointer(pointer)
-                .expected(format!("an object with {}", known.join(", ")));
-            self.findings.push(finding);
-            return None;
-        };
-        for name in map.keys().filter(|name| !known.contains(&name.as_str())) {
-            let escaped = name.replace('~', "~0").replace('/', "~1");
-            let finding = Finding::error("unknown_field", format!("There is no field '{name}'"))
-                .at_pointer(format!("{pointer}/{escaped}"))
-                .found(name.clone())
-                .expected(format!("one of {}", known.join(", ")));
-            self.findings.push(finding);
-        }
-        Some(map)
-    }
-
-    /// A field; an absent one reads as null, which optional types take.
-    fn field<T: DeserializeOwned>(
-        &mut self,
-        map: &Map<String, Value>,
-        pointer: &str,
-        name: &str,
-    ) -> Option<T> {
-        let pointer = format!("{pointer}/{name}");
-        match map.get(name) {
-            Some(value) => self.value(value, &pointer),
-            None => serde_json::from_value(Value::Null).ok().or_else(|| {
-                self.missing(&pointer, name);
-                None
-            }),
-        }
-    }
-
-    fn value<T: DeserializeOwned>(&mut self, value: &Value, pointer: &str) -> Option<T> {
-        match serde_json::from_value(value.clone()) {
-            Ok(value) => Some(value),
-            Err(error) => {
-                let finding = Finding::error("invalid_value", error.to_string())
-                    .at_pointer(pointer)
-                    .found(value.to_string());
-                self.findings.push(finding);
-                None
-            }
-        }
-    }
-
-    fn missing(&mut self, pointer: &str, name: &str) {
-        let finding = Finding::error("missing_field", format!("The field '{name}' is required"));
-        self.findings.push(finding.at_pointer(pointer));
     }
 }
