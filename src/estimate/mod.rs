@@ -57,7 +57,8 @@ pub use bounds_null::{BoundsDesign, BoundsNull, simulate_unit_root};
 pub use breaks::{UnknownBreak, chow, unknown_break};
 pub use cointegrating_regression::{Dols, DolsCovariance, Fmols, dols, fmols};
 pub use cointegration::{
-    EngleGranger, Johansen, JohansenCase, LikelihoodRatio, RankTest, Vecm, engle_granger, johansen,
+    EngleGranger, Johansen, JohansenCase, JohansenRows, LikelihoodRatio, RankNull, RankTest, Vecm,
+    engle_granger, johansen, simulate_rank,
 };
 pub use covariance::{CovarianceKind, Hc, covariance};
 pub use criteria::{Criteria, criteria};

@@ -1,6 +1,5 @@
 //! From the estimators' errors to findings that name code, place and what would help.
 
-use super::request::Variable;
 use super::task::Task;
 use crate::estimate::{EstimateError, SeriesError};
 use crate::finding::Finding;
@@ -140,12 +139,4 @@ pub(super) fn option(name: &str, message: String, expected: &str) -> Box<Finding
             .at_pointer(format!("/options/{name}"))
             .expected(expected),
     )
-}
-
-impl Variable {
-    /// Its series' key, or its name where it has none.
-    pub(super) fn label(&self) -> String {
-        self.key()
-            .map_or_else(|| self.name.clone(), ToString::to_string)
-    }
 }

@@ -1,5 +1,7 @@
 //! Reading a method's options: every name asked for is a known one.
 
+use std::collections::BTreeMap;
+
 use serde::de::DeserializeOwned;
 use serde_json::{Map, Value};
 
@@ -168,8 +170,26 @@ impl<'a> Options<'a> {
         Some(self.typed(name)?.unwrap_or_default())
     }
 
+    /// A whole number for all, or a list of them; each at most 24.
     pub(super) fn counts(&mut self, name: &'static str) -> Option<Option<Vec<usize>>> {
-        self.typed(name)
+        let counts = match self.map.get(name) {
+            Some(Value::Number(_)) => self.typed::<usize>(name)?.map(|one| vec![one]),
+            _ => self.typed::<Vec<usize>>(name)?,
+        };
+        if counts.iter().flatten().any(|c| *c > 24) {
+            self.refuse(
+                name,
+                format!("{name} lies outside its range"),
+                "0 to 24 each",
+            );
+            return None;
+        }
+        Some(counts)
+    }
+
+    /// A list of objects that give each name a number.
+    pub(super) fn maps(&mut self, name: &'static str) -> Option<Vec<BTreeMap<String, f64>>> {
+        Some(self.typed(name)?.unwrap_or_default())
     }
 
     pub(super) fn period(&mut self, name: &'static str) -> Option<Option<Period>> {

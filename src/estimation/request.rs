@@ -7,7 +7,7 @@ use serde_json::{Map, Value};
 use super::methods::{self, Method, Procedure, Takes};
 use super::options::{Options, Reading};
 use super::terms::Term;
-use crate::document::{self, Reader};
+use crate::document;
 use crate::finding::Finding;
 use crate::series::SeriesKey;
 use crate::time::{Frequency, Period};
@@ -473,12 +473,5 @@ impl std::fmt::Debug for Request {
             .field("method", &self.method.name)
             .field("variables", &self.variables)
             .finish_non_exhaustive()
-    }
-}
-
-/// The reader of a request, with the variables met so far.
-impl Reading {
-    pub(super) fn reader(&mut self) -> &mut Reader {
-        &mut self.reader
     }
 }

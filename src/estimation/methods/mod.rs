@@ -1,8 +1,29 @@
 //! The methods: one row of the table each.
 
+mod ardl;
+mod autoregressive_errors;
+mod cointegrating;
+mod engle_granger;
+mod johansen;
 mod least_squares;
+mod stability;
+mod system;
+mod two_stage;
+mod unit_roots;
+
+use ardl::DistributedLags;
+use autoregressive_errors::AutoregressiveErrors;
+use cointegrating::{Dynamic, FullyModified, Hansen};
+use engle_granger::EngleGranger;
+use johansen::ReducedRank;
+use least_squares::LeastSquares;
+use stability::Stability;
+use system::SeeminglyUnrelated;
+use two_stage::TwoStage;
+use unit_roots::{Adf, DfGls, Kpss, PhillipsPerron, ZivotAndrews};
 
 use super::options::Options;
+use super::request::too_many;
 use super::task::{Draft, Outcome, Task};
 
 /// A method that has read its options.
@@ -31,19 +52,146 @@ pub(super) struct Method {
     pub(super) takes: Takes,
     /// Whether constant and trend come by an option instead of `terms`.
     pub(super) own_terms: bool,
-    pub(super) read: fn(&mut Options<'_>) -> Option<Box<dyn Procedure>>,
+    pub(super) read: Read,
 }
+
+/// Reads a method's options.
+type Read = fn(&mut Options<'_>) -> Option<Box<dyn Procedure>>;
 
 /// A boxed procedure, if it could be read.
 fn boxed<P: Procedure + 'static>(procedure: Option<P>) -> Option<Box<dyn Procedure>> {
     Some(Box::new(procedure?))
 }
 
+/// Refuses samples on which a method would take minutes.
+fn at_most(task: &Task<'_>, most: usize) -> Outcome<()> {
+    if task.n() > most {
+        return Err(too_many("Observations", task.n(), most));
+    }
+    Ok(())
+}
+
+/// A method whose constant and trend are terms.
+const fn with_terms(name: &'static str, title: &'static str, read: Read) -> Method {
+    Method {
+        name,
+        title,
+        takes: Takes::Maybe,
+        own_terms: false,
+        read,
+    }
+}
+
+/// A method whose constant and trend come by an option.
+const fn with_option(name: &'static str, title: &'static str, takes: Takes, read: Read) -> Method {
+    Method {
+        name,
+        title,
+        takes,
+        own_terms: true,
+        read,
+    }
+}
+
 /// All methods.
-pub(super) const METHODS: &[Method] = &[Method {
-    name: "ordinary_least_squares",
-    title: "Ordinary least squares",
-    takes: Takes::Maybe,
-    own_terms: false,
-    read: |o| boxed(least_squares::LeastSquares::read(o)),
-}];
+pub(super) const METHODS: &[Method] = &[
+    with_terms("ordinary_least_squares", "Ordinary least squares", |o| {
+        boxed(LeastSquares::read(o))
+    }),
+    with_terms(
+        "autoregressive_errors",
+        "Regression with autoregressive errors",
+        |o| boxed(AutoregressiveErrors::read(o)),
+    ),
+    with_terms("two_stage_least_squares", "Two-stage least squares", |o| {
+        boxed(TwoStage::read(o))
+    }),
+    Method {
+        name: "seemingly_unrelated",
+        title: "Seemingly unrelated regressions",
+        takes: Takes::Equations,
+        own_terms: false,
+        read: |o| boxed(SeeminglyUnrelated::read(o)),
+    },
+    with_option(
+        "augmented_dickey_fuller",
+        "Augmented Dickey–Fuller test",
+        Takes::Series,
+        |o| boxed(Adf::read(o)),
+    ),
+    with_option(
+        "phillips_perron",
+        "Phillips–Perron test",
+        Takes::Series,
+        |o| boxed(PhillipsPerron::read(o)),
+    ),
+    with_option("kpss", "KPSS test", Takes::Series, |o| boxed(Kpss::read(o))),
+    with_option("df_gls", "DF-GLS test", Takes::Series, |o| {
+        boxed(DfGls::read(o))
+    }),
+    with_option(
+        "zivot_andrews",
+        "Zivot–Andrews test",
+        Takes::Series,
+        |o| boxed(ZivotAndrews::read(o)),
+    ),
+    with_option(
+        "engle_granger",
+        "Engle–Granger test",
+        Takes::Regressors,
+        |o| boxed(EngleGranger::read(o)),
+    ),
+    with_option(
+        "johansen",
+        "Johansen's rank tests",
+        Takes::Regressors,
+        |o| boxed(ReducedRank::read(o, false)),
+    ),
+    with_option(
+        "vecm",
+        "Vector error-correction model",
+        Takes::Regressors,
+        |o| boxed(ReducedRank::read(o, true)),
+    ),
+    with_option(
+        "autoregressive_distributed_lag",
+        "Autoregressive distributed lag",
+        Takes::Regressors,
+        |o| boxed(DistributedLags::read(o)),
+    ),
+    with_option(
+        "dynamic_ols",
+        "Dynamic least squares",
+        Takes::Regressors,
+        |o| boxed(Dynamic::read(o)),
+    ),
+    with_option(
+        "fully_modified_ols",
+        "Fully modified least squares",
+        Takes::Regressors,
+        |o| boxed(FullyModified::read(o)),
+    ),
+    with_terms("recursive_residuals", "Recursive residuals", |_| {
+        boxed(Some(Stability::Residuals))
+    }),
+    with_terms("cusum", "CUSUM test", |o| boxed(Stability::cusum(o))),
+    with_terms("cusum_of_squares", "CUSUM of squares test", |_| {
+        boxed(Some(Stability::CusumOfSquares))
+    }),
+    with_terms("chow", "Chow test", |o| boxed(Stability::chow(o))),
+    with_terms("unknown_break", "Break at an unknown date", |o| {
+        boxed(Stability::unknown_break(o))
+    }),
+    with_terms("rolling", "Rolling windows", |o| {
+        boxed(Stability::rolling(o))
+    }),
+    with_terms("recursive", "Recursive windows", |o| {
+        boxed(Stability::recursive(o))
+    }),
+    with_option(
+        "hansen_1992",
+        "Hansen's tests of a cointegrating regression",
+        Takes::Regressors,
+        |o| boxed(Hansen::read(o)),
+    ),
+];
