@@ -1,7 +1,9 @@
 //! What an estimation found: one shape for all methods, from which JSON, text and LaTeX come.
 
 use serde::{Deserialize, Serialize};
-use utoipa::ToSchema;
+use utoipa::openapi::schema::{ObjectBuilder, SchemaType, Type};
+use utoipa::openapi::{RefOr, Schema};
+use utoipa::{PartialSchema, ToSchema};
 
 use crate::estimate::{Distribution, TestResult};
 use crate::finding::Finding;
@@ -147,7 +149,7 @@ pub struct EstimateTable {
 }
 
 /// A cell of a table.
-#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 #[serde(untagged)]
 pub enum Cell {
     /// A number.
@@ -156,6 +158,27 @@ pub enum Cell {
     Text(String),
     /// Nothing: it does not exist or cannot be computed.
     Missing(Option<()>),
+}
+
+impl PartialSchema for Cell {
+    fn schema() -> RefOr<Schema> {
+        ObjectBuilder::new()
+            .schema_type(SchemaType::from_iter([
+                Type::Number,
+                Type::String,
+                Type::Null,
+            ]))
+            .description(Some(
+                "A number, a text, or null: it does not exist or cannot be computed.",
+            ))
+            .into()
+    }
+}
+
+impl ToSchema for Cell {
+    fn name() -> std::borrow::Cow<'static, str> {
+        "EstimateCell".into()
+    }
 }
 
 impl From<f64> for Cell {

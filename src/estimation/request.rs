@@ -4,7 +4,7 @@ use std::collections::BTreeSet;
 
 use serde_json::{Map, Value};
 
-use super::methods::{self, Method, Procedure, Takes};
+use super::methods::{self, Method, Procedure, Takes, Terms};
 use super::options::{Options, Reading};
 use super::terms::Term;
 use crate::document;
@@ -115,6 +115,27 @@ impl Variable {
         }
     }
 
+    /// Whether it has the numbers of another one, lag apart.
+    pub(super) fn same_source(&self, other: &Self) -> bool {
+        match (&self.source, &other.source) {
+            (Source::Stored(a), Source::Stored(b)) => a == b,
+            (Source::Inline(a, x), Source::Inline(b, y)) => {
+                let bits = |v: &[f64]| v.iter().map(|v| v.to_bits()).collect::<Vec<_>>();
+                a == b && bits(x) == bits(y)
+            }
+            (Source::Stored(_), Source::Inline(..)) | (Source::Inline(..), Source::Stored(_)) => {
+                false
+            }
+        }
+    }
+
+    /// Whether it has the same column as another one.
+    fn same_column(&self, other: &Self) -> bool {
+        self.transformation == other.transformation
+            && self.lag == other.lag
+            && self.same_source(other)
+    }
+
     /// A finding placed at this variable.
     pub(super) fn place(&self, finding: Finding) -> Finding {
         let name = self
@@ -173,14 +194,29 @@ impl Request {
                     .remedy("Aggregate it by a preparation first");
                 faults.push(variable.place(finding));
             }
-            let same = |other: &&Variable| other.name == variable.name;
-            if self.method.takes != Takes::Equations && self.variables[..i].iter().any(|v| same(&v))
-            {
+            // Equations may share a series, which then is one column of the rows.
+            let systems = self.method.takes == Takes::Equations;
+            let clash = |other: &Variable| {
+                other.name == variable.name && !(systems && other.same_column(variable))
+            };
+            if self.variables[..i].iter().any(clash) {
                 let message = format!("Two variables are called '{}'", variable.name);
                 let finding = Finding::error("duplicate_name", message)
                     .remedy("Give one of them a name of its own");
                 faults.push(variable.place(finding));
             }
+        }
+        for (i, equation) in self.equations.iter().enumerate() {
+            if self.equations[..i].iter().any(|e| e.name == equation.name) {
+                let message = format!("Two equations are called '{}'", equation.name);
+                let finding = Finding::error("duplicate_name", message)
+                    .at_pointer(equation.pointer.clone())
+                    .remedy("Give one of them a name of its own");
+                faults.push(finding);
+            }
+        }
+        if self.variables.len() > MOST_VARIABLES {
+            faults.push(*too_many("Series", self.variables.len(), MOST_VARIABLES));
         }
         for (pointer, period) in [("/sample/from", self.from), ("/sample/to", self.to)] {
             if let Some(p) = period.filter(|p| p.frequency() != self.frequency) {
@@ -205,8 +241,11 @@ impl Reading {
         known.extend(match method.takes {
             Takes::Equations => &["equations"][..],
             Takes::Series => &["dependent"],
-            Takes::Regressors | Takes::Maybe => &["dependent", "regressors", "terms"],
+            Takes::Regressors | Takes::Maybe => &["dependent", "regressors"],
         });
+        if method.terms != Terms::None && method.takes != Takes::Equations {
+            known.push("terms");
+        }
         self.reader.unknown(map, "", &known);
         let (from, to) = self.bounds(map).unzip();
         let equations = if method.takes == Takes::Equations {
@@ -282,9 +321,7 @@ impl Reading {
             equations.push(read.and_then(|map| {
                 let mut equation = self.equation(map, &pointer, method)?;
                 let name: Option<String> = self.reader.field(map, &pointer, "name")?;
-                if let Some(name) = name {
-                    equation.name = name;
-                }
+                equation.name = name.unwrap_or(equation.name);
                 Some(equation)
             }));
         }
@@ -336,10 +373,10 @@ impl Reading {
     ) -> Option<Vec<Term>> {
         let given: Option<Option<Vec<String>>> = self.reader.field(map, base, "terms");
         let Some(given) = given? else {
-            return Some(if method.own_terms {
-                Vec::new()
-            } else {
+            return Some(if method.terms == Terms::All {
                 vec![Term::Constant]
+            } else {
+                Vec::new()
             });
         };
         let mut terms = Vec::new();
@@ -352,7 +389,7 @@ impl Reading {
                     continue;
                 }
             };
-            if method.own_terms && matches!(term, Term::Constant | Term::Trend) {
+            if method.terms == Terms::Dummies && matches!(term, Term::Constant | Term::Trend) {
                 let message = format!("{} has its constant and trend by an option", method.title);
                 let expected =
                     "seasonal, impulse:PERIOD, step:PERIOD; options/case or options/deterministic";
@@ -382,7 +419,16 @@ impl Reading {
             _ => self.source(map, pointer),
         };
         let (source, transformation, lag) = (source?, transformation?, lag?.unwrap_or(0));
-        let name = name?.filter(|n| !n.is_empty());
+        let name = name?;
+        if let Some(name) = &name
+            && let Err(why) = check_name(name)
+        {
+            let at = format!("{pointer}/name");
+            let expected = "1 to 80 characters on one line, no name of a term";
+            self.reader
+                .invalid(&at, format!("'{name}' {why}"), expected);
+            return None;
+        }
         let name = match (&source, name) {
             (_, Some(name)) => name,
             (Source::Stored(key), None) => {
@@ -453,6 +499,24 @@ impl Reading {
                 None
             }
         }
+    }
+}
+
+/// Most series of a request.
+const MOST_VARIABLES: usize = 50;
+
+/// Whether a name can stand in every table: short, on one line, and not that of a term.
+fn check_name(name: &str) -> Result<(), &'static str> {
+    let term = ["constant", "const", "trend", "period"].contains(&name)
+        || ["season ", "impulse ", "step "]
+            .iter()
+            .any(|t| name.starts_with(t));
+    if term {
+        Err("is the name of a term")
+    } else if name.is_empty() || name.chars().count() > 80 || name.chars().any(char::is_control) {
+        Err("does not fit a table")
+    } else {
+        Ok(())
     }
 }
 

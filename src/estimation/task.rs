@@ -159,12 +159,7 @@ impl<'a> Task<'a> {
         let own = &variables[equation.dependent];
         equation.regressors.iter().any(|id| {
             let other = &variables[*id];
-            other.lag > own.lag
-                && match (&own.source, &other.source) {
-                    (Source::Stored(a), Source::Stored(b)) => a == b,
-                    (Source::Inline(a, x), Source::Inline(b, y)) => a == b && x == y,
-                    _ => false,
-                }
+            other.lag > own.lag && other.same_source(own)
         })
     }
 

@@ -11,6 +11,8 @@ mod contract;
 mod conventions;
 mod demo;
 mod ending;
+mod estimate_methods;
+mod estimates;
 mod held;
 mod hostile;
 mod kill;

@@ -270,7 +270,7 @@ impl DistributedLags {
     fn bounds(&self, task: &Task<'_>, found: &Ardl, draft: &mut Draft) -> Outcome<()> {
         let no = |e: SeriesError| task.refuse(e);
         let bounds = found.bounds().map_err(no)?;
-        let law = "between bounds with regressors I(0) and I(1), simulated at the exact size";
+        let law = "bounds at I(0) and I(1), simulated";
         let mut f = EstimateTest::new("Bounds F", bounds.f, law);
         let mut t = EstimateTest::new("Bounds t", bounds.t, law);
         let mut f_x = EstimateTest::new(

@@ -200,16 +200,16 @@ impl ReducedRank {
             "rank",
             "eigenvalue",
             "trace",
-            "trace 5 %",
+            "5 %",
             "p",
             "maximum eigenvalue",
-            "maximum eigenvalue 5 %",
-            "p of maximum eigenvalue",
-            "trace, small sample",
-            "p of trace, small sample",
-            "maximum eigenvalue, small sample",
+            "5 % of it",
+            "p of it",
         ];
         let mut table = EstimateTable::new("rank_tests", "Rank tests: at most this rank", &columns);
+        let columns = ["rank", "trace", "p", "maximum eigenvalue", "p of it"];
+        let title = "Rank tests with n − pk for n (Reinsel and Ahn 1992)";
+        let mut corrected = EstimateTable::new("rank_tests_small_sample", title, &columns);
         let mut chosen = None;
         for test in &system.tests {
             let null = (draws > 0)
@@ -238,9 +238,17 @@ impl ReducedRank {
                 test.max_eigenvalue.into(),
                 of(&|n| n.max_eigenvalue.quantile(0.95)).into(),
                 p_max.into(),
+            ]);
+            corrected.rows.push(vec![
+                Cell::from(test.rank),
                 test.trace_small_sample.into(),
                 p_small.into(),
                 test.max_eigenvalue_small_sample.into(),
+                of(&|n| {
+                    n.max_eigenvalue
+                        .upper_tail(test.max_eigenvalue_small_sample)
+                })
+                .into(),
             ]);
             let Some(p) = p_judged else { continue };
             if chosen.is_none() && p >= 0.05 {
@@ -260,7 +268,7 @@ impl ReducedRank {
                     .judged(&format!("A rank of at most {}", test.rank), p),
             );
         }
-        draft.tables.push(table);
+        draft.tables.extend([table, corrected]);
         Ok(chosen.or(self.rank).unwrap_or(system.series))
     }
 

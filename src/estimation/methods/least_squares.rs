@@ -1,6 +1,7 @@
 //! Ordinary, weighted and restricted least squares.
 
 use super::Procedure;
+use crate::dist::f_sf;
 use crate::estimate::{
     CovarianceKind, EstimateError, Ols, Regressor, Restriction, covariance, criteria, restricted,
     test_linear, weighted,
@@ -9,7 +10,7 @@ use crate::estimation::covariance::Covariance;
 use crate::estimation::fault::option;
 use crate::estimation::judge;
 use crate::estimation::options::Options;
-use crate::estimation::report::{EstimateStatistic, EstimateTest, finite, small, statistic};
+use crate::estimation::report::{EstimateStatistic, EstimateTest, small, statistic};
 use crate::estimation::request::Id;
 use crate::estimation::rows::Rows;
 use crate::estimation::task::{Draft, Outcome, Task, standard_errors};
@@ -102,7 +103,7 @@ impl Procedure for LeastSquares {
                 .equations
                 .push(task.fitted("Dependent variable", &y.name, &fit, &v, 0, &words));
             draft.statistics = fit_statistics(&fit, r2, log_likelihood);
-            draft.tests.extend(all_slopes(&fit, &v));
+            draft.tests.extend(all_slopes(&fit, kind, &v));
         } else {
             self.under_restrictions(task, &fit, &mut draft)?;
         }
@@ -188,13 +189,8 @@ pub(super) fn judge_fit(task: &Task<'_>, fit: &Ols, lags: Option<usize>, draft: 
 pub(super) fn fit_statistics(fit: &Ols, r2: f64, log_likelihood: f64) -> Vec<EstimateStatistic> {
     let criteria = criteria(log_likelihood, fit.k, fit.n);
     let leverage = fit.leverages().into_iter().fold(0.0_f64, f64::max);
-    let base = f64::from(small(fit.n))
-        - fit
-            .regressors
-            .iter()
-            .any(constant)
-            .then_some(1.0)
-            .unwrap_or(0.0);
+    let with_constant = u8::from(fit.regressors.iter().any(constant));
+    let base = f64::from(small(fit.n)) - f64::from(with_constant);
     let adjusted = 1.0 - (1.0 - r2) * base / f64::from(small(fit.df));
     let k = "k counts the regressors and not the variance";
     let list = [
@@ -243,18 +239,25 @@ fn constant(regressor: &Regressor) -> bool {
         .all(|w| w[0].to_bits() == w[1].to_bits())
 }
 
-/// F of all coefficients but the constant.
-pub(super) fn all_slopes(fit: &Ols, covariance: &Matrix) -> Option<EstimateTest> {
+/// F of all coefficients but the constant, by a covariance.
+fn all_slopes(fit: &Ols, kind: CovarianceKind, covariance: &Matrix) -> Option<EstimateTest> {
     let slopes = fit.regressors.iter().filter(|r| !constant(r));
     let zero: Vec<Restriction> = slopes.map(|r| Restriction::zero(&r.name)).collect();
     if zero.is_empty() || zero.len() == fit.k {
         return None;
     }
-    let df = f64::from(small(fit.df));
-    let found = test_linear(&fit.names(), &fit.coefficients, covariance, df, &zero).ok()?;
-    let p = finite(found.f.p_value)?;
-    let test = EstimateTest::from(found.f).named("F of all slopes");
-    Some(test.judged("That all coefficients but the constant are zero", p))
+    let (q, df) = (f64::from(small(zero.len())), f64::from(small(fit.df)));
+    let null = "That all coefficients but the constant are zero";
+    let (statistic, p) = if kind == CLASSICAL {
+        // The same number, without the digits that an inverse costs.
+        let f = fit.r2 / (1.0 - fit.r2) * df / q;
+        (f, f_sf(f, q, df))
+    } else {
+        let found = test_linear(&fit.names(), &fit.coefficients, covariance, df, &zero).ok()?;
+        (found.f.statistic, found.f.p_value)
+    };
+    let law = format!("F({q}, {df})");
+    Some(EstimateTest::new("F of all slopes", statistic, &law).judged(null, p))
 }
 
 /// The kind of covariance that needs nothing from the data.

@@ -45,13 +45,23 @@ pub(super) enum Takes {
     Equations,
 }
 
+/// Which terms a method takes.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) enum Terms {
+    /// Constant, trend and dummies; a constant unless they are given.
+    All,
+    /// Dummies: constant and trend come by an option.
+    Dummies,
+    /// None: constant and trend come by an option.
+    None,
+}
+
 /// A method.
 pub(super) struct Method {
     pub(super) name: &'static str,
     pub(super) title: &'static str,
     pub(super) takes: Takes,
-    /// Whether constant and trend come by an option instead of `terms`.
-    pub(super) own_terms: bool,
+    pub(super) terms: Terms,
     pub(super) read: Read,
 }
 
@@ -77,7 +87,7 @@ const fn with_terms(name: &'static str, title: &'static str, read: Read) -> Meth
         name,
         title,
         takes: Takes::Maybe,
-        own_terms: false,
+        terms: Terms::All,
         read,
     }
 }
@@ -88,7 +98,18 @@ const fn with_option(name: &'static str, title: &'static str, takes: Takes, read
         name,
         title,
         takes,
-        own_terms: true,
+        terms: Terms::None,
+        read,
+    }
+}
+
+/// The same with dummies as unrestricted terms.
+const fn with_dummies(name: &'static str, title: &'static str, read: Read) -> Method {
+    Method {
+        name,
+        title,
+        takes: Takes::Regressors,
+        terms: Terms::Dummies,
         read,
     }
 }
@@ -110,7 +131,7 @@ pub(super) const METHODS: &[Method] = &[
         name: "seemingly_unrelated",
         title: "Seemingly unrelated regressions",
         takes: Takes::Equations,
-        own_terms: false,
+        terms: Terms::All,
         read: |o| boxed(SeeminglyUnrelated::read(o)),
     },
     with_option(
@@ -141,22 +162,15 @@ pub(super) const METHODS: &[Method] = &[
         Takes::Regressors,
         |o| boxed(EngleGranger::read(o)),
     ),
-    with_option(
-        "johansen",
-        "Johansen's rank tests",
-        Takes::Regressors,
-        |o| boxed(ReducedRank::read(o, false)),
-    ),
-    with_option(
-        "vecm",
-        "Vector error-correction model",
-        Takes::Regressors,
-        |o| boxed(ReducedRank::read(o, true)),
-    ),
-    with_option(
+    with_dummies("johansen", "Johansen's rank tests", |o| {
+        boxed(ReducedRank::read(o, false))
+    }),
+    with_dummies("vecm", "Vector error-correction model", |o| {
+        boxed(ReducedRank::read(o, true))
+    }),
+    with_dummies(
         "autoregressive_distributed_lag",
         "Autoregressive distributed lag",
-        Takes::Regressors,
         |o| boxed(DistributedLags::read(o)),
     ),
     with_option(
