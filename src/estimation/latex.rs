@@ -10,7 +10,7 @@ use crate::finding::Severity;
 #[must_use]
 pub fn render(report: &Report, header_lines: &[String]) -> String {
     let mut text = String::new();
-    for line in header_lines {
+    for line in header_lines.iter().chain(&report.description) {
         let _ = writeln!(text, "% {line}");
     }
     text.push_str("% Needs \\usepackage{booktabs}.\n");
@@ -178,6 +178,8 @@ fn escape(text: &str) -> String {
                 out.push('\\');
                 out.push(c);
             }
+            // After the end of a row a bracket would be an option.
+            '[' => out.push_str("{[}"),
             '\\' => out.push_str("\\textbackslash{}"),
             '~' => out.push_str("\\textasciitilde{}"),
             '^' => out.push_str("\\textasciicircum{}"),

@@ -235,9 +235,7 @@ impl Reading {
             self.reader.object(value, "", &known);
             return None;
         };
-        let Some(method) = self.method(map) else {
-            return None;
-        };
+        let method = self.method(map)?;
         known.extend(match method.takes {
             Takes::Equations => &["equations"][..],
             Takes::Series => &["dependent"],
@@ -407,16 +405,18 @@ impl Reading {
     pub(super) fn variable(&mut self, value: &Value, pointer: &str) -> Option<Id> {
         let known = ["series", "name", "values", "from", "transformation", "lag"];
         let empty = Map::new();
-        let map = match value {
-            Value::String(_) => &empty,
-            other => self.reader.object(other, pointer, &known)?,
+        let map = if value.is_string() {
+            &empty
+        } else {
+            self.reader.object(value, pointer, &known)?
         };
         let name: Option<Option<String>> = self.reader.field(map, pointer, "name");
         let lag: Option<Option<u16>> = self.reader.field(map, pointer, "lag");
         let transformation = self.transformation(map, pointer);
-        let source = match value {
-            Value::String(_) => self.reader.value(value, pointer).map(Source::Stored),
-            _ => self.source(map, pointer),
+        let source = if value.is_string() {
+            self.reader.value(value, pointer).map(Source::Stored)
+        } else {
+            self.source(map, pointer)
         };
         let (source, transformation, lag) = (source?, transformation?, lag?.unwrap_or(0));
         let name = name?;

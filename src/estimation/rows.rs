@@ -39,10 +39,10 @@ impl Rows {
         }
     }
 
-    /// The rows of a least-squares fit that begin at a position of the sample.
-    pub(super) fn of_fit(dependent: &str, fit: &Ols, first: usize) -> Self {
+    /// The rows of a least-squares fit of `y` that begin at a position of the sample.
+    pub(super) fn of_fit(dependent: &str, y: &[f64], fit: &Ols, first: usize) -> Self {
         Self::from(first)
-            .with("dependent", dependent, fit.dependent())
+            .with("dependent", dependent, y.to_vec())
             .with_all("regressor", &fit.regressors)
     }
 

@@ -16,7 +16,7 @@ pub(super) enum Term {
 
 impl Term {
     /// `constant`, `trend`, `seasonal`, `impulse:2009`, `step:1990-Q1`.
-    pub(super) fn parse(text: &str) -> Result<Self, Finding> {
+    pub(super) fn parse(text: &str) -> Result<Self, Box<Finding>> {
         let known = "constant, trend, seasonal, impulse:PERIOD or step:PERIOD";
         match text {
             "constant" => return Ok(Self::Constant),
@@ -31,14 +31,12 @@ impl Term {
         };
         let Some((make, period)) = dummy else {
             let message = format!("There is no term '{text}'");
-            return Err(Finding::error("unknown_term", message)
-                .found(text)
-                .expected(known));
+            let finding = Finding::error("unknown_term", message).found(text);
+            return Err(Box::new(finding.expected(known)));
         };
         let period: Period = period.parse().map_err(|e: crate::time::PeriodError| {
-            Finding::error("invalid_value", e.to_string())
-                .found(text)
-                .expected(e.expected)
+            let finding = Finding::error("invalid_value", e.to_string()).found(text);
+            Box::new(finding.expected(e.expected))
         })?;
         Ok(make(period))
     }

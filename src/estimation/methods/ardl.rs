@@ -1,7 +1,7 @@
 //! Autoregressive distributed lags: orders, error-correction form, long run, bounds tests, multipliers.
 
 use super::Procedure;
-use super::unit_roots::{LEVELS, check_draws, read_simulation};
+use super::unit_roots::{LEVELS, changes, check_draws, read_simulation};
 use crate::estimate::{
     Ardl, ArdlData, ArdlOrders, BoundsCase, BoundsDesign, InformationCriterion, LevelRelation,
     NullDistribution, SeriesError, select_orders,
@@ -179,7 +179,7 @@ impl Procedure for DistributedLags {
             .collect();
         draft.findings.extend(judge::twice_integrated(task, &ids));
         draft.tests.extend(tests);
-        draft.rows = Rows::of_fit(&dependent, fit, first);
+        draft.rows = Rows::of_fit(&dependent, &changes(&y.values[first - 1..]), fit, first);
         Ok(draft)
     }
 }

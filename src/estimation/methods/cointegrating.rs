@@ -143,7 +143,12 @@ impl Procedure for Dynamic {
             regression.k,
             &mut draft,
         );
-        draft.rows = Rows::of_fit(&y.name, regression, first);
+        draft.rows = Rows::of_fit(
+            &y.name,
+            &y.values[first..first + regression.n],
+            regression,
+            first,
+        );
         Ok(draft)
     }
 }

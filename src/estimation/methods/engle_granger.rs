@@ -91,7 +91,7 @@ impl Procedure for EngleGranger {
             .chain(equation.regressors.clone())
             .collect();
         draft.findings.extend(judge::twice_integrated(task, &ids));
-        draft.rows = Rows::of_fit(&y.name, fit, 0);
+        draft.rows = Rows::of_fit(&y.name, &y.values, fit, 0);
         Ok(draft)
     }
 }

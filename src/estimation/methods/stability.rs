@@ -102,7 +102,7 @@ impl Procedure for Stability {
         draft
             .findings
             .extend(judge::observations(task, fit.n, fit.k));
-        draft.rows = Rows::of_fit(&y.name, &fit, 0);
+        draft.rows = Rows::of_fit(&y.name, &y.values, &fit, 0);
         match self {
             Self::Residuals => residuals(task, &fit, &mut draft)?,
             Self::Cusum { recursive: true } => {

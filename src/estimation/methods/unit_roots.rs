@@ -56,7 +56,7 @@ pub(super) fn lags_words(asked: Lags, lags: usize, max: Option<usize>) -> String
     format!("{lags} lagged differences, chosen by {by}{among}")
 }
 
-/// Critical values of MacKinnon at three levels.
+/// Critical values of `MacKinnon` at three levels.
 pub(super) fn mackinnon(values: CriticalValues) -> [(f64, f64); 3] {
     [(0.01, values.one), (0.05, values.five), (0.10, values.ten)]
 }
@@ -76,25 +76,31 @@ pub(super) fn check_draws(draws: usize, n: usize) -> Outcome<()> {
     Ok(())
 }
 
-/// The regression behind a test, on the rows from `first`. Coefficients of levels and deterministic terms
+/// First differences, one fewer than the values.
+pub(super) fn changes(values: &[f64]) -> Vec<f64> {
+    values.windows(2).map(|w| w[1] - w[0]).collect()
+}
+
+/// The first difference of a series after so many lagged differences.
+fn change(y: &Regressor, lags: usize) -> Regressor {
+    Regressor::new(&format!("d.{}", y.name), changes(&y.values[lags..]))
+}
+
+/// The regression behind a test. Coefficients of levels and deterministic terms
 /// have no t distribution under a unit root: they come without p-values.
-fn behind(
-    task: &Task<'_>,
-    draft: &mut Draft,
-    fit: &Ols,
-    first: usize,
-    dependent: &str,
-) -> Outcome<()> {
+fn behind(task: &Task<'_>, draft: &mut Draft, fit: &Ols, dependent: &Regressor) -> Outcome<()> {
+    let Regressor { name, values } = dependent;
+    let first = task.n() - fit.n;
     let v = covariance(&[fit], super::least_squares::CLASSICAL).map_err(|e| task.refuse(e))?;
     let words = "classical; levels and deterministic terms have no t distribution here";
-    let mut equation = task.fitted("Test regression", dependent, fit, &v, first, words);
+    let mut equation = task.fitted("Test regression", name, fit, &v, first, words);
     for c in &mut equation.coefficients {
         if !c.name.starts_with("d.") {
             (c.p, c.low, c.high) = (None, None, None);
         }
     }
     draft.equations.push(equation);
-    draft.rows = Rows::of_fit(dependent, fit, first);
+    draft.rows = Rows::of_fit(name, values, fit, first);
     Ok(())
 }
 
@@ -178,13 +184,7 @@ impl Procedure for Adf {
         draft
             .findings
             .extend(judge::observations(task, fit.n, fit.k));
-        behind(
-            task,
-            &mut draft,
-            &fit,
-            found.lags + 1,
-            &format!("d.{}", y.name),
-        )?;
+        behind(task, &mut draft, &fit, &change(y, found.lags))?;
         Ok(draft)
     }
 }
@@ -265,7 +265,12 @@ impl Procedure for PhillipsPerron {
         draft
             .findings
             .extend(judge::observations(task, fit.n, fit.k));
-        behind(task, &mut draft, &fit, 1, &y.name)?;
+        behind(
+            task,
+            &mut draft,
+            &fit,
+            &Regressor::new(&y.name, y.values[1..].to_vec()),
+        )?;
         Ok(draft)
     }
 }
@@ -303,9 +308,10 @@ impl Procedure for Kpss {
             deterministic_words(self.deterministic),
             found.lags
         ));
-        let around = match self.deterministic {
-            Deterministic::Trend => "a trend",
-            _ => "its mean",
+        let around = if self.deterministic == Deterministic::Trend {
+            "a trend"
+        } else {
+            "its mean"
         };
         let null = format!("Stationarity of {} around {around}", y.name);
         let mut test = EstimateTest::new("KPSS", found.statistic, "KPSS 1992, table 1, upper tail")
@@ -333,7 +339,7 @@ impl Procedure for Kpss {
         draft
             .findings
             .extend(judge::observations(task, fit.n, fit.k));
-        draft.rows = Rows::of_fit(&y.name, &fit, 0);
+        draft.rows = Rows::of_fit(&y.name, &y.values, &fit, 0);
         Ok(draft)
     }
 }
@@ -399,7 +405,7 @@ impl Procedure for DfGls {
         draft
             .findings
             .extend(judge::observations(task, fit.n, fit.k));
-        behind(task, &mut draft, &fit, found.lags + 1, &format!("d.{name}"))?;
+        behind(task, &mut draft, &fit, &change(&detrended, found.lags))?;
         Ok(draft)
     }
 }
@@ -481,13 +487,7 @@ impl Procedure for ZivotAndrews {
         draft
             .findings
             .extend(judge::observations(task, fit.n, fit.k));
-        behind(
-            task,
-            &mut draft,
-            &fit,
-            found.lags + 1,
-            &format!("d.{}", y.name),
-        )?;
+        behind(task, &mut draft, &fit, &change(y, found.lags))?;
         Ok(draft)
     }
 }
@@ -502,7 +502,7 @@ impl ZivotAndrews {
     ) -> Result<Ols, crate::estimate::EstimateError> {
         let n = y.values.len();
         let rows = n - 1 - lags;
-        let change: Vec<f64> = y.values.windows(2).map(|w| w[1] - w[0]).collect();
+        let change = changes(&y.values);
         let since = |t: usize| f64::from(small((lags + 2 + t).saturating_sub(after)));
         let mut regressors = Deterministic::Trend.columns(rows);
         if self.kind != Break::Trend {
