@@ -11,6 +11,8 @@ mod contract;
 mod conventions;
 mod demo;
 mod ending;
+mod estimate_dynamics;
+mod estimate_faults;
 mod estimate_methods;
 mod estimates;
 mod held;
