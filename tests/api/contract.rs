@@ -200,13 +200,14 @@ async fn slow() -> TestApp {
 
 /// Estimates.
 async fn walk_estimates(app: &TestApp) {
-    let request = r#"{"method": "ordinary_least_squares", "dependent": "A.XAA.imports_real",
-        "regressors": ["A.XAA.gdp_real"]}"#;
     let image = [("Accept", "image/png")];
-    let made = app.post("/v1/estimates", request).await.expect(201);
+    let made = app
+        .post("/v1/estimates", sample::ESTIMATE)
+        .await
+        .expect(201);
     let path = made.header("location").unwrap();
     app.post("/v1/estimates", "{}").await.expect(422);
-    let body = Some(request.into());
+    let body = Some(sample::ESTIMATE.into());
     app.send(Method::POST, "/v1/estimates", &image, body)
         .await
         .expect(406);
