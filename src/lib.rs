@@ -16,6 +16,7 @@ pub mod estimate;
 
 pub mod constraint;
 
+pub mod estimation;
 pub mod intake;
 pub mod preparation;
 pub mod study;

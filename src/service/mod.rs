@@ -6,6 +6,7 @@
 mod body;
 pub mod currencies;
 pub mod documents;
+pub mod estimates;
 mod fault;
 mod groups;
 mod landing;

@@ -11,6 +11,7 @@ mod copy;
 pub mod currency;
 pub mod document;
 mod error;
+pub mod estimate;
 pub mod fragment;
 mod pool;
 pub mod search;
