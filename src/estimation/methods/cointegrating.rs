@@ -4,8 +4,8 @@ use super::engle_granger::beside;
 use super::unit_roots::{check_draws, read_simulation, thumb};
 use super::{Procedure, at_most};
 use crate::estimate::{
-    Deterministic, DolsCovariance, Fmols, Instability, ScoreDeterministic, SeriesError, dols,
-    fmols, hansen_1992, instability_null,
+    Deterministic, DolsCovariance, Fmols, Instability, SeriesError, dols, fmols, hansen_1992,
+    instability_null,
 };
 use crate::estimation::covariance::Covariance;
 use crate::estimation::judge;
@@ -267,10 +267,7 @@ impl Procedure for Hansen {
         let (draws, seed) = self.simulation;
         let n = found.residuals.len();
         check_draws(draws, n * 10)?;
-        let deterministic = match self.regression.deterministic {
-            Deterministic::Trend | Deterministic::QuadraticTrend => ScoreDeterministic::Trend,
-            Deterministic::None | Deterministic::Constant => ScoreDeterministic::Constant,
-        };
+        let deterministic = self.regression.deterministic;
         let integrated = task.equation().regressors.len();
         let draw = |r| instability_null(n, deterministic, integrated, seed, r);
         let null: Result<Vec<Instability>, _> = (0..draws as u64).map(draw).collect();

@@ -3,7 +3,7 @@
 use super::Procedure;
 use super::least_squares::CLASSICAL;
 use crate::estimate::{
-    ConfidenceSet, EstimateError, InstrumentedEquation, anderson_rubin, effective_f, two_stage,
+    EstimateError, InstrumentedEquation, Region, anderson_rubin, effective_f, two_stage,
 };
 use crate::estimation::covariance::Covariance;
 use crate::estimation::fault::option;
@@ -168,15 +168,15 @@ impl Procedure for TwoStage {
 }
 
 /// The values of a coefficient that Anderson and Rubin's test does not reject.
-fn set_table(name: &str, set: ConfidenceSet) -> EstimateTable {
+fn set_table(name: &str, set: Option<Region>) -> EstimateTable {
     let title =
         format!("Anderson–Rubin set of the coefficient of {name}, valid under weak instruments");
     let mut table = EstimateTable::new("anderson_rubin_set", &title, &["shape", "low", "high"]);
     let (shape, low, high): (&str, Option<f64>, Option<f64>) = match set {
-        ConfidenceSet::Empty => ("empty: the instruments are rejected", None, None),
-        ConfidenceSet::Between { low, high } => ("between", Some(low), Some(high)),
-        ConfidenceSet::Outside { low, high } => ("outside", Some(low), Some(high)),
-        ConfidenceSet::Line => ("every number", None, None),
+        None => ("empty: the instruments are rejected", None, None),
+        Some(Region::Interval { low, high }) => ("between", Some(low), Some(high)),
+        Some(Region::Complement { low, high }) => ("outside", Some(low), Some(high)),
+        Some(Region::WholeLine) => ("every number", None, None),
     };
     table
         .rows

@@ -8,8 +8,8 @@ use super::checks::{
 use super::{Dependence, Equation, Request, finite};
 use crate::constraint::Affine;
 use crate::estimate::{
-    ConfidenceSet, CovarianceKind, InstrumentedEquation, Ols, Regressor, anderson_rubin,
-    autoregressive, covariance, effective_f, two_stage,
+    CovarianceKind, InstrumentedEquation, Ols, Region, Regressor, anderson_rubin, autoregressive,
+    covariance, effective_f, two_stage,
 };
 use crate::finding::Finding;
 use crate::series::SeriesKey;
@@ -133,14 +133,14 @@ pub(super) fn two_stages<'a>(request: &Request<'a>) -> Estimated<'a> {
     Ok((equation, dependence))
 }
 
-fn confidence_set(name: &str, set: ConfidenceSet) -> EquationTest {
+fn confidence_set(name: &str, set: Option<Region>) -> EquationTest {
     let of = match set {
-        ConfidenceSet::Empty => "is empty: the instruments themselves are rejected".to_owned(),
-        ConfidenceSet::Between { low, high } => format!("is {low:.2} to {high:.2}"),
-        ConfidenceSet::Outside { low, high } => {
+        None => "is empty: the instruments themselves are rejected".to_owned(),
+        Some(Region::Interval { low, high }) => format!("is {low:.2} to {high:.2}"),
+        Some(Region::Complement { low, high }) => {
             format!("is all below {low:.2} and above {high:.2}")
         }
-        ConfidenceSet::Line => "is unbounded: the data say nothing".to_owned(),
+        Some(Region::WholeLine) => "is unbounded: the data say nothing".to_owned(),
     };
     EquationTest {
         group: TestGroup::Instruments,
