@@ -93,7 +93,8 @@ pub use restriction::{
 };
 pub use series_error::SeriesError;
 pub use simulation::{
-    NoStore, NullDistribution, Simulation, SimulationStore, in_parallel, replicate, simulate,
+    Machine, NoStore, NullDistribution, Simulation, SimulationStore, in_parallel, replicate,
+    simulate,
 };
 pub use system::{System, SystemEquation, seemingly_unrelated};
 pub use system_bootstrap::{Replicate, SystemBootstrap};

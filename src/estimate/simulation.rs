@@ -122,6 +122,24 @@ impl SimulationStore for NoStore {
     fn keep(&self, _: &str, _: &[NullDistribution]) {}
 }
 
+/// What the machine lends to whoever simulates; it changes no digit.
+#[derive(Clone, Copy)]
+pub struct Machine<'a> {
+    /// Threads.
+    pub threads: usize,
+    /// Where simulated distributions are kept.
+    pub store: &'a dyn SimulationStore,
+}
+
+impl<'a> Machine<'a> {
+    /// All threads of this machine, and a store.
+    #[must_use]
+    pub fn with(store: &'a dyn SimulationStore) -> Self {
+        let threads = std::thread::available_parallelism().map_or(1, std::num::NonZero::get);
+        Self { threads, store }
+    }
+}
+
 /// N statistics per replication, each as a distribution: from the store, or simulated and kept.
 ///
 /// `statistics` returns what one replication gives from its own draws; replications are dealt to

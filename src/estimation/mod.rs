@@ -28,8 +28,8 @@ pub use report::{
 };
 pub use request::Request;
 pub use rows::{RowColumn, Rows};
-pub use task::Machine;
 
+use crate::estimate::Machine;
 use crate::finding::Finding;
 use crate::series::{Series, SeriesKey};
 
@@ -45,7 +45,7 @@ pub const METHOD_VERSION: &str = "estimation/1";
 pub fn run(
     request: &Request,
     inputs: &BTreeMap<SeriesKey, Series>,
-    machine: &Machine<'_>,
+    machine: Machine<'_>,
 ) -> Result<(Report, Rows), Vec<Finding>> {
     let data = sample::gather(request, inputs)?;
     let task = task::Task::new(request, data, machine);

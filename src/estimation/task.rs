@@ -11,18 +11,10 @@ use super::rows::{Rows, shown};
 use super::sample::Data;
 use super::terms;
 use crate::dist::{normal_sf, normal_upper, t_two_sided, t_upper};
-use crate::estimate::{Ols, Regressor, Simulation, SimulationStore};
+use crate::estimate::{Machine, Ols, Regressor, Simulation, SimulationStore};
 use crate::finding::Finding;
 use crate::linalg::Matrix;
 use crate::time::Period;
-
-/// What the machine lends: threads, and a store of simulated distributions. Neither changes a digit.
-pub struct Machine<'a> {
-    /// Threads of a simulation.
-    pub threads: usize,
-    /// Where simulated null distributions are kept.
-    pub store: &'a dyn SimulationStore,
-}
 
 /// What a step of a method gives.
 pub(super) type Outcome<T> = Result<T, Box<Finding>>;
@@ -31,7 +23,7 @@ pub(super) type Outcome<T> = Result<T, Box<Finding>>;
 pub(super) struct Task<'a> {
     pub(super) request: &'a Request,
     pub(super) data: Data,
-    machine: &'a Machine<'a>,
+    machine: Machine<'a>,
 }
 
 /// What a method found; the rest of the report is the same for all.
@@ -51,7 +43,7 @@ const CAUTION: &str = "These figures are conditional on a model and on the data 
     not a forecast and not advice; official statistics and licensed advice prevail.";
 
 impl<'a> Task<'a> {
-    pub(super) fn new(request: &'a Request, data: Data, machine: &'a Machine<'a>) -> Self {
+    pub(super) fn new(request: &'a Request, data: Data, machine: Machine<'a>) -> Self {
         Self {
             request,
             data,

@@ -1,19 +1,16 @@
 //! Estimations without a study: made, read, forgotten after a time.
 
-use std::collections::BTreeMap;
-
 use chrono::{DateTime, Days, Utc};
 use serde::Serialize;
 use utoipa::ToSchema;
 
 use super::documents::{cursor, refused, timestamp};
-use super::preparations::pin;
-use super::series::Moment;
+use super::series::{Moment, pinned};
 use super::views::{Page, Pin};
-use super::{Fault, blocking, preview};
+use super::{Fault, Simulations, blocking};
 use crate::clock;
-use crate::estimate::NoStore;
-use crate::estimation::{self, METHOD_VERSION, Machine, Report, Request, Rows};
+use crate::estimate::Machine;
+use crate::estimation::{self, METHOD_VERSION, Report, Request, Rows};
 use crate::store::estimate::{EstimateRow, NewEstimate};
 use crate::store::{self, Database};
 
@@ -67,23 +64,10 @@ pub async fn create(
     days: u32,
 ) -> Result<EstimateView, Fault> {
     let request = Request::parse(body).map_err(|errors| refused("bad_estimate", errors))?;
-    let mut pins = Vec::new();
-    let mut inputs = BTreeMap::new();
-    let mut connection = database.connection().await?;
-    let as_of = moment.resolve(&mut connection).await?;
-    for key in request.inputs() {
-        if let Some(vintage) = store::vintage::read(&mut connection, &key, as_of).await? {
-            pins.push(pin(&key, &vintage));
-            inputs.insert(key, preview::series(vintage));
-        }
-    }
-    drop(connection);
+    let (pins, inputs) = pinned(database, request.inputs(), moment).await?;
     let method = request.method();
-    let outcome = blocking(move || {
-        let threads = std::thread::available_parallelism().map_or(1, usize::from);
-        let store = &NoStore;
-        estimation::run(&request, &inputs, &Machine { threads, store })
-    });
+    let simulations = Simulations::new(database);
+    let outcome = blocking(move || estimation::run(&request, &inputs, Machine::with(&simulations)));
     let (report, rows) = outcome
         .await?
         .map_err(|errors| Fault::invalid("estimate_failed", errors))?;

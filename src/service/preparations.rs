@@ -8,7 +8,7 @@ use utoipa::ToSchema;
 use super::documents::{self, DocumentKind, timestamp};
 use super::lineage::OriginView;
 use super::retry::retried;
-use super::series::Moment;
+use super::series::{Moment, pin};
 use super::views::Pin;
 use super::{Fault, blocking, preview};
 use crate::finding::Finding;
@@ -134,15 +134,6 @@ async fn read_inputs(
         }
     }
     Ok(found)
-}
-
-pub(super) fn pin(key: &SeriesKey, vintage: &ReadVintage) -> Pin {
-    Pin {
-        series: key.to_string(),
-        segment: vintage.segment,
-        released: vintage.released.to_string(),
-        revision: vintage.revision,
-    }
 }
 
 /// Runs a version of a preparation, the newest unless one is named, and stores its outputs.

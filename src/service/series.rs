@@ -7,10 +7,10 @@ use chrono::NaiveDate;
 use super::Fault;
 use super::documents::{bad_cursor, cursor, timestamp};
 use super::preview::series;
-use super::views::{ObservationView, ObservationsView, Page, SeriesView, VintageView};
+use super::views::{ObservationView, ObservationsView, Page, Pin, SeriesView, VintageView};
 use crate::finding::Finding;
 use crate::series::algebra::{Over, growth};
-use crate::series::{GrowthKind, SeriesKey, Status};
+use crate::series::{GrowthKind, Series, SeriesKey, Status};
 use crate::store::search::{ListedSeries, Search};
 use crate::store::vintage::{AsOf, ListedVintage, ReadVintage};
 use crate::store::{self, Connection, Database};
@@ -67,6 +67,34 @@ impl Moment {
     pub(super) fn is_now(&self) -> bool {
         self.as_of.is_none() && self.recorded_as_of.is_none()
     }
+}
+
+/// Names the vintage of a series that was read.
+pub(super) fn pin(key: &SeriesKey, vintage: &ReadVintage) -> Pin {
+    Pin {
+        series: key.to_string(),
+        segment: vintage.segment,
+        released: vintage.released.to_string(),
+        revision: vintage.revision,
+    }
+}
+
+/// The series among these that exist, as of one state of the store, and what names it.
+pub(super) async fn pinned(
+    database: &Database,
+    keys: Vec<SeriesKey>,
+    moment: &Moment,
+) -> Result<(Vec<Pin>, BTreeMap<SeriesKey, Series>), Fault> {
+    let mut connection = database.connection().await?;
+    let as_of = moment.pinned(&mut connection).await?;
+    let (mut pins, mut inputs) = (Vec::new(), BTreeMap::new());
+    for key in keys {
+        if let Some(vintage) = store::vintage::read(&mut connection, &key, as_of).await? {
+            pins.push(pin(&key, &vintage));
+            inputs.insert(key, series(vintage));
+        }
+    }
+    Ok((pins, inputs))
 }
 
 fn bad_moment(parameter: &str, text: &str) -> Fault {

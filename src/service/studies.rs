@@ -1,15 +1,13 @@
 //! Studies: put, run, read; a run pins what it read and gives the same digits again.
 
-use std::collections::BTreeMap;
-
 use serde::Serialize;
 use utoipa::ToSchema;
 
 use super::documents::{self, DocumentKind, timestamp};
-use super::preparations::pin;
-use super::series::Moment;
+use super::series::{Moment, pinned};
 use super::views::Pin;
-use super::{Fault, blocking, preview};
+use super::{Fault, Simulations, blocking};
+use crate::estimate::Machine;
 use crate::store::document::RunRow;
 use crate::store::{self, Database};
 use crate::study::{self, Document, Outcome};
@@ -63,20 +61,12 @@ pub async fn run(
 ) -> Result<StudyRun, Fault> {
     let row = documents::row(database, KIND, name, version).await?;
     let document = parse(&row.body)?;
-    let mut pins = Vec::new();
-    let mut inputs = BTreeMap::new();
-    let mut connection = database.connection().await?;
-    let as_of = moment.pinned(&mut connection).await?;
-    for key in document.inputs() {
-        if let Some(vintage) = store::vintage::read(&mut connection, &key, as_of).await? {
-            pins.push(pin(&key, &vintage));
-            inputs.insert(key, preview::series(vintage));
-        }
-    }
-    drop(connection);
-    let outcome = blocking(move || study::run(&document, &inputs))
-        .await?
-        .map_err(|errors| Fault::invalid("study_failed", errors))?;
+    let (pins, inputs) = pinned(database, document.inputs(), moment).await?;
+    let simulations = Simulations::new(database);
+    let outcome =
+        blocking(move || study::run_with(&document, &inputs, Machine::with(&simulations)))
+            .await?
+            .map_err(|errors| Fault::invalid("study_failed", errors))?;
     let mut transaction = database.begin().await?;
     let id = store::document::insert_run(
         &mut transaction,

@@ -3,7 +3,7 @@
 use std::collections::BTreeMap;
 
 use super::document::{Document, Estimator};
-use super::equation::{Both, Equation, Machine, Request, estimate, finite, small};
+use super::equation::{Both, Equation, Request, estimate, finite, small};
 use super::integration::orders_of_integration;
 use super::outcome::{
     Estimate, EstimatorResult, FormNumbers, FormResult, IntervalSettings, MeanGrowth, NearIdentity,
@@ -13,7 +13,7 @@ use super::reliability::{Side, errors, judge_equation, judge_price_elasticities,
 use super::sample::{Logs, gather};
 use crate::constraint::{Affine, Economy, Form, Ratio};
 use crate::dist::{t_two_sided, t_upper};
-use crate::estimate::{NoStore, SimulationStore};
+use crate::estimate::{Machine, NoStore};
 use crate::finding::Finding;
 use crate::series::{Series, SeriesKey};
 
@@ -37,19 +37,17 @@ pub fn run(
     document: &Document,
     inputs: &BTreeMap<SeriesKey, Series>,
 ) -> Result<Outcome, Vec<Finding>> {
-    let threads = std::thread::available_parallelism().map_or(1, std::num::NonZero::get);
-    run_with(document, inputs, threads, &NoStore)
+    run_with(document, inputs, Machine::with(&NoStore))
 }
 
-/// The same with threads for simulated critical values and a store that keeps them; neither changes a digit.
+/// The same with what the machine lends.
 ///
 /// # Errors
 /// As [`run`].
 pub fn run_with(
     document: &Document,
     inputs: &BTreeMap<SeriesKey, Series>,
-    threads: usize,
-    store: &dyn SimulationStore,
+    machine: Machine<'_>,
 ) -> Result<Outcome, Vec<Finding>> {
     let logs = gather(document, inputs)?;
     let per_year = document.frequency.periods_per_year().map_or(1.0, f64::from);
@@ -59,7 +57,7 @@ pub fn run_with(
         logs: &logs,
         scale,
         actual: logs.mean_growth(document.actual.as_ref().unwrap_or(&document.activity)),
-        machine: Machine { threads, store },
+        machine,
     };
     let (mut estimators, mut faults) = (Vec::new(), Vec::new());
     for estimator in &document.estimators {

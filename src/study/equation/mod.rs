@@ -14,7 +14,7 @@ mod request;
 mod system;
 
 use dependence::{Dependence, cross};
-pub(super) use request::{Machine, Request};
+pub(super) use request::Request;
 
 use super::document::{CrossCovariance, Demand, Estimator};
 use super::outcome::EquationResult;

@@ -9,19 +9,10 @@ use super::checks::nearly_constant;
 use super::{differences, explain, finite, small};
 use crate::constraint::Affine;
 use crate::dist::t_two_sided;
-use crate::estimate::{
-    EstimateError, Ols, Regressor, Simulation, SimulationStore, rule_of_thumb_lags,
-};
+use crate::estimate::{EstimateError, Machine, Ols, Regressor, Simulation, rule_of_thumb_lags};
 use crate::finding::Finding;
 use crate::linalg::Matrix;
 use crate::series::SeriesKey;
-
-/// Threads for simulations and where their results are kept; neither changes a digit.
-#[derive(Clone, Copy)]
-pub(in super::super) struct Machine<'a> {
-    pub(in super::super) threads: usize,
-    pub(in super::super) store: &'a dyn SimulationStore,
-}
 
 /// One demand equation to estimate.
 #[derive(Clone, Copy)]

@@ -3,7 +3,7 @@
 use realterms::estimate::{
     ArdlData, ArdlOrders, AuxiliaryTest, Blocks, BoundsCase, BoundsDesign, Break,
     CointegratingScores, Deterministic, Instability, JohansenCase, KpssLags, LagCriterion, Lags,
-    NoStore, NullDistribution, Ols, Regressor, ScoreDeterministic, Simulation, TestResult,
+    NoStore, NullDistribution, Ols, Regressor, Deterministic, Simulation, TestResult,
     UnknownBreak, adf, arch, bootstrap_bounds, breusch_godfrey, breusch_pagan,
     breusch_pagan_studentised, chow, cusum_of_squares, cusum_ols, cusum_recursive, df_gls,
     durbin_watson, engle_granger, hansen_1992, in_parallel, instability_null, jarque_bera,
@@ -76,7 +76,7 @@ impl Nulls {
         let bounds = design.simulate(simulation, &NoStore);
         let bounds = bounds.expect("the orders suit the design");
         let upper = |null: &[NullDistribution; 2]| null[1].clone();
-        let terms = ScoreDeterministic::Constant;
+        let terms = Deterministic::Constant;
         let hansen = in_parallel(NULL_DRAWS, threads, |r| {
             instability_null(n, terms, 1, 5, r as u64).ok()
         });
