@@ -22,7 +22,7 @@ use anyhow::Context;
 use estimation::{coverage, marks, size, speed};
 
 /// Runs a cell of the coverage table: all cells within ten minutes on two cores.
-const COVERAGE_RUNS: usize = 300;
+const COVERAGE_RUNS: usize = 400;
 /// Runs a row of the table of sizes.
 const SIZE_RUNS: usize = 2000;
 
