@@ -3,12 +3,12 @@
 use realterms::estimate::{
     ArdlData, ArdlOrders, AuxiliaryTest, Blocks, BoundsCase, BoundsDesign, Break,
     CointegratingScores, Deterministic, Instability, JohansenCase, KpssLags, LagCriterion, Lags,
-    NoStore, NullDistribution, Ols, Regressor, Deterministic, Simulation, TestResult,
-    UnknownBreak, adf, arch, bootstrap_bounds, breusch_godfrey, breusch_pagan,
-    breusch_pagan_studentised, chow, cusum_of_squares, cusum_ols, cusum_recursive, df_gls,
-    durbin_watson, engle_granger, hansen_1992, in_parallel, instability_null, jarque_bera,
-    johansen, kpss, ljung_box, phillips_perron, replicate, reset, simulate, simulate_unit_root,
-    unknown_break, white, zivot_andrews,
+    NoStore, NullDistribution, Ols, Regressor, Simulation, TestResult, UnknownBreak, adf, arch,
+    bootstrap_bounds, breusch_godfrey, breusch_pagan, breusch_pagan_studentised, chow,
+    cusum_of_squares, cusum_ols, cusum_recursive, df_gls, durbin_watson, engle_granger,
+    hansen_1992, in_parallel, instability_null, jarque_bera, johansen, kpss, ljung_box,
+    phillips_perron, replicate, reset, simulate, simulate_unit_root, unknown_break, white,
+    zivot_andrews,
 };
 use realterms::random::Draws;
 
