@@ -141,6 +141,16 @@ pub struct Settings {
     #[arg(default_value_t = 30)]
     pub refused_days: u32,
 
+    /// Days that estimates are kept with their result and rows
+    #[arg(
+        long,
+        global = true,
+        env = "REALTERMS_ESTIMATE_RETENTION_DAYS",
+        value_name = "DAYS"
+    )]
+    #[arg(default_value_t = 30)]
+    pub estimate_retention_days: u32,
+
     /// What to log: a level, or directives for parts of the program [default: info,sqlx=warn; error for the demo]
     #[arg(long, global = true, env = "REALTERMS_LOG", value_name = "FILTER")]
     #[arg(value_parser = parse_filter)]
@@ -201,6 +211,7 @@ impl Settings {
                 intake: intake::Limits::default(),
             },
             refused_days: self.refused_days,
+            estimate_days: self.estimate_retention_days,
         }
     }
 
@@ -342,5 +353,6 @@ mod tests {
         assert_eq!(settings.upload_memory, Bytes(256 << 20));
         assert_eq!(settings.body_patience, 30);
         assert_eq!(settings.refused_days, 30);
+        assert_eq!(settings.estimate_retention_days, 30);
     }
 }

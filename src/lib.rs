@@ -11,10 +11,12 @@ pub mod series;
 pub mod time;
 
 pub mod dist;
+pub mod document;
 pub mod estimate;
 
 pub mod constraint;
 
+pub mod estimation;
 pub mod intake;
 pub mod preparation;
 pub mod study;

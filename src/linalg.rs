@@ -7,8 +7,10 @@ use nalgebra::{DMatrix, DVector, RowDVector};
 
 pub mod decompose;
 mod projector;
+mod thin;
 
 pub use projector::{Projector, product};
+pub use thin::ThinFit;
 
 /// A dense matrix of doubles.
 #[derive(Clone, Debug, PartialEq)]

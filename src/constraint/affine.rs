@@ -6,8 +6,11 @@ use std::ops::{Add, Mul, Neg, Sub};
 
 use crate::linalg::Matrix;
 
-/// A number that is affine in the stacked coefficients β of one or more equations: its value at the
-/// estimates and its gradient. Variances follow from the joint covariance of β.
+/// A number that depends on the stacked coefficients β of one or more equations: its value at the
+/// estimates and its gradient.
+///
+/// Variances follow from the joint covariance of β; sums and multiples are exact, products and quotients hold to
+/// first order.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub struct Affine {
     /// Value at the estimates.
@@ -24,6 +27,33 @@ impl Affine {
             value,
             gradient: BTreeMap::from([(place, 1.0)]),
         }
+    }
+
+    /// The same number where the coefficients stand `places` further down the stack.
+    #[must_use]
+    pub fn shifted(&self, places: usize) -> Self {
+        let moved = self.gradient.iter().map(|(i, slope)| (i + places, *slope));
+        Self {
+            value: self.value,
+            gradient: moved.collect(),
+        }
+    }
+
+    /// `a b`, gradient `b da + a db`.
+    #[must_use]
+    pub fn times(&self, other: &Self) -> Self {
+        let mut product = self.clone() * other.value + other.clone() * self.value;
+        product.value = self.value * other.value;
+        product
+    }
+
+    /// `a / b`, gradient `(da − (a/b) db)/b`.
+    #[must_use]
+    pub fn over(&self, other: &Self) -> Self {
+        let ratio = self.value / other.value;
+        let mut quotient = (self.clone() - other.clone() * ratio) * other.value.recip();
+        quotient.value = ratio;
+        quotient
     }
 
     /// Whether no coefficient enters.

@@ -83,6 +83,18 @@ impl Ratio {
     pub fn value(&self) -> f64 {
         self.numerator.value / self.denominator.value
     }
+
+    /// The same ratio with numerator and denominator multiplied by a factor other than zero.
+    ///
+    /// Fieller's set depends on how a ratio is written: multiplied by the speeds of adjustment that its
+    /// elasticities were divided by, it is free of that division (the product form).
+    #[must_use]
+    pub fn times(&self, factor: &Affine) -> Self {
+        Self {
+            numerator: self.numerator.times(factor),
+            denominator: self.denominator.times(factor),
+        }
+    }
 }
 
 /// The home growth at which receipts and payments grow alike, both in nominal terms and home

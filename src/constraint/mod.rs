@@ -18,4 +18,6 @@ pub use forms::{
     debt_service,
 };
 pub use identity::{ConstraintError, Item, Ratio, balance};
-pub use interval::{IntervalMethod, Region};
+pub use interval::IntervalMethod;
+
+pub use crate::estimate::Region;

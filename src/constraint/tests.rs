@@ -372,3 +372,65 @@ fn fieller_reports_each_shape() {
     assert!(low < 0.0 && high > 0.0 && high < 10.0);
     assert_eq!(shape(0.5, 0.5), Region::WholeLine);
 }
+
+/// A ratio multiplied by the speeds of adjustment that its long-run elasticities were divided by is the product form
+/// of error-correction coefficients: numerator, denominator and their covariance.
+#[test]
+fn undivided_ratios_are_the_product_form() {
+    use crate::estimate::{ProductCoefficients, ProductForm, ProductGrowth};
+    let c = ProductCoefficients {
+        phi_m: -0.4,
+        b_y: 0.7,
+        b_rm: 0.2,
+        phi_x: -0.25,
+        c_z: 0.5,
+        c_rx: -0.15,
+    };
+    let place = |i: usize| {
+        let values = [c.phi_m, c.b_y, c.b_rm, c.phi_x, c.c_z, c.c_rx];
+        Affine::coefficient(i, values[i])
+    };
+    let growth = ProductGrowth {
+        terms_of_trade: 0.01,
+        rm: -0.02,
+        rx: 0.015,
+        z: 0.035,
+        x: 0.05,
+    };
+    let (m, x) = (-place(0), -place(3));
+    let economy = Economy {
+        exports: growth.x,
+        foreign_income: growth.z,
+        terms_of_trade: Some(growth.terms_of_trade),
+        import_relative_price: Some(growth.rm),
+        export_relative_price: Some(growth.rx),
+        import_income_elasticity: place(1).over(&m),
+        import_price_elasticity: place(2).over(&m),
+        export_income_elasticity: place(4).over(&x),
+        export_price_elasticity: -place(5).over(&x),
+        ..Economy::default()
+    };
+    // Positive definite, with covariance everywhere.
+    let v = Matrix::from_fn(6, 6, |i, j| {
+        let distance = f64::from(u32::try_from(i.abs_diff(j)).unwrap());
+        0.01 * (1.0 + f64::from(u32::try_from(i + j).unwrap())) * 0.4_f64.powf(distance)
+    });
+    for (form, product) in [
+        (Form::WeakForm, ProductForm::Weak),
+        (Form::WeakFormWithPrices, ProductForm::WeakWithPrices),
+        (Form::StrongForm, ProductForm::Strong),
+        (Form::WithRelativePrices, ProductForm::WithRelativePrices),
+    ] {
+        let mut ratio = form.solve(&economy, false).unwrap().times(&m);
+        if form.uses_export_demand() {
+            ratio = ratio.times(&x);
+        }
+        let wanted = c.ratio(product, &growth, &v);
+        let (n, d) = (&ratio.numerator, &ratio.denominator);
+        assert_relative_eq!(n.value, wanted.numerator, max_relative = 1e-12);
+        assert_relative_eq!(d.value, wanted.denominator, max_relative = 1e-12);
+        assert_relative_eq!(n.variance(&v), wanted.v_nn, max_relative = 1e-10);
+        assert_relative_eq!(n.covariance(d, &v), wanted.v_nd, max_relative = 1e-10);
+        assert_relative_eq!(d.variance(&v), wanted.v_dd, max_relative = 1e-10);
+    }
+}

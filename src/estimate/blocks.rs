@@ -13,14 +13,46 @@ pub enum Blocks {
     /// Blocks of geometric length with this mean, on the circle (Politis & Romano 1994, Journal of the
     /// American Statistical Association 89).
     Stationary(f64),
+    /// Every date once in its place, times a normal factor of mean 0 and variance 1 whose correlation at k
+    /// dates is `1 − k/length` (the dependent wild bootstrap with the Bartlett kernel; Shao 2010, Journal of the
+    /// American Statistical Association 105(489)). It keeps heteroskedasticity and gaps where they are.
+    DependentWild(usize),
+}
+
+/// What a resampled date takes from the sample.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Drawn {
+    /// The date, from 0.
+    pub date: usize,
+    /// What its shock is multiplied by.
+    pub factor: f64,
 }
 
 impl Blocks {
-    /// n dates among 0 to n − 1.
+    /// What n dates take from the n of the sample.
     #[must_use]
-    pub fn dates(self, n: usize, draws: &mut Draws) -> Vec<usize> {
+    pub fn draw(self, n: usize, draws: &mut Draws) -> Vec<Drawn> {
+        if let Self::DependentWild(length) = self {
+            // A moving sum of independent normals has the Bartlett weights as its autocorrelations.
+            let length = length.clamp(1, n.max(1));
+            let normals: Vec<f64> = (0..n + length - 1).map(|_| draws.normal()).collect();
+            let scale = as_f64(length).sqrt();
+            let factor = |date: usize| normals[date..date + length].iter().sum::<f64>() / scale;
+            let drawn = |date| Drawn {
+                date,
+                factor: factor(date),
+            };
+            return (0..n).map(drawn).collect();
+        }
+        let dates = self.dates(n, draws).into_iter();
+        dates.map(|date| Drawn { date, factor: 1.0 }).collect()
+    }
+
+    /// n dates among 0 to n − 1.
+    fn dates(self, n: usize, draws: &mut Draws) -> Vec<usize> {
         let mut dates = Vec::with_capacity(n);
         match self {
+            Self::DependentWild(_) => dates.extend(0..n),
             Self::Moving(length) => {
                 let length = length.clamp(1, n.max(1));
                 while dates.len() < n {
@@ -142,6 +174,28 @@ mod tests {
                 .for_each(|d| seen[*d] += 1);
         }
         assert!(seen.iter().all(|c| c.abs_diff(2000) < 180), "{seen:?}");
+    }
+
+    /// Variance 1, correlation 1 − k/5 at k dates, within four standard errors over 40,000 independent draws.
+    #[test]
+    fn wild_factors_have_the_bartlett_correlations() {
+        let rows: Vec<Vec<Drawn>> = (0..40_000)
+            .map(|r| Blocks::DependentWild(5).draw(9, &mut Draws::new(2, r)))
+            .collect();
+        for lag in 0..9 {
+            let product = |row: &Vec<Drawn>| row[8].factor * row[8 - lag].factor;
+            let found = rows.iter().map(product).sum::<f64>() / 40_000.0;
+            let wanted = (1.0 - as_f64(lag) / 5.0).max(0.0);
+            let error = ((1.0 + wanted * wanted) / 40_000.0).sqrt();
+            assert!((found - wanted).abs() < 4.0 * error, "{lag}: {found}");
+        }
+        assert!(rows[0].iter().enumerate().all(|(t, d)| d.date == t));
+        let moving = Blocks::Moving(3).draw(9, &mut Draws::new(2, 0));
+        assert!(
+            moving
+                .iter()
+                .all(|d| d.factor.to_bits() == 1.0_f64.to_bits())
+        );
     }
 
     /// AR(1): Σ|k|ρ^|k| / Σρ^|k| = 2ρ/((1−ρ)²) · (1−ρ)/(1+ρ) = 2ρ/(1−ρ²).

@@ -119,8 +119,15 @@ impl BoundsDesign {
         result
     }
 
-    /// Overall F, t of the lagged dependent variable, F of the lagged regressors.
-    fn statistics(&self, y: &[f64], x: &[Vec<f64>], skip: usize, terms: &[Vec<f64>]) -> [f64; 3] {
+    /// Overall F, t of the lagged dependent variable, F of the lagged regressors, on series of
+    /// `skip + observations` values; `terms` are the deterministic ones, then any fixed ones.
+    pub(super) fn statistics(
+        &self,
+        y: &[f64],
+        x: &[Vec<f64>],
+        skip: usize,
+        terms: &[Vec<f64>],
+    ) -> [f64; 3] {
         let rows = self.observations;
         let change = |v: &[f64], lag: usize| -> Vec<f64> {
             let from = skip - lag;

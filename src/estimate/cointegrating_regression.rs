@@ -4,7 +4,8 @@ use super::long_run::{long_run_covariance, long_run_variance};
 use super::ols::as_f64;
 use super::series_error::{check, differences, regress};
 use super::{
-    CovarianceKind, Deterministic, Ols, Regressor, SeriesError, covariance, rule_of_thumb_lags,
+    CointegratingScores, CovarianceKind, Deterministic, Ols, Regressor, SeriesError, covariance,
+    rule_of_thumb_lags,
 };
 use crate::linalg::Matrix;
 use crate::linalg::decompose::inverse;
@@ -134,6 +135,9 @@ pub struct Fmols {
     pub residuals: Vec<f64>,
     /// Lags of the Bartlett kernel.
     pub kernel_lags: usize,
+    /// Regressors and scores `z_t (y⁺_t − z_t'θ̂) − (0, Δ⁺)'`, which sum to zero: for
+    /// [`super::hansen_1992()`].
+    pub scores: CointegratingScores,
 }
 
 /// Fully modified least squares of `y_t = d_t'δ + x_t'β + u_{1t}` with `Δx_t` (x cleared of the deterministic
@@ -222,7 +226,21 @@ pub fn fmols(
             y.values[t] - fitted.map(|(r, c)| r.values[t - 1] * c).sum::<f64>()
         })
         .collect();
+    let scores = fit.regressors.iter().enumerate().map(|(i, r)| {
+        let error = |t: usize| {
+            let fitted = fit.regressors.iter().zip(&coefficients);
+            modified[t] - fitted.map(|(r, c)| r.values[t] * c).sum::<f64>()
+        };
+        let shift = i.checked_sub(at).map_or(0.0, |j| bias[j]);
+        (0..fit.n).map(|t| r.values[t] * error(t) - shift).collect()
+    });
+    let scores = CointegratingScores {
+        scores: scores.collect(),
+        regressors: fit.regressors.clone(),
+        omega: conditional_variance,
+    };
     Ok(Fmols {
+        scores,
         names: fit.regressors.iter().map(|r| r.name.clone()).collect(),
         coefficients,
         covariance: Matrix::from_fn(fit.k, fit.k, |i, j| {

@@ -9,6 +9,8 @@
 mod ardl;
 mod autoregressive;
 mod blocks;
+mod bootstrap_equation;
+mod bootstrap_interval;
 mod bounds_null;
 mod breaks;
 mod cointegrating_regression;
@@ -26,6 +28,7 @@ mod long_run;
 mod ols;
 mod outcome;
 mod product_form;
+mod ratio;
 mod recursive;
 mod restriction;
 mod series_error;
@@ -48,16 +51,20 @@ mod systems_tests;
 mod test_data;
 
 pub use ardl::{
-    Ardl, ArdlData, ArdlOrders, BoundsCase, BoundsStatistics, Candidate, InformationCriterion,
-    LevelRelation, LongRunCoefficient, Multipliers, Selection, select_orders,
+    Ardl, ArdlData, ArdlOrders, BootstrapBounds, BootstrapBoundsP, BoundsCase, BoundsStatistics,
+    Candidate, InformationCriterion, LevelRelation, LongRunCoefficient, Multipliers, QuickArdl,
+    Selection, bootstrap_bounds, select_orders,
 };
 pub use autoregressive::{Autoregressive, FirstObservation, autoregressive};
-pub use blocks::{BlockLength, Blocks, automatic_block_length};
+pub use blocks::{BlockLength, Blocks, Drawn, automatic_block_length};
+pub use bootstrap_equation::BootstrapEquation;
+pub use bootstrap_interval::{BcaCorrection, RatioBootstrap, delete_one_block};
 pub use bounds_null::{BoundsDesign, BoundsNull, simulate_unit_root};
 pub use breaks::{UnknownBreak, chow, unknown_break};
 pub use cointegrating_regression::{Dols, DolsCovariance, Fmols, dols, fmols};
 pub use cointegration::{
-    EngleGranger, Johansen, JohansenCase, LikelihoodRatio, RankTest, Vecm, engle_granger, johansen,
+    EngleGranger, Johansen, JohansenCase, JohansenRows, LikelihoodRatio, RankNull, RankTest,
+    RelationErrors, Vecm, engle_granger, johansen, simulate_rank,
 };
 pub use covariance::{CovarianceKind, Hc, covariance};
 pub use criteria::{Criteria, criteria};
@@ -76,6 +83,7 @@ pub use long_run::{LongRunCovariance, automatic_lags, long_run_covariance, long_
 pub use ols::{Ols, Regressor};
 pub use outcome::{Distribution, TestResult};
 pub use product_form::{ProductCoefficients, ProductForm, ProductGrowth, ProductRatio};
+pub use ratio::{EstimatedRatio, Region};
 pub use recursive::{
     Cusum, RecursiveResiduals, Window, cusum_of_squares, cusum_ols, cusum_recursive, recursive,
     recursive_residuals, rolling,
@@ -84,11 +92,13 @@ pub use restriction::{
     LinearTest, Restricted, Restriction, likelihood_ratio, restricted, test_linear,
 };
 pub use series_error::SeriesError;
-pub use simulation::{NoStore, NullDistribution, Simulation, SimulationStore, replicate, simulate};
+pub use simulation::{
+    NoStore, NullDistribution, Simulation, SimulationStore, in_parallel, replicate, simulate,
+};
 pub use system::{System, SystemEquation, seemingly_unrelated};
 pub use system_bootstrap::{Replicate, SystemBootstrap};
 pub use unit_root::*;
-pub use weak_instruments::{ConfidenceSet, EffectiveF, anderson_rubin, effective_f};
+pub use weak_instruments::{EffectiveF, anderson_rubin, effective_f};
 pub use weighted::{Weighted, weighted};
 
 /// Why an equation cannot be estimated.

@@ -1,8 +1,9 @@
 //! Constrained growth as a ratio of products of error-correction coefficients, without division by the
 //! speeds of adjustment.
 
-use super::Ardl;
-use crate::linalg::Matrix;
+use super::ols::as_f64;
+use super::{Ardl, EstimatedRatio, QuickArdl};
+use crate::linalg::{Matrix, product};
 
 /// Coefficients of the error-correction forms of import and export demand.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -72,6 +73,51 @@ pub struct ProductRatio {
     pub undivided_denominator: f64,
 }
 
+impl ProductRatio {
+    /// The ratio of two refitted equations whose first two regressors are income and relative price, on one sample.
+    ///
+    /// Joint covariance `σ_ij (X_i'X_i)⁻¹ X_i'X_j (X_j'X_j)⁻¹`, `σ_ij = e_i'e_j/√((n − k_i)(n − k_j))`, as
+    /// [`super::covariance()`] gives it for independent errors.
+    #[must_use]
+    pub fn of_equations(
+        imports: &QuickArdl,
+        exports: &QuickArdl,
+        form: ProductForm,
+        growth: &ProductGrowth,
+    ) -> Self {
+        let coefficients = ProductCoefficients {
+            phi_m: imports.adjustment(),
+            b_y: imports.level(0),
+            b_rm: imports.level(1),
+            phi_x: exports.adjustment(),
+            c_z: exports.level(0),
+            c_rx: exports.level(1),
+        };
+        let influences = [imports.influences(2), exports.influences(2)].concat();
+        let fits = [&imports.fit, &exports.fit];
+        let sigma = |i: usize, j: usize| {
+            let df = as_f64(fits[i].df()) * as_f64(fits[j].df());
+            product(&fits[i].residuals, &fits[j].residuals) / df.sqrt()
+        };
+        let v = Matrix::from_fn(6, 6, |i, j| {
+            sigma(i / 3, j / 3) * product(&influences[i], &influences[j])
+        });
+        coefficients.ratio(form, growth, &v)
+    }
+
+    /// The ratio for which [`EstimatedRatio`] has intervals.
+    #[must_use]
+    pub fn estimated(&self) -> EstimatedRatio {
+        EstimatedRatio {
+            numerator: self.numerator,
+            denominator: self.denominator,
+            v_nn: self.v_nn,
+            v_nd: self.v_nd,
+            v_dd: self.v_dd,
+        }
+    }
+}
+
 impl ProductCoefficients {
     /// From two equations, by the names of the regressors; `None` where a name or an equation lacks one.
     ///
@@ -105,7 +151,7 @@ impl ProductCoefficients {
     /// Multiplied by `−φ_m` (forms without an export equation) or `φ_m φ_x` (others): weak `−φ_m x̄`,
     /// `b_y`; strong `−φ_m c_z z̄`, `−φ_x b_y`; with prices `φ_m φ_x tt + φ_x b_rm rm − φ_m (c_z z̄ + c_rx rx)`, `−φ_x b_y`; inflow
     /// likewise with `θ` before the export terms, `−φ_x b_y − (1 − θ) φ_m φ_x`. Growth rates are held fixed.
-    /// An interval by the theorem of Fieller follows from N, D and their covariance.
+    /// Intervals: [`ProductRatio::estimated`].
     #[must_use]
     pub fn ratio(&self, form: ProductForm, growth: &ProductGrowth, v: &Matrix) -> ProductRatio {
         let Self {
@@ -175,6 +221,8 @@ impl ProductCoefficients {
 mod tests {
     use approx::assert_relative_eq;
 
+    use super::super::test_data::penn;
+    use super::super::{ArdlData, ArdlOrders, BoundsCase, CovarianceKind, covariance};
     use super::*;
 
     const C: ProductCoefficients = ProductCoefficients {
@@ -233,6 +281,42 @@ mod tests {
             C.ratio(one, &G, &unit()),
             C.ratio(ProductForm::WithRelativePrices, &G, &unit())
         );
+    }
+
+    /// Refitted equations give what the full ones do, joint covariance included.
+    #[test]
+    fn refitted_equations_give_the_same_ratio() {
+        let (m, x) = (penn("BRA", "ln_m"), penn("BRA", "ln_x"));
+        let imports = ["ln_y", "ln_rpm"].map(|s| penn("BRA", s));
+        let exports = ["ln_z", "ln_rpx"].map(|s| penn("BRA", s));
+        let [data_m, data_x] =
+            [(&m, &imports), (&x, &exports)].map(|(y, x)| ArdlData { y, x, fixed: &[] });
+        let orders = [vec![1, 0], vec![1, 1]].map(|q| ArdlOrders { p: 1, q });
+        let slow = [(&data_m, 0), (&data_x, 1)]
+            .map(|(data, i)| Ardl::fit(data, orders[i].clone(), BoundsCase::III).unwrap());
+        let quick = [(&data_m, 0), (&data_x, 1)]
+            .map(|(data, i)| QuickArdl::fit(data, &orders[i], BoundsCase::III, 1).unwrap());
+        let coefficients = ProductCoefficients::from_equations(
+            &slow[0], "ln_y", "ln_rpm", &slow[1], "ln_z", "ln_rpx",
+        )
+        .unwrap();
+        let all = covariance(&[&slow[0].ecm, &slow[1].ecm], CovarianceKind::Classical).unwrap();
+        let k = slow[0].ecm.k;
+        let places = [1, 2, 3, k + 1, k + 2, k + 3];
+        let v = Matrix::from_fn(6, 6, |i, j| all.at(places[i], places[j]));
+        for form in FORMS {
+            let found = ProductRatio::of_equations(&quick[0], &quick[1], form, &G).estimated();
+            let wanted = coefficients.ratio(form, &G, &v).estimated();
+            for (found, wanted) in [
+                (found.numerator, wanted.numerator),
+                (found.denominator, wanted.denominator),
+                (found.v_nn, wanted.v_nn),
+                (found.v_nd, wanted.v_nd),
+                (found.v_dd, wanted.v_dd),
+            ] {
+                assert_relative_eq!(found, wanted, max_relative = 1e-8);
+            }
+        }
     }
 
     /// Gradients against central differences.

@@ -99,6 +99,9 @@ impl NullDistribution {
     }
 }
 
+/// Part of every key: to be raised when a change of this program changes simulated digits.
+const METHOD: u32 = 1;
+
 /// Where simulated distributions are kept between calls. The settings are the whole key.
 pub trait SimulationStore {
     /// What was kept under these settings.
@@ -130,7 +133,7 @@ pub fn simulate<const N: usize>(
     statistics: impl Fn(&mut Draws) -> [f64; N] + Sync,
 ) -> [NullDistribution; N] {
     let key = format!(
-        "{settings};draws={};seed={}",
+        "{settings};draws={};seed={};method={METHOD}",
         simulation.draws, simulation.seed
     );
     if let Some(kept) = store.load(&key)
@@ -147,25 +150,37 @@ pub fn simulate<const N: usize>(
 
 /// One result a replication, in the order of replications.
 pub fn replicate<T: Send>(simulation: Simulation, one: impl Fn(&mut Draws) -> T + Sync) -> Vec<T> {
-    let threads = simulation.threads.clamp(1, simulation.draws.max(1));
-    let block = simulation.draws.div_ceil(threads);
-    let range = |thread: usize| {
-        let from = (thread * block).min(simulation.draws);
-        from..(from + block).min(simulation.draws)
-    };
-    let work = |range: std::ops::Range<usize>| -> Vec<T> {
-        range
-            .map(|r| one(&mut Draws::new(simulation.seed, r as u64)))
-            .collect()
+    let Simulation {
+        draws,
+        seed,
+        threads,
+    } = simulation;
+    in_parallel(draws, threads, |r| one(&mut Draws::new(seed, r as u64)))
+}
+
+/// `one(0)`, `one(1)`, … in this order, computed by so many threads.
+///
+/// For a batch of tests or of equations of many areas, and for the replications of one. Each thread takes
+/// one stretch; the threads change no digit.
+pub fn in_parallel<T: Send>(
+    count: usize,
+    threads: usize,
+    one: impl Fn(usize) -> T + Sync,
+) -> Vec<T> {
+    let threads = threads.clamp(1, count.max(1));
+    let stretch = count.div_ceil(threads);
+    let work = |thread: usize| -> Vec<T> {
+        let from = (thread * stretch).min(count);
+        (from..(from + stretch).min(count)).map(&one).collect()
     };
     std::thread::scope(|scope| {
         let others: Vec<_> = (1..threads)
             .map(|thread| {
-                let (work, range) = (&work, range(thread));
-                scope.spawn(move || work(range))
+                let work = &work;
+                scope.spawn(move || work(thread))
             })
             .collect();
-        let mut all = work(range(0));
+        let mut all = work(0);
         for other in others {
             all.extend(
                 other

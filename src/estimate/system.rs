@@ -131,6 +131,10 @@ fn generalised(
     sigma: &Matrix,
 ) -> Result<Step, EstimateError> {
     let n = equations[0].y.len();
+    // Rounding can give a singular matrix a factor; the scaled inverse tells.
+    if sigma.inverse_positive_definite().is_none() {
+        return Err(singular(equations));
+    }
     let root = sigma.cholesky().ok_or_else(|| singular(equations))?;
     // Column j of the inverse of the root: how equation j enters each whitened equation.
     let unit = |j: usize| {

@@ -1,7 +1,7 @@
 //! Bootstrap of demand equations together with the series that drive them.
 
 use super::blocks::Blocks;
-use super::ols::as_f64;
+use super::bootstrap_equation::{BootstrapEquation, centred};
 use super::series_error::{check, differences, regress};
 use super::{Ardl, ArdlData, Ols, Regressor, SeriesError};
 use crate::random::Draws;
@@ -11,30 +11,22 @@ use crate::random::Draws;
 /// A replicate draws dates once and takes residuals of all equations and innovations of all drivers from
 /// those dates, so that what moved together stays together: `Δd*_t = ĉ + Σ Â_i Δd*_{t−i} + û_{τ(t)}`, cumulated from the
 /// first observations of the sample; then every `y*` by its own equation in levels with `ê_{τ(t)}` (both
-/// centred). Levels that are I(1) are never resampled themselves.
+/// centred, both times the factor of the date). Levels that are I(1) are never resampled themselves.
 ///
 /// After Li & Maddala 1997, Journal of Econometrics 80(2), with blocks of dates.
 #[derive(Clone, Debug)]
 pub struct SystemBootstrap<'a> {
-    equations: Vec<Equation<'a>>,
+    equations: Vec<BootstrapEquation<'a>>,
+    /// Position of each equation's regressors among the drivers.
+    places: Vec<Vec<usize>>,
     drivers: &'a [Regressor],
-    /// One equation a driver; empty where drivers are held fixed.
-    var: Vec<Ols>,
+    /// Per driver: constant, then drivers at lag 1, 2, …; empty where drivers are held fixed.
+    var: Vec<Vec<f64>>,
     var_lags: usize,
     /// Innovations and residuals on the common dates, drivers first.
     shocks: Vec<Vec<f64>>,
     /// First observation that is drawn.
     start: usize,
-}
-
-#[derive(Clone, Debug)]
-struct Equation<'a> {
-    fit: &'a Ardl,
-    data: ArdlData<'a>,
-    /// Position of each regressor among the drivers.
-    places: Vec<usize>,
-    /// Deterministic and fixed terms times their coefficients, over all observations.
-    exogenous: Vec<f64>,
 }
 
 /// One replicate.
@@ -47,6 +39,20 @@ pub struct Replicate {
 }
 
 impl<'a> SystemBootstrap<'a> {
+    /// Prepares a bootstrap of ARDL equations: see [`SystemBootstrap::of`].
+    ///
+    /// # Errors
+    /// As there.
+    pub fn new(
+        equations: &[(&'a Ardl, ArdlData<'a>)],
+        drivers: &'a [Regressor],
+        var_lags: Option<usize>,
+    ) -> Result<Self, SeriesError> {
+        let prepared = equations.iter();
+        let prepared = prepared.map(|(fit, data)| BootstrapEquation::ardl(fit, data));
+        Self::of(prepared.collect(), drivers, var_lags)
+    }
+
     /// Prepares a bootstrap. Regressors of the equations are found among the drivers by name.
     ///
     /// `var_lags` of changes in the drivers' vector autoregression (with constant), or none to hold the
@@ -55,59 +61,51 @@ impl<'a> SystemBootstrap<'a> {
     /// # Errors
     /// [`SeriesError`] where a regressor is not among the drivers, lengths differ, or the vector
     /// autoregression cannot be estimated.
-    pub fn new(
-        equations: &[(&'a Ardl, ArdlData<'a>)],
+    pub fn of(
+        equations: Vec<BootstrapEquation<'a>>,
         drivers: &'a [Regressor],
         var_lags: Option<usize>,
     ) -> Result<Self, SeriesError> {
-        let dependent = equations.iter().map(|(_, data)| data.y);
+        let dependent = equations.iter().map(|e| e.y);
         let all: Vec<&Regressor> = dependent.chain(drivers).collect();
         check(&all)?;
         let n = all.first().map_or(0, |s| s.values.len());
-        let prepared = equations
-            .iter()
-            .map(|(fit, data)| Equation::new(fit, data, drivers, n))
-            .collect::<Result<Vec<_>, _>>()?;
-        let mut var = Vec::new();
-        if let Some(lags) = var_lags {
-            let changes: Vec<Vec<f64>> = drivers.iter().map(|d| differences(&d.values)).collect();
-            let rows = (n - 1).saturating_sub(lags);
-            for (driver, change) in drivers.iter().zip(&changes) {
-                if rows < drivers.len() * lags + 2 {
-                    return Err(SeriesError::TooShort {
-                        series: driver.name.clone(),
-                        observations: n,
-                        needed: drivers.len() * lags + 3 + lags,
-                    });
-                }
-                let mut regressors = vec![Regressor::constant(rows)];
-                for lag in 1..=lags {
-                    for (other, change) in drivers.iter().zip(&changes) {
-                        let values = change[lags - lag..lags - lag + rows].to_vec();
-                        regressors
-                            .push(Regressor::new(&format!("d.{}.L{lag}", other.name), values));
-                    }
-                }
-                var.push(regress(&driver.name, &change[lags..], regressors)?);
-            }
-        }
-        let lags = var_lags.unwrap_or(0);
-        let longest = equations.iter().map(|(fit, _)| fit.orders.longest());
-        let start = longest.fold(lags + 1, usize::max);
-        let fits = var.iter().chain(equations.iter().map(|(fit, _)| &fit.ecm));
-        let shocks = fits
-            .map(|fit| {
-                let last = &fit.residuals[fit.residuals.len() - (n - start)..];
-                let mean = last.iter().sum::<f64>() / as_f64(last.len());
-                last.iter().map(|e| e - mean).collect()
+        let place = |x: &Regressor| {
+            let place = drivers.iter().position(|d| d.name == x.name);
+            place.ok_or_else(|| SeriesError::Option {
+                method: "bootstrap",
+                fault: format!("{} is not among the drivers", x.name),
             })
-            .collect();
+        };
+        let places = equations
+            .iter()
+            .map(|e| e.x.iter().map(place).collect())
+            .collect::<Result<_, _>>()?;
+        let lags = var_lags.unwrap_or(0);
+        let longest = equations.iter().map(BootstrapEquation::longest);
+        let start = longest.fold(lags + 1, usize::max);
+        if n < start + 2 {
+            return Err(SeriesError::TooShort {
+                series: all[0].name.clone(),
+                observations: n,
+                needed: start + 2,
+            });
+        }
+        let var = match var_lags {
+            Some(lags) => change_equations(drivers, &[], lags)?,
+            None => Vec::new(),
+        };
+        let innovations = var
+            .iter()
+            .map(|fit| centred(fit.residuals[start - 1 - lags..].to_vec()));
+        let residuals = equations.iter().map(|e| e.shocks(start));
         Ok(Self {
-            equations: prepared,
+            shocks: innovations.chain(residuals).collect(),
+            var: var.into_iter().map(|fit| fit.coefficients).collect(),
+            equations,
+            places,
             drivers,
-            var,
             var_lags: lags,
-            shocks,
             start,
         })
     }
@@ -123,107 +121,93 @@ impl<'a> SystemBootstrap<'a> {
     #[must_use]
     pub fn replicate(&self, blocks: Blocks, draws: &mut Draws) -> Replicate {
         let n = self.drivers.first().map_or(0, |d| d.values.len());
-        let dates = blocks.dates(n - self.start, draws);
+        let drawn = blocks.draw(n - self.start, draws);
         let mut drivers: Vec<Vec<f64>> = self.drivers.iter().map(|d| d.values.clone()).collect();
         if !self.var.is_empty() {
-            for t in self.start..n {
-                let changes: Vec<f64> = self
-                    .var
-                    .iter()
-                    .zip(&self.shocks)
-                    .map(|(fit, shocks)| {
-                        let lagged = (1..=self.var_lags).flat_map(|lag| {
-                            drivers.iter().map(move |d| d[t - lag] - d[t - lag - 1])
-                        });
-                        let explained = fit.coefficients[1..].iter().zip(lagged);
-                        fit.coefficients[0]
-                            + explained.map(|(c, v)| c * v).sum::<f64>()
-                            + shocks[dates[t - self.start]]
-                    })
-                    .collect();
-                for (driver, change) in drivers.iter_mut().zip(changes) {
+            let mut changes = vec![0.0; drivers.len()];
+            for (t, drawn) in (self.start..n).zip(&drawn) {
+                let equations = self.var.iter().zip(&self.shocks);
+                for (change, (equation, shocks)) in changes.iter_mut().zip(equations) {
+                    *change = shocks[drawn.date] * drawn.factor
+                        + next_change(equation, t, self.var_lags, &drivers);
+                }
+                for (driver, change) in drivers.iter_mut().zip(&changes) {
                     driver[t] = driver[t - 1] + change;
                 }
             }
         }
         let residuals = &self.shocks[self.var.len()..];
-        let dependent = self
-            .equations
-            .iter()
-            .zip(residuals)
-            .map(|(equation, shocks)| {
-                let mut y = equation.data.y.values.clone();
-                for t in self.start..n {
-                    y[t] = equation.next(t, &y, &drivers) + shocks[dates[t - self.start]];
-                }
-                Regressor::new(&equation.data.y.name, y)
-            })
-            .collect();
+        let equations = self.equations.iter().zip(&self.places).zip(residuals);
+        let dependent = equations.map(|((equation, places), shocks)| {
+            let mut y = equation.y.values.clone();
+            for (t, drawn) in (self.start..n).zip(&drawn) {
+                y[t] = equation.next(t, &y, |j| &drivers[places[j]])
+                    + shocks[drawn.date] * drawn.factor;
+            }
+            Regressor::new(&equation.y.name, y)
+        });
         Replicate {
-            dependent,
+            dependent: dependent.collect(),
             drivers: self
                 .drivers
                 .iter()
                 .zip(drivers)
-                .map(|(d, values)| Regressor::new(&d.name, values))
+                .map(|(d, values)| Regressor {
+                    name: d.name.clone(),
+                    values,
+                })
                 .collect(),
         }
     }
 }
 
-impl<'a> Equation<'a> {
-    fn new(
-        fit: &'a Ardl,
-        data: &ArdlData<'a>,
-        drivers: &[Regressor],
-        n: usize,
-    ) -> Result<Self, SeriesError> {
-        let places = data
-            .x
-            .iter()
-            .map(|x| {
-                let place = drivers.iter().position(|d| d.name == x.name);
-                place.ok_or_else(|| SeriesError::Option {
-                    method: "bootstrap",
-                    fault: format!("{} is not among the drivers", x.name),
-                })
-            })
-            .collect::<Result<_, _>>()?;
-        let terms = fit.case.deterministic().columns(n);
-        let terms = terms.iter().chain(data.fixed);
-        let mut exogenous = vec![0.0; n];
-        for (term, c) in terms.zip(&fit.ecm.coefficients) {
-            for (sum, value) in exogenous.iter_mut().zip(&term.values) {
-                *sum += c * value;
+/// Least squares of the change of every series on a constant and on the changes at lags 1 to `lags` of all of
+/// them and of `others`, lag by lag.
+pub(super) fn change_equations(
+    series: &[Regressor],
+    others: &[&Regressor],
+    lags: usize,
+) -> Result<Vec<Ols>, SeriesError> {
+    let n = series.first().map_or(0, |s| s.values.len());
+    let all: Vec<&Regressor> = series.iter().chain(others.iter().copied()).collect();
+    let changes: Vec<Vec<f64>> = all.iter().map(|s| differences(&s.values)).collect();
+    let rows = n.saturating_sub(lags + 1);
+    let equation = |(series, change): (&Regressor, &Vec<f64>)| {
+        if rows < all.len() * lags + 2 {
+            return Err(SeriesError::TooShort {
+                series: series.name.clone(),
+                observations: n,
+                needed: all.len() * lags + 3 + lags,
+            });
+        }
+        let mut regressors = vec![Regressor::constant(rows)];
+        for lag in 1..=lags {
+            for (other, change) in all.iter().zip(&changes) {
+                let values = change[lags - lag..lags - lag + rows].to_vec();
+                regressors.push(Regressor::new(&format!("d.{}.L{lag}", other.name), values));
             }
         }
-        Ok(Self {
-            fit,
-            data: data.clone(),
-            places,
-            exogenous,
-        })
-    }
+        regress(&series.name, &change[lags..], regressors)
+    };
+    series.iter().zip(&changes).map(equation).collect()
+}
 
-    /// What the equation in levels gives for observation t without its residual.
-    fn next(&self, t: usize, y: &[f64], drivers: &[Vec<f64>]) -> f64 {
-        let (own, mut rest) = self.fit.levels.split_at(self.fit.orders.p);
-        let mut value = self.exogenous[t];
-        value += (1..).zip(own).map(|(lag, c)| c * y[t - lag]).sum::<f64>();
-        for (&place, &q) in self.places.iter().zip(&self.fit.orders.q) {
-            let (mine, others) = rest.split_at(q + 1);
-            let x = &drivers[place];
-            value += (0..).zip(mine).map(|(lag, c)| c * x[t - lag]).sum::<f64>();
-            rest = others;
+/// What an equation of [`change_equations`] gives for observation t of the levels, without its innovation.
+pub(super) fn next_change(equation: &[f64], t: usize, lags: usize, levels: &[Vec<f64>]) -> f64 {
+    let mut value = equation[0];
+    for lag in 1..=lags {
+        let coefficients = &equation[1 + (lag - 1) * levels.len()..];
+        for (coefficient, level) in coefficients.iter().zip(levels) {
+            value += coefficient * (level[t - lag] - level[t - lag - 1]);
         }
-        value
     }
+    value
 }
 
 #[cfg(test)]
 mod tests {
     use super::super::test_data::{close, penn};
-    use super::super::{ArdlOrders, BoundsCase, Simulation, replicate};
+    use super::super::{ArdlOrders, BoundsCase, QuickArdl, Simulation, replicate};
     use super::*;
 
     struct Demand {
@@ -298,38 +282,39 @@ mod tests {
         let [m, x] = fits(&data);
         let equations = [(&m, data[0].clone()), (&x, data[1].clone())];
         let system = SystemBootstrap::new(&equations, &demand.drivers, Some(1)).unwrap();
-        let run = |threads: usize| {
+        let run = |blocks: Blocks, threads: usize| {
             let simulation = Simulation {
                 draws: 200,
                 seed: 5,
                 threads,
             };
             replicate(simulation, |draws| {
-                let r = system.replicate(Blocks::Stationary(3.0), draws);
+                let r = system.replicate(blocks, draws);
                 let data = ArdlData {
                     y: &r.dependent[0],
                     x: &r.drivers[..2],
                     fixed: &[],
                 };
-                Ardl::fit(&data, m.orders.clone(), m.case)
-                    .unwrap()
-                    .adjustment
+                let fit = QuickArdl::fit(&data, &m.orders, m.case, m.orders.longest());
+                fit.unwrap().adjustment()
             })
         };
-        let found = run(2);
-        assert_eq!(found, run(1));
-        let mean = found.iter().sum::<f64>() / 200.0;
-        let spread = (found.iter().map(|f| (f - mean).powi(2)).sum::<f64>() / 199.0).sqrt();
-        // Adjustment is biased away from zero in small samples, by less than two standard errors.
-        assert!(
-            (mean - m.adjustment).abs() < 2.0 * m.adjustment_error,
-            "{mean} {}",
-            m.adjustment
-        );
-        assert!(
-            spread > 0.5 * m.adjustment_error && spread < 3.0 * m.adjustment_error,
-            "{spread}"
-        );
+        for blocks in [Blocks::Stationary(3.0), Blocks::DependentWild(3)] {
+            let found = run(blocks, 2);
+            assert_eq!(found, run(blocks, 1));
+            let mean = found.iter().sum::<f64>() / 200.0;
+            let spread = (found.iter().map(|f| (f - mean).powi(2)).sum::<f64>() / 199.0).sqrt();
+            // Adjustment is biased away from zero in small samples, by less than two standard errors.
+            assert!(
+                (mean - m.adjustment).abs() < 2.0 * m.adjustment_error,
+                "{blocks:?}: {mean} {}",
+                m.adjustment
+            );
+            assert!(
+                spread > 0.5 * m.adjustment_error && spread < 3.0 * m.adjustment_error,
+                "{blocks:?}: {spread}"
+            );
+        }
         assert_eq!(system.shocks().len(), 6);
         let missing = SystemBootstrap::new(&equations, &demand.drivers[1..], Some(1)).unwrap_err();
         assert!(

@@ -2,7 +2,9 @@
 
 use super::instrumental::join;
 use super::ols::{as_f64, dot};
-use super::{CovarianceKind, EstimateError, InstrumentedEquation, Ols, Regressor, covariance};
+use super::{
+    CovarianceKind, EstimateError, InstrumentedEquation, Ols, Region, Regressor, covariance,
+};
 use crate::dist::{f_upper, noncentral_chi2_upper};
 use crate::linalg::Matrix;
 
@@ -74,41 +76,19 @@ pub fn effective_f(
     })
 }
 
-/// Values of a coefficient that a test does not reject.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub enum ConfidenceSet {
-    /// None: the overidentifying restrictions themselves are rejected.
-    Empty,
-    /// All between two values.
-    Between {
-        /// The smaller.
-        low: f64,
-        /// The larger.
-        high: f64,
-    },
-    /// All but those between two values.
-    Outside {
-        /// The smaller.
-        low: f64,
-        /// The larger.
-        high: f64,
-    },
-    /// All: the data say nothing.
-    Line,
-}
-
 /// The set of `b` that Anderson & Rubin's (1949) test does not reject at `level` (0.95).
 ///
 /// It holds whatever the strength of the instruments: F(instruments, n − exogenous − instruments) of the instruments in the
 /// regression of `y − b Y` on all exogenous variables, homoskedastic errors. Solved as a quadratic
-/// inequality, so it may be unbounded or empty.
+/// inequality, so it may be unbounded; none where it is empty: the overidentifying restrictions themselves
+/// are rejected.
 ///
 /// # Errors
 /// [`EstimateError::Setting`] unless there is one endogenous regressor; else as [`Ols::fit`].
 pub fn anderson_rubin(
     equation: &InstrumentedEquation,
     level: f64,
-) -> Result<ConfidenceSet, EstimateError> {
+) -> Result<Option<Region>, EstimateError> {
     let endogenous = the_one(equation)?;
     let z = join(&equation.exogenous, &equation.instruments);
     let pair = |regressors: &[Regressor]| -> Result<[Vec<f64>; 2], EstimateError> {
@@ -124,28 +104,8 @@ pub fn anderson_rubin(
     let ratio = 1.0 + f_upper(1.0 - level, count, df) * count / df;
     let form =
         |i: usize, j: usize| dot(&partial[i], &partial[j]) - ratio * dot(&error[i], &error[j]);
-    Ok(quadratic_set(form(1, 1), form(0, 1), form(0, 0)))
-}
-
-/// The b with `a b² − 2 h b + c ≤ 0`.
-fn quadratic_set(a: f64, h: f64, c: f64) -> ConfidenceSet {
-    let discriminant = h * h - a * c;
-    if discriminant < 0.0 || a == 0.0 {
-        return if a > 0.0 {
-            ConfidenceSet::Empty
-        } else {
-            ConfidenceSet::Line
-        };
-    }
-    // Neither root cancels.
-    let far = h + discriminant.sqrt().copysign(h);
-    let (one, other) = (far / a, c / far);
-    let (low, high) = (one.min(other), one.max(other));
-    if a > 0.0 {
-        ConfidenceSet::Between { low, high }
-    } else {
-        ConfidenceSet::Outside { low, high }
-    }
+    let (a, h, c) = (form(1, 1), form(0, 1), form(0, 0));
+    Ok(Region::where_not_positive(a, h, c))
 }
 
 fn the_one(equation: &InstrumentedEquation) -> Result<&Regressor, EstimateError> {
@@ -161,32 +121,5 @@ fn the_one(equation: &InstrumentedEquation) -> Result<&Regressor, EstimateError>
             setting: "the number of endogenous regressors of a weak-instrument test",
             allowed: "one",
         }),
-    }
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn a_quadratic_inequality_has_four_shapes() {
-        let between = quadratic_set(1.0, 2.0, 3.0);
-        assert_eq!(
-            between,
-            ConfidenceSet::Between {
-                low: 1.0,
-                high: 3.0
-            }
-        );
-        let outside = quadratic_set(-1.0, -2.0, -3.0);
-        assert_eq!(
-            outside,
-            ConfidenceSet::Outside {
-                low: 1.0,
-                high: 3.0
-            }
-        );
-        assert_eq!(quadratic_set(1.0, 0.0, 1.0), ConfidenceSet::Empty);
-        assert_eq!(quadratic_set(-1.0, 0.0, -1.0), ConfidenceSet::Line);
     }
 }

@@ -22,7 +22,7 @@ use super::turn::OneTurnMore;
 use crate::service::Database;
 use crate::service::receiving::Limits;
 use crate::service::tokens::{self, Admission, Gate, Principal, Role};
-use crate::service::uploads;
+use crate::service::{estimates, uploads};
 
 const REQUEST_ID: HeaderName = HeaderName::from_static("x-request-id");
 
@@ -33,7 +33,7 @@ const GRACE_SECONDS: u64 = 20;
 /// it before they look at the answer.
 const UNREAD: Duration = Duration::from_secs(30);
 
-/// How often old refused uploads are looked for.
+/// How often old refused uploads and old estimates are looked for.
 const SWEEP: Duration = Duration::from_secs(3600);
 
 /// How to serve.
@@ -47,6 +47,8 @@ pub struct Options {
     pub limits: Limits,
     /// Days that refused uploads are kept.
     pub refused_days: u32,
+    /// Days that estimates are kept.
+    pub estimate_days: u32,
 }
 
 /// A bound server, not yet running.
@@ -96,6 +98,7 @@ impl Application {
             database,
             gate: Gate::new(loopback),
             limits: options.limits,
+            estimate_days: options.estimate_days,
         });
         let for_workers = Arc::clone(&shared);
         let server = HttpServer::new(move || {
@@ -148,6 +151,11 @@ impl Application {
                     Err(fault) => {
                         tracing::warn!(error = %fault, "old refused uploads stay for now")
                     }
+                }
+                match estimates::erase_old(&shared.database, shared.estimate_days).await {
+                    Ok(0) => {}
+                    Ok(count) => tracing::info!(estimates = count, "erased old estimates"),
+                    Err(fault) => tracing::warn!(error = %fault, "old estimates stay for now"),
                 }
             }
         });

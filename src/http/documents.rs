@@ -346,7 +346,7 @@ fn study_run(call: &Call, status: StatusCode, media: Media, run: &StudyRun) -> A
             let text = studies::text(run, call.flag("with_unreliable"));
             Ok(call.body(status, media, None, text.into_bytes()))
         }
-        Media::Json | Media::Csv => call.json(status, run),
+        Media::Json | Media::Csv | Media::Latex => call.json(status, run),
     }
 }
 

@@ -8,6 +8,7 @@ mod application;
 mod call;
 mod currencies;
 mod documents;
+mod estimates;
 mod health;
 pub mod openapi;
 mod problem;
@@ -30,6 +31,7 @@ fn routes() -> Vec<route::Route> {
     routes.extend(uploads::routes());
     routes.extend(series::routes());
     routes.extend(documents::routes());
+    routes.extend(estimates::routes());
     routes.extend(currencies::routes());
     routes
 }

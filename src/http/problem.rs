@@ -156,8 +156,7 @@ impl From<Fault> for Problem {
             Fault::Busy => Self::new(
                 StatusCode::SERVICE_UNAVAILABLE,
                 "busy",
-                "all connections to the database are in use, by uploads under way where this is one; \
-                 nothing was changed; try again",
+                "as many requests of this kind as may be are under way; nothing was changed; try again",
             )
             .with_header("Retry-After", "10"),
             Fault::OutcomeUnknown(error) => Self {

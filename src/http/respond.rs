@@ -23,6 +23,7 @@ pub(super) enum Media {
     Json,
     Csv,
     Text,
+    Latex,
 }
 
 impl Media {
@@ -31,6 +32,7 @@ impl Media {
             Self::Json => "application/json",
             Self::Csv => "text/csv",
             Self::Text => "text/plain",
+            Self::Latex => "application/x-latex",
         }
     }
 
@@ -39,6 +41,7 @@ impl Media {
             Self::Json => "application/json",
             Self::Csv => "text/csv; charset=utf-8",
             Self::Text => "text/plain; charset=utf-8",
+            Self::Latex => "application/x-latex; charset=utf-8",
         }
     }
 
@@ -47,6 +50,7 @@ impl Media {
             Self::Json => "json",
             Self::Csv => "csv",
             Self::Text => "text",
+            Self::Latex => "latex",
         }
     }
 }

@@ -244,7 +244,7 @@ async fn observations(call: Call) -> Answer {
     let tag = call.tag(&version(view.segment, view.revision), media);
     let body = match media {
         Media::Csv => csv_body(&view),
-        Media::Json | Media::Text => to_json(&view)?,
+        Media::Json | Media::Text | Media::Latex => to_json(&view)?,
     };
     Ok(call.body(StatusCode::OK, media, Some(&tag), body))
 }

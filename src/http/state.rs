@@ -9,4 +9,6 @@ pub(super) struct Shared {
     pub(super) database: Database,
     pub(super) gate: Gate,
     pub(super) limits: Limits,
+    /// Days that estimates are kept.
+    pub(super) estimate_days: u32,
 }

@@ -279,7 +279,7 @@ fn get_kind(call: &Call) -> Answer {
             let template = intake::template_csv(kind.name).unwrap_or_default();
             Ok(call.body(StatusCode::OK, Media::Csv, None, template.into_bytes()))
         }
-        Media::Json | Media::Text => call.json(StatusCode::OK, &kind),
+        Media::Json | Media::Text | Media::Latex => call.json(StatusCode::OK, &kind),
     }
 }
 

@@ -6,6 +6,7 @@
 mod body;
 pub mod currencies;
 pub mod documents;
+pub mod estimates;
 mod fault;
 mod groups;
 mod landing;
@@ -24,6 +25,7 @@ pub use fault::Fault;
 pub use views::*;
 
 pub use crate::store::Database;
+pub use crate::store::simulation::Simulations;
 
 /// Runs pure work on a blocking thread, in the current span.
 async fn blocking<T: Send + 'static>(

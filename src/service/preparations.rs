@@ -6,6 +6,7 @@ use serde::{Deserialize, Serialize};
 use utoipa::ToSchema;
 
 use super::documents::{self, DocumentKind, timestamp};
+use super::retry::retried;
 use super::series::Moment;
 use super::views::Pin;
 use super::{Fault, blocking, preview};
@@ -230,37 +231,41 @@ pub async fn run(
     let released = released
         .ok_or_else(|| Fault::Internal("a preparation without inputs has outputs".to_owned()))?;
 
-    let mut transaction = database.begin().await?;
-    let pins_json = serde_json::json!(pins);
-    let id = store::document::insert_run(
-        &mut transaction,
-        KIND.as_str(),
-        name,
-        row.version,
-        preparation::METHOD_VERSION,
-        author,
-        &pins_json,
-        &serde_json::Value::Null,
-    )
+    let id = retried(async || {
+        let mut transaction = database.begin().await?;
+        let pins_json = serde_json::json!(pins);
+        let id = store::document::insert_run(
+            &mut transaction,
+            KIND.as_str(),
+            name,
+            row.version,
+            preparation::METHOD_VERSION,
+            author,
+            &pins_json,
+            &serde_json::Value::Null,
+        )
+        .await?;
+        let written = write(
+            &mut transaction,
+            (name, id),
+            released,
+            moment.is_now(),
+            &outputs,
+            author,
+        );
+        let (revision, changed) = written.await?;
+        let result = StoredResult {
+            revision,
+            outputs: outputs
+                .iter()
+                .map(|o| output_view(o, changed.contains(&o.key)))
+                .collect(),
+        };
+        store::document::set_run_result(&mut transaction, id, &serde_json::json!(result)).await?;
+        store::commit(transaction).await?;
+        Ok(id)
+    })
     .await?;
-    let written = write(
-        &mut transaction,
-        (name, id),
-        released,
-        moment.is_now(),
-        &outputs,
-        author,
-    );
-    let (revision, changed) = written.await?;
-    let result = StoredResult {
-        revision,
-        outputs: outputs
-            .iter()
-            .map(|o| output_view(o, changed.contains(&o.key)))
-            .collect(),
-    };
-    store::document::set_run_result(&mut transaction, id, &serde_json::json!(result)).await?;
-    store::commit(transaction).await?;
     get_run(database, name, id).await
 }
 

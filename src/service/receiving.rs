@@ -10,6 +10,7 @@ use bytes::Bytes;
 use futures_util::Stream;
 
 use super::groups::Source;
+use super::retry::ATTEMPTS;
 use super::uploads::{self, ReportParts};
 use super::views::UploadView;
 use super::{Fault, blocking, body, currencies, landing, preview};
@@ -23,9 +24,6 @@ use crate::store::change::Action;
 use crate::store::upload::{NewUpload, Outcome};
 use crate::store::{self, Connection, Database, Savepoint};
 use crate::time::Date;
-
-/// How often a merge is tried when the database asks for another try.
-const ATTEMPTS: usize = 4;
 
 /// What becomes of an upload with rejects.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]

@@ -2,8 +2,8 @@
 
 use super::Fault;
 
-/// How often a transaction is tried.
-const ATTEMPTS: usize = 4;
+/// How often a transaction, or its merge, is tried.
+pub(super) const ATTEMPTS: usize = 4;
 
 /// Runs a use case that is one transaction from its beginning to its commit, and runs it again where
 /// the database gave it up for the sake of another: serialization failure or deadlock.

@@ -2,6 +2,8 @@
 
 use std::collections::BTreeMap;
 
+use chrono::NaiveDate;
+
 use super::Fault;
 use super::documents::{bad_cursor, cursor, timestamp};
 use super::preview::series;
@@ -10,7 +12,7 @@ use crate::finding::Finding;
 use crate::series::algebra::{Over, Span, growth};
 use crate::series::{GrowthKind, SeriesKey, Status};
 use crate::store::search::{ListedSeries, Search};
-use crate::store::vintage::{AsOf, ReadVintage};
+use crate::store::vintage::{AsOf, ListedVintage, ReadVintage};
 use crate::store::{self, Connection, Database};
 use crate::time::{Date, Frequency, Period};
 
@@ -340,27 +342,26 @@ pub async fn vintages(
     after: Option<&str>,
     limit: i64,
 ) -> Result<Page<VintageView>, Fault> {
-    // An upload released earlier may come between two pages: the cursor names a vintage, no number of them.
     let after = after
-        .map(|text| vintage_cursor(text).ok_or_else(|| bad_cursor(text)))
+        .map(|text| place(text).ok_or_else(|| bad_cursor(text)))
         .transpose()?;
     let mut connection = database.connection().await?;
-    let rows = store::vintage::list(&mut connection, key).await?;
+    let mut rows = store::vintage::list(&mut connection, key).await?;
     if rows.is_empty() {
         return Err(no_series(key));
     }
-    let mut views = Vec::new();
-    for r in rows {
-        let released = store::date(r.released)?;
-        if after.is_some_and(|after| (released, r.revision, r.segment) <= after) {
-            continue;
-        }
+    // An older release may come between two pages: the cursor names a vintage, not how many came before.
+    rows.retain(|r| after.is_none_or(|after| (r.released, r.revision, r.segment) > after));
+    let page = Page::cut(rows, limit, |r| {
+        format!("{}_{}_{}", r.released, r.revision, r.segment)
+    });
+    let view = |r: ListedVintage| {
         let ends = ends(key.frequency(), r.start_period, r.observation_count);
         let (first, last) = ends.map_or((None, None), |(f, l)| (Some(f), Some(l)));
-        views.push(VintageView {
+        Ok::<_, Fault>(VintageView {
             segment: r.segment,
             unit_text: r.unit.0.to_string(),
-            released: released.to_string(),
+            released: store::date(r.released)?.to_string(),
             recorded: timestamp(r.recorded),
             revision: r.revision,
             action: r.action,
@@ -372,16 +373,17 @@ pub async fn vintages(
             new: r.new_count,
             revised: r.revised_count,
             emptied: r.emptied_count,
-        });
-    }
-    Ok(Page::cut(views, limit, |v| {
-        format!("{}_{}_{}", v.released, v.revision, v.segment)
-    }))
+        })
+    };
+    Ok(Page {
+        items: page.items.into_iter().map(view).collect::<Result<_, _>>()?,
+        next: page.next,
+    })
 }
 
-/// Release date, revision and segment of a vintage: the order of their list.
-fn vintage_cursor(text: &str) -> Option<(Date, i64, i32)> {
-    let (released, rest) = text.split_once('_')?;
+/// What orders the list of vintages: the release that speaks, its revision and its segment.
+fn place(cursor: &str) -> Option<(NaiveDate, i64, i32)> {
+    let (released, rest) = cursor.split_once('_')?;
     let (revision, segment) = rest.split_once('_')?;
     Some((
         released.parse().ok()?,

@@ -46,10 +46,10 @@ impl Database {
 /// A database that does not come up lets callers wait as long as one whose connections are all in use.
 fn not_given(pool: &PgPool, error: sqlx::Error) -> Error {
     let all_in_use = pool.size() >= pool.options().get_max_connections();
-    match error {
-        sqlx::Error::PoolTimedOut if all_in_use => Error::Busy,
-        error => Error::Database(error),
+    if all_in_use && matches!(error, sqlx::Error::PoolTimedOut) {
+        return Error::Busy;
     }
+    Error::Database(error)
 }
 
 /// Commits.

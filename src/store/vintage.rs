@@ -354,7 +354,7 @@ pub struct ListedVintage {
     pub segment: i32,
     /// Unit of the segment.
     pub unit: Json<Unit>,
-    /// Date of the release that speaks.
+    /// Date of the release that speaks, by which lists are ordered.
     pub released: NaiveDate,
     /// When it was recorded.
     pub recorded: DateTime<Utc>,

@@ -3,11 +3,16 @@
 use std::collections::BTreeSet;
 
 use serde::{Deserialize, Serialize};
-use serde_json::Value;
 use utoipa::ToSchema;
 
-use super::reader::Reader;
+use super::options::{
+    ArdlOptions, AutoregressiveOptions, DolsOptions, JohansenOptions, SimulationOptions,
+    SystemOptions, check as check_options,
+};
+use super::reader;
+use super::terms::{Term, check as check_terms};
 use crate::constraint::{Form, IntervalMethod};
+use crate::document;
 use crate::finding::Finding;
 use crate::series::SeriesKey;
 use crate::time::{Frequency, Period};
@@ -49,11 +54,12 @@ pub struct Document {
     #[schema(value_type = Option<String>)]
     #[serde(default, skip_serializing_if = "Option::is_none")]
     pub terms_of_trade: Option<SeriesKey>,
-    /// Covariance of coefficients behind tests and intervals; absent: classical in differences,
-    /// Newey–West in levels.
+    /// Covariance of coefficients behind tests and intervals of least squares, two-stage least squares and
+    /// autoregressive errors; absent: classical in differences, Newey–West in levels.
     #[serde(default, skip_serializing_if = "Option::is_none")]
     pub covariance: Option<Covariance>,
-    /// Newey–West lags; absent: ⌊4 (n/100)^(2/9)⌋.
+    /// Lags of the Bartlett kernel, in Newey–West covariances and in the long-run variances of `dols` and
+    /// `fmols`; absent: ⌊4 (n/100)^(2/9)⌋.
     #[serde(default, skip_serializing_if = "Option::is_none")]
     pub lags: Option<u32>,
     /// Whether Newey–West covariances are multiplied by n/(n − k); absent: yes.
@@ -62,6 +68,24 @@ pub struct Document {
     /// Intervals for growth rates.
     #[serde(default)]
     pub interval: Interval,
+    /// Settings of `ardl`.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub ardl: Option<ArdlOptions>,
+    /// Settings of `dols`.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub dols: Option<DolsOptions>,
+    /// Settings of `autoregressive_errors`.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub autoregressive_errors: Option<AutoregressiveOptions>,
+    /// Settings of `seemingly_unrelated` and `seemingly_unrelated_differences`.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub seemingly_unrelated: Option<SystemOptions>,
+    /// Settings of `johansen`.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub johansen: Option<JohansenOptions>,
+    /// Settings of simulated critical values.
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    pub simulation: Option<SimulationOptions>,
 }
 
 /// The one result a study is judged by.
@@ -84,6 +108,24 @@ pub enum Estimator {
     OlsLevels,
     /// Least squares on log differences; the constant is autonomous growth.
     OlsDifferences,
+    /// Log levels with first-order autoregressive errors (Prais & Winsten 1954).
+    AutoregressiveErrors,
+    /// Two-stage least squares on log levels; each demand names its instruments.
+    TwoStageLevels,
+    /// Two-stage least squares on log differences.
+    TwoStageDifferences,
+    /// Both equations in log levels as one system of seemingly unrelated regressions (Zellner 1962).
+    SeeminglyUnrelated,
+    /// The same on log differences.
+    SeeminglyUnrelatedDifferences,
+    /// Autoregressive distributed lags in error-correction form with bounds tests (Pesaran, Shin & Smith 2001).
+    Ardl,
+    /// Dynamic least squares (Saikkonen 1991; Stock & Watson 1993).
+    Dols,
+    /// Fully modified least squares (Phillips & Hansen 1990).
+    Fmols,
+    /// One relation in a vector error-correction model of each equation's series (Johansen 1991).
+    Johansen,
 }
 
 impl Estimator {
@@ -93,7 +135,29 @@ impl Estimator {
         match self {
             Self::OlsLevels => "ols_levels",
             Self::OlsDifferences => "ols_differences",
+            Self::AutoregressiveErrors => "autoregressive_errors",
+            Self::TwoStageLevels => "two_stage_levels",
+            Self::TwoStageDifferences => "two_stage_differences",
+            Self::SeeminglyUnrelated => "seemingly_unrelated",
+            Self::SeeminglyUnrelatedDifferences => "seemingly_unrelated_differences",
+            Self::Ardl => "ardl",
+            Self::Dols => "dols",
+            Self::Fmols => "fmols",
+            Self::Johansen => "johansen",
         }
+    }
+
+    /// Whether it works on log differences, so that a constant is growth.
+    #[must_use]
+    pub fn in_differences(self) -> bool {
+        matches!(
+            self,
+            Self::OlsDifferences | Self::TwoStageDifferences | Self::SeeminglyUnrelatedDifferences
+        )
+    }
+
+    pub(super) fn uses_instruments(self) -> bool {
+        matches!(self, Self::TwoStageLevels | Self::TwoStageDifferences)
     }
 }
 
@@ -125,6 +189,61 @@ pub struct Demand {
     #[schema(value_type = Option<String>)]
     #[serde(default, skip_serializing_if = "Option::is_none")]
     pub relative_price: Option<SeriesKey>,
+    /// Further regressors, in logs; what their mean growth adds counts as autonomous growth.
+    #[schema(value_type = Vec<String>)]
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub further: Vec<SeriesKey>,
+    /// Trend, seasonal and other dummies.
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub terms: Vec<Term>,
+    /// Instruments of two-stage least squares outside the equation, in logs or log differences as the equation.
+    #[schema(value_type = Vec<String>)]
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub instruments: Vec<SeriesKey>,
+    /// Regressors that the instruments are for; none named: `activity`.
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub endogenous: Vec<Endogenous>,
+}
+
+impl Demand {
+    /// Regressors in order, each with the field that names it: activity, relative price, further ones.
+    pub(super) fn regressors(&self) -> Vec<(String, &SeriesKey)> {
+        let mut all = vec![("activity".to_owned(), &self.activity)];
+        all.extend(
+            self.relative_price
+                .iter()
+                .map(|k| ("relative_price".to_owned(), k)),
+        );
+        let further = self.further.iter().enumerate();
+        all.extend(further.map(|(i, k)| (format!("further/{i}"), k)));
+        all
+    }
+
+    /// The series that instruments are for.
+    pub(super) fn instrumented(&self) -> Vec<&SeriesKey> {
+        let chosen = if self.endogenous.is_empty() {
+            &[Endogenous::Activity][..]
+        } else {
+            &self.endogenous[..]
+        };
+        chosen
+            .iter()
+            .filter_map(|e| match e {
+                Endogenous::Activity => Some(&self.activity),
+                Endogenous::RelativePrice => self.relative_price.as_ref(),
+            })
+            .collect()
+    }
+}
+
+/// A regressor that may be correlated with the error.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize, ToSchema)]
+#[serde(rename_all = "snake_case")]
+pub enum Endogenous {
+    /// The activity.
+    Activity,
+    /// The relative price.
+    RelativePrice,
 }
 
 /// Kinds of covariance of coefficients.
@@ -184,14 +303,7 @@ impl Document {
     /// The findings, all of severity error: `invalid_json`, `unknown_field` (lists the known ones),
     /// `missing_field`, `invalid_value`.
     pub fn parse(text: &str) -> Result<Self, Vec<Finding>> {
-        let value: Value = serde_json::from_str(text).map_err(|e| {
-            let line = u64::try_from(e.line()).unwrap_or_default();
-            vec![
-                Finding::error("invalid_json", format!("The document is not JSON: {e}"))
-                    .at_line(line),
-            ]
-        })?;
-        let document = Reader::read(&value)?;
+        let document = reader::read(&document::parse(text)?)?;
         let findings = document.check();
         if findings.is_empty() {
             Ok(document)
@@ -226,17 +338,16 @@ impl Document {
             ("/export_demand", &self.export_demand),
         ] {
             add(&format!("{pointer}/volume"), &demand.volume, Kind::Volume);
-            add(
-                &format!("{pointer}/activity"),
-                &demand.activity,
-                Kind::Volume,
-            );
-            if let Some(key) = &demand.relative_price {
-                add(
-                    &format!("{pointer}/relative_price"),
-                    key,
-                    Kind::RelativePrice,
-                );
+            for (field, key) in demand.regressors() {
+                let kind = match field.as_str() {
+                    "activity" => Kind::Volume,
+                    "relative_price" => Kind::RelativePrice,
+                    _ => Kind::Any,
+                };
+                add(&format!("{pointer}/{field}"), key, kind);
+            }
+            for (i, key) in demand.instruments.iter().enumerate() {
+                add(&format!("{pointer}/instruments/{i}"), key, Kind::Any);
             }
         }
         if let Some(key) = &self.terms_of_trade {
@@ -318,11 +429,54 @@ impl Document {
             );
             fault("/interval/level", message);
         }
-        if self.covariance == Some(Covariance::Classical) && self.lags.is_some() {
+        let kernel = |e: &Estimator| matches!(e, Estimator::Dols | Estimator::Fmols);
+        if self.covariance == Some(Covariance::Classical)
+            && self.lags.is_some()
+            && !self.estimators.iter().any(kernel)
+        {
             fault(
                 "/lags",
                 "Lags apply to newey_west, not to classical".to_owned(),
             );
+        }
+        findings.extend(check_options(self));
+        findings.extend(check_terms(self));
+        findings.extend(self.check_instruments());
+        findings
+    }
+
+    fn check_instruments(&self) -> Vec<Finding> {
+        let asked = self.estimators.iter().any(|e| e.uses_instruments());
+        let mut findings = Vec::new();
+        for (pointer, demand) in [
+            ("/import_demand", &self.import_demand),
+            ("/export_demand", &self.export_demand),
+        ] {
+            let mut fault = |field: &str, message: &str| {
+                let finding = Finding::error("invalid_value", message);
+                findings.push(finding.at_pointer(format!("{pointer}/{field}")));
+            };
+            if asked && demand.instruments.len() < demand.instrumented().len().max(1) {
+                fault(
+                    "instruments",
+                    "Two-stage least squares needs at least one instrument for each endogenous regressor",
+                );
+            } else if !asked && !demand.instruments.is_empty() {
+                fault(
+                    "instruments",
+                    "Instruments apply to two_stage_levels and two_stage_differences, of which none is asked for",
+                );
+            }
+            if demand.endogenous.contains(&Endogenous::RelativePrice)
+                && demand.relative_price.is_none()
+            {
+                fault("endogenous", "The demand has no relative price");
+            } else if !asked && !demand.endogenous.is_empty() {
+                fault(
+                    "endogenous",
+                    "Endogenous regressors apply to two_stage_levels and two_stage_differences, of which none is asked for",
+                );
+            }
         }
         findings
     }
@@ -340,4 +494,6 @@ pub(super) struct Role<'a> {
 pub(super) enum Kind {
     Volume,
     RelativePrice,
+    /// Anything that has a logarithm.
+    Any,
 }

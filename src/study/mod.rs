@@ -5,23 +5,36 @@
 
 mod document;
 mod equation;
+mod integration;
+mod options;
 mod outcome;
 mod reader;
 mod reliability;
 mod run;
 mod sample;
+mod terms;
 pub mod text;
 
+#[cfg(test)]
+mod estimators_tests;
 #[cfg(test)]
 mod reference_tests;
 #[cfg(test)]
 mod tests;
 
 pub use document::{
-    Covariance, CrossCovariance, Demand, Document, Estimator, Headline, Interval, SampleBounds,
+    Covariance, CrossCovariance, Demand, Document, Endogenous, Estimator, Headline, Interval,
+    SampleBounds,
+};
+pub use options::{
+    ArdlCase, ArdlOptions, AutoregressiveOptions, DolsOptions, FirstRow, JohansenOptions,
+    JohansenTerms, LagChoice, SimulationOptions, SystemOptions,
 };
 pub use outcome::{
-    CoefficientResult, EquationResult, Estimate, EstimatorResult, FormNumbers, FormResult,
-    IntervalSettings, MeanGrowth, NearIdentity, Outcome, RelativePriceEffect, Sample, Unreliable,
+    AdjustmentResult, CoefficientResult, CovarianceUsed, DynamicsResult, EquationResult,
+    EquationTest, Estimate, EstimatorResult, FormNumbers, FormResult, IntervalSettings,
+    LongRunResult, MeanGrowth, NearIdentity, Outcome, RelativePriceEffect, Sample, TestGroup,
+    Unreliable,
 };
-pub use run::{METHOD_VERSION, run};
+pub use run::{METHOD_VERSION, run, run_with};
+pub use terms::{At, Term};

@@ -6,7 +6,8 @@
 use serde::{Deserialize, Serialize};
 use utoipa::ToSchema;
 
-use super::document::{Covariance, CrossCovariance, Estimator, Headline};
+use super::document::{CrossCovariance, Estimator, Headline};
+use super::options::{ArdlCase, SimulationOptions};
 use crate::constraint::{Form, IntervalMethod, Region};
 use crate::finding::Finding;
 
@@ -33,6 +34,9 @@ pub struct Outcome {
     pub growth: MeanGrowth,
     /// How the intervals were made.
     pub interval: IntervalSettings,
+    /// Draws and seed behind simulated critical values; null where none was needed.
+    #[serde(default)]
+    pub simulation: Option<SimulationOptions>,
     /// One a requested estimator, in the order of the document.
     pub estimators: Vec<EstimatorResult>,
     /// What concerns the whole study.
@@ -111,8 +115,9 @@ pub struct EstimatorResult {
     pub import_price_elasticity: Option<Estimate>,
     /// Response of exports to competitors' over own prices; expected positive.
     pub export_price_elasticity: Option<Estimate>,
-    /// Growth of imports that neither income nor prices explain, log per cent a year; null where the
-    /// equation has no such term (levels without trend).
+    /// Growth of imports that neither income nor prices explain, log per cent a year: the constant in differences,
+    /// the trend in levels, and what further regressors add at their mean growth; null where the equation has none
+    /// of these.
     pub import_autonomous_growth: Option<Estimate>,
     /// Growth of exports that neither income nor prices explain, log per cent a year.
     pub export_autonomous_growth: Option<Estimate>,
@@ -141,38 +146,144 @@ pub struct EquationResult {
     /// fractions per period, and that of the export relative price has the sign of the equation.
     pub coefficients: Vec<CoefficientResult>,
     /// Covariance behind t, p and intervals.
-    pub covariance: Covariance,
-    /// Newey–West lags of `std_error_newey_west`.
+    pub covariance: CovarianceUsed,
+    /// Lags of the Bartlett kernel behind `std_error_newey_west` or a long-run variance.
     pub lags: u32,
     /// Whether Newey–West covariances were multiplied by n/(n − k).
     pub small_sample: bool,
-    /// R².
+    /// R²; null where the method has none.
     pub r_squared: Option<f64>,
     /// Adjusted R².
     pub adjusted_r_squared: Option<f64>,
     /// Standard deviation of the residuals, `√(ssr/(n − k))`.
     pub residual_std_dev: f64,
-    /// Durbin–Watson statistic; null for a perfect fit.
+    /// Durbin–Watson statistic; null for a perfect fit and with lagged dependent variables.
     pub durbin_watson: Option<f64>,
+    /// First-order autocorrelation ρ of the errors, where the method estimates it.
+    #[serde(default)]
+    pub error_autocorrelation: Option<f64>,
+    /// Responses in the level relation where they are not among the coefficients as they stand: long-run
+    /// coefficients of a dynamic equation, the relation of a system.
+    #[serde(default)]
+    pub long_run: Vec<LongRunResult>,
+    /// Return to the level relation.
+    #[serde(default)]
+    pub adjustment: Option<AdjustmentResult>,
+    /// Lags of a dynamic equation.
+    #[serde(default)]
+    pub dynamics: Option<DynamicsResult>,
+    /// Tests of cointegration, of instruments, of exogeneity, and diagnostics.
+    #[serde(default)]
+    pub tests: Vec<EquationTest>,
+}
+
+/// The covariance behind an equation's t and p.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize, ToSchema)]
+#[serde(rename_all = "snake_case")]
+pub enum CovarianceUsed {
+    /// Independent errors of one variance.
+    Classical,
+    /// Newey & West 1987, Bartlett weights.
+    NeweyWest,
+    /// The errors' long-run variance times the inverse cross products of the regressors.
+    LongRun,
 }
 
 /// One coefficient.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
 pub struct CoefficientResult {
-    /// `constant`, `income` or `relative_price`.
+    /// `constant`, `income`, `relative_price`, `further 1` …, `trend` or a dummy. In dynamic equations `volume` and the
+    /// others carry their lag (`income.L1`), changes stand as `d.income.L0`, leads as `d.income.F1`.
     pub name: String,
-    /// Key of the regressor; null for the constant.
+    /// Key of the regressor; null for deterministic terms.
     pub series: Option<String>,
     /// Estimate.
     pub estimate: f64,
-    /// Classical standard error.
-    pub std_error_classical: f64,
-    /// Newey–West standard error.
-    pub std_error_newey_west: f64,
+    /// Standard error of the equation's covariance, behind t and p; null in results of study/1.
+    #[serde(default)]
+    pub std_error: Option<f64>,
+    /// Classical standard error; null where the method has none.
+    pub std_error_classical: Option<f64>,
+    /// Newey–West standard error; null where the method has none.
+    pub std_error_newey_west: Option<f64>,
     /// Estimate over the standard error of the equation's covariance.
     pub t: Option<f64>,
     /// Two-sided p-value by Student's t.
     pub p: Option<f64>,
+}
+
+/// A response in a level relation.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct LongRunResult {
+    /// As in the coefficients, without lags.
+    pub name: String,
+    /// Key of the regressor; null for deterministic terms.
+    pub series: Option<String>,
+    /// Estimate.
+    pub estimate: f64,
+    /// Standard error (delta method where it is a ratio).
+    pub std_error: f64,
+}
+
+/// Return to a level relation.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct AdjustmentResult {
+    /// Part of a deviation that a period adds; −1 to 0 in a healthy equation.
+    pub speed: f64,
+    /// Its standard error.
+    pub std_error: f64,
+    /// Years until half of a deviation is gone; null outside −1 to 0.
+    pub half_life_years: Option<f64>,
+}
+
+/// Lags of a dynamic equation.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct DynamicsResult {
+    /// Lags of the levels: the volume, then each regressor in the order of the document (ARDL); of all series (VECM).
+    pub lags: Vec<u32>,
+    /// Leads of changes (dynamic least squares).
+    pub leads: Option<u32>,
+    /// Case of Pesaran, Shin & Smith (2001).
+    pub case: Option<ArdlCase>,
+    /// How the lags were chosen, in words; null where they were given.
+    pub choice: Option<String>,
+}
+
+/// What a test is about.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize, ToSchema)]
+#[serde(rename_all = "snake_case")]
+pub enum TestGroup {
+    /// Is there a level relation?
+    Cointegration,
+    /// Are the instruments strong and valid?
+    Instruments,
+    /// Are the regressors exogenous?
+    Exogeneity,
+    /// Are the equations of a system related?
+    System,
+    /// Do the errors behave as assumed?
+    Diagnostic,
+}
+
+/// One test of an equation.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize, ToSchema)]
+pub struct EquationTest {
+    /// What it is about.
+    pub group: TestGroup,
+    /// Name.
+    pub name: String,
+    /// Statistic; null where there is none, as for a confidence set.
+    pub statistic: Option<f64>,
+    /// Distribution under the null hypothesis, in words.
+    pub distribution: String,
+    /// p-value; of the bounds tests with all regressors I(1).
+    pub p: Option<f64>,
+    /// Critical value at 5 %, where the distribution is not a standard one.
+    pub critical: Option<f64>,
+    /// Critical value at 5 % with all regressors I(0), of the bounds tests.
+    pub lower_critical: Option<f64>,
+    /// One plain sentence.
+    pub sentence: String,
 }
 
 /// A number with its standard error.

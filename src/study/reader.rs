@@ -6,25 +6,22 @@ use serde_json::{Map, Value};
 use super::document::{
     CrossCovariance, Demand, Document, Headline, Interval, SampleBounds, default_level,
 };
+use super::options::{
+    ArdlOptions, AutoregressiveOptions, DolsOptions, JohansenOptions, SimulationOptions,
+    SystemOptions, default_draws, default_seed,
+};
 use crate::constraint::IntervalMethod;
+use crate::document::Reader;
 use crate::finding::Finding;
 
-/// Reads JSON objects field by field, so that every fault has its pointer.
-#[derive(Default)]
-pub(super) struct Reader {
-    findings: Vec<Finding>,
+/// The document, or every fault found.
+pub(super) fn read(value: &Value) -> Result<Document, Vec<Finding>> {
+    let mut reader = Reader::default();
+    let document = reader.document(value);
+    reader.finish(document)
 }
 
 impl Reader {
-    /// The document, or every fault found.
-    pub(super) fn read(value: &Value) -> Result<Document, Vec<Finding>> {
-        let mut reader = Self::default();
-        match reader.document(value) {
-            Some(document) if reader.findings.is_empty() => Ok(document),
-            _ => Err(reader.findings),
-        }
-    }
-
     fn document(&mut self, value: &Value) -> Option<Document> {
         let known = [
             "title",
@@ -43,6 +40,12 @@ impl Reader {
             "lags",
             "small_sample",
             "interval",
+            "ardl",
+            "dols",
+            "autoregressive_errors",
+            "seemingly_unrelated",
+            "johansen",
+            "simulation",
         ];
         let map = self.object(value, "", &known)?;
         // Every field is read before any fault returns, so that all faults are reported at once.
@@ -62,6 +65,43 @@ impl Reader {
         let lags = self.field(map, "", "lags");
         let small_sample = self.field(map, "", "small_sample");
         let interval = self.interval(map);
+        let ardl = self.ardl(map);
+        let dols = self.options(map, "dols", &["leads", "lags"], |reader, map| {
+            let leads = reader.field(map, "/dols", "leads");
+            let lags = reader.field(map, "/dols", "lags");
+            Some(DolsOptions {
+                leads: leads?,
+                lags: lags?,
+            })
+        });
+        let name = "autoregressive_errors";
+        let autoregressive_errors =
+            self.options(map, name, &["first_observation"], |reader, map| {
+                let first_observation =
+                    reader.field(map, "/autoregressive_errors", "first_observation")?;
+                Some(AutoregressiveOptions { first_observation })
+            });
+        let seemingly_unrelated =
+            self.options(map, "seemingly_unrelated", &["iterate"], |reader, map| {
+                let iterate = reader.field(map, "/seemingly_unrelated", "iterate")?;
+                Some(SystemOptions { iterate })
+            });
+        let johansen = self.options(map, "johansen", &["lags", "case"], |reader, map| {
+            let lags = reader.field(map, "/johansen", "lags");
+            let case = reader.field(map, "/johansen", "case");
+            Some(JohansenOptions {
+                lags: lags?,
+                case: case?,
+            })
+        });
+        let simulation = self.options(map, "simulation", &["draws", "seed"], |reader, map| {
+            let draws = reader.field::<Option<u32>>(map, "/simulation", "draws");
+            let seed = reader.field::<Option<u32>>(map, "/simulation", "seed");
+            Some(SimulationOptions {
+                draws: draws?.unwrap_or_else(default_draws),
+                seed: seed?.unwrap_or_else(default_seed),
+            })
+        });
         Some(Document {
             title: title?,
             area: area?,
@@ -79,7 +119,52 @@ impl Reader {
             lags: lags?,
             small_sample: small_sample?,
             interval: interval?,
+            ardl: ardl?,
+            dols: dols?,
+            autoregressive_errors: autoregressive_errors?,
+            seemingly_unrelated: seemingly_unrelated?,
+            johansen: johansen?,
+            simulation: simulation?,
         })
+    }
+
+    fn ardl(&mut self, map: &Map<String, Value>) -> Option<Option<ArdlOptions>> {
+        let known = [
+            "case",
+            "criterion",
+            "max_lags",
+            "import_orders",
+            "export_orders",
+        ];
+        self.options(map, "ardl", &known, |reader, map| {
+            let case = reader.field(map, "/ardl", "case");
+            let criterion = reader.field(map, "/ardl", "criterion");
+            let max_lags = reader.field(map, "/ardl", "max_lags");
+            let import_orders = reader.field(map, "/ardl", "import_orders");
+            let export_orders = reader.field(map, "/ardl", "export_orders");
+            Some(ArdlOptions {
+                case: case?,
+                criterion: criterion?,
+                max_lags: max_lags?,
+                import_orders: import_orders?,
+                export_orders: export_orders?,
+            })
+        })
+    }
+
+    /// An object inside the document that may be absent.
+    fn options<T>(
+        &mut self,
+        map: &Map<String, Value>,
+        name: &str,
+        known: &[&str],
+        read: impl FnOnce(&mut Self, &Map<String, Value>) -> Option<T>,
+    ) -> Option<Option<T>> {
+        if map.get(name).is_none_or(Value::is_null) {
+            return Some(None);
+        }
+        let map = self.part(map, name, known)?;
+        read(self, map).map(Some)
     }
 
     fn headline(&mut self, map: &Map<String, Value>) -> Option<Headline> {
@@ -106,15 +191,32 @@ impl Reader {
     }
 
     fn demand(&mut self, map: &Map<String, Value>, name: &str) -> Option<Demand> {
-        let map = self.part(map, name, &["volume", "activity", "relative_price"])?;
+        let known = [
+            "volume",
+            "activity",
+            "relative_price",
+            "further",
+            "terms",
+            "instruments",
+            "endogenous",
+        ];
+        let map = self.part(map, name, &known)?;
         let pointer = format!("/{name}");
         let volume = self.field(map, &pointer, "volume");
         let activity = self.field(map, &pointer, "activity");
         let relative_price = self.field(map, &pointer, "relative_price");
+        let further = self.items(map, &pointer, "further");
+        let terms = self.items(map, &pointer, "terms");
+        let instruments = self.items(map, &pointer, "instruments");
+        let endogenous = self.items(map, &pointer, "endogenous");
         Some(Demand {
             volume: volume?,
             activity: activity?,
             relative_price: relative_price?,
+            further: further?,
+            terms: terms?,
+            instruments: instruments?,
+            endogenous: endogenous?,
         })
     }
 
@@ -133,97 +235,20 @@ impl Reader {
         })
     }
 
-    /// A list that holds at least one element.
-    fn list<T: DeserializeOwned>(
+    /// A list that may be absent or empty; every fault points at its element.
+    fn items<T: DeserializeOwned>(
         &mut self,
         map: &Map<String, Value>,
+        pointer: &str,
         name: &str,
     ) -> Option<Vec<T>> {
-        let list: Vec<Value> = self.field(map, "", name)?;
-        if list.is_empty() {
-            let message = format!("{name} is empty");
-            let finding = Finding::error("invalid_value", message).at_pointer(format!("/{name}"));
-            self.findings.push(finding);
-            return None;
-        }
+        let list = self.field::<Option<Vec<Value>>>(map, pointer, name)?;
         let items: Vec<Option<T>> = list
+            .unwrap_or_default()
             .iter()
             .enumerate()
-            .map(|(i, v)| self.value(v, &format!("/{name}/{i}")))
+            .map(|(i, v)| self.value(v, &format!("{pointer}/{name}/{i}")))
             .collect();
         items.into_iter().collect()
-    }
-
-    /// An object inside the document.
-    fn part<'a>(
-        &mut self,
-        map: &'a Map<String, Value>,
-        name: &str,
-        known: &[&str],
-    ) -> Option<&'a Map<String, Value>> {
-        let Some(value) = map.get(name) else {
-            self.missing(&format!("/{name}"), name);
-            return None;
-        };
-        self.object(value, &format!("/{name}"), known)
-    }
-
-    fn object<'a>(
-        &mut self,
-        value: &'a Value,
-        pointer: &str,
-        known: &[&str],
-    ) -> Option<&'a Map<String, Value>> {
-        let Some(map) = value.as_object() else {
-            let finding = Finding::error("invalid_value", "An object is expected here")
-                .at_pointer(pointer)
-                .expected(format!("an object with {}", known.join(", ")));
-            self.findings.push(finding);
-            return None;
-        };
-        for name in map.keys().filter(|name| !known.contains(&name.as_str())) {
-            let escaped = name.replace('~', "~0").replace('/', "~1");
-            let finding = Finding::error("unknown_field", format!("There is no field '{name}'"))
-                .at_pointer(format!("{pointer}/{escaped}"))
-                .found(name.clone())
-                .expected(format!("one of {}", known.join(", ")));
-            self.findings.push(finding);
-        }
-        Some(map)
-    }
-
-    /// A field; an absent one reads as null, which optional types take.
-    fn field<T: DeserializeOwned>(
-        &mut self,
-        map: &Map<String, Value>,
-        pointer: &str,
-        name: &str,
-    ) -> Option<T> {
-        let pointer = format!("{pointer}/{name}");
-        match map.get(name) {
-            Some(value) => self.value(value, &pointer),
-            None => serde_json::from_value(Value::Null).ok().or_else(|| {
-                self.missing(&pointer, name);
-                None
-            }),
-        }
-    }
-
-    fn value<T: DeserializeOwned>(&mut self, value: &Value, pointer: &str) -> Option<T> {
-        match serde_json::from_value(value.clone()) {
-            Ok(value) => Some(value),
-            Err(error) => {
-                let finding = Finding::error("invalid_value", error.to_string())
-                    .at_pointer(pointer)
-                    .found(value.to_string());
-                self.findings.push(finding);
-                None
-            }
-        }
-    }
-
-    fn missing(&mut self, pointer: &str, name: &str) {
-        let finding = Finding::error("missing_field", format!("The field '{name}' is required"));
-        self.findings.push(finding.at_pointer(pointer));
     }
 }

@@ -2,8 +2,7 @@
 //!
 //! A finding of severity error makes every form unreliable that uses its equation; notices do not.
 
-use super::document::Estimator;
-use super::equation::{CONST, Equation, INCOME, PRICE};
+use super::equation::Equation;
 use super::sample::Logs;
 use crate::constraint::Region;
 use crate::dist::t_upper;
@@ -42,7 +41,7 @@ impl Side {
         }
     }
 
-    fn noun(self) -> &'static str {
+    pub(super) fn noun(self) -> &'static str {
         match self {
             Self::Imports => "imports",
             Self::Exports => "exports",
@@ -64,13 +63,9 @@ pub(super) fn errors(findings: &[Finding]) -> Vec<Finding> {
     findings.iter().filter(error).cloned().collect()
 }
 
-/// What an equation's estimates show.
-pub(super) fn judge_equation(
-    equation: &Equation<'_>,
-    side: Side,
-    logs: &Logs,
-    annual: bool,
-) -> Vec<Finding> {
+/// What an equation's estimates show, whatever the estimator.
+pub(super) fn judge_equation(equation: &Equation<'_>, logs: &Logs, annual: bool) -> Vec<Finding> {
+    let side = equation.side;
     let mut findings = Vec::new();
     let mut add = |severity: Severity, code: &str, message: String| {
         let finding = match severity {
@@ -80,29 +75,16 @@ pub(super) fn judge_equation(
         findings.push(finding.at_pointer(side.pointer()));
     };
     let noun = side.noun();
-    let fit = &equation.fit;
-    let quantile = t_upper(SIGNIFICANCE / 2.0, equation.df());
-    let band = |i: usize, sign: f64| {
-        let (centre, half) = (sign * fit.coefficients[i], quantile * equation.std_error(i));
-        (centre, centre - half, centre + half)
-    };
-
-    if equation.estimator == Estimator::OlsLevels && fit.durbin_watson < fit.r2 {
-        let message = format!(
-            "Demand for {noun} in levels may be spurious: Durbin-Watson {:.2} lies below R2 {:.2}",
-            fit.durbin_watson, fit.r2
-        );
-        add(Severity::Error, "possibly_spurious", message);
-    }
-    let (income, low, high) = band(INCOME, 1.0);
-    if high < 0.0 {
+    let quantile = t_upper(SIGNIFICANCE / 2.0, equation.degrees_of_freedom());
+    let income = equation.income.value;
+    let t = equation.t(&equation.income);
+    if t < -quantile {
         let message =
             format!("The income elasticity of {noun} is negative at 5 per cent: {income:.2}");
         add(Severity::Error, "wrong_sign", message);
-    } else if low <= 0.0 {
+    } else if t.is_nan() || t <= quantile {
         let message = format!(
-            "The income elasticity of {noun}, {income:.2}, is not told from zero: \
-             its 95 per cent interval is {low:.2} to {high:.2}"
+            "The income elasticity of {noun}, {income:.2}, is not told from zero at 5 per cent: t {t:.2}"
         );
         add(Severity::Error, "insignificant_income_elasticity", message);
     }
@@ -119,9 +101,9 @@ pub(super) fn judge_equation(
         );
         add(Severity::Notice, "income_elasticity_outside_range", message);
     }
-    if equation.has_price() {
-        let (price, _, high) = band(PRICE, side.price_sign());
-        let verdict = if high < 0.0 {
+    if let Some(response) = &equation.price {
+        let price = side.price_sign() * response.value;
+        let verdict = if side.price_sign() * equation.t(response) < -quantile {
             Some((Severity::Error, "and significantly so at 5 per cent"))
         } else if price < 0.0 {
             Some((Severity::Notice, "though not significantly at 5 per cent"))
@@ -135,40 +117,40 @@ pub(super) fn judge_equation(
             add(severity, "wrong_sign", message);
         }
     }
-    if equation.estimator == Estimator::OlsDifferences {
-        let (constant, low, high) = band(CONST, 1.0);
-        if low > 0.0 || high < 0.0 {
-            let message = format!(
-                "A constant in the growth of {noun}, {:.2} per cent a period, is neither income nor prices: \
-                 autonomous growth that the law leaves out",
-                100.0 * constant
-            );
-            add(Severity::Notice, "autonomous_growth", message);
-        }
+    if let Some(growth) = &equation.autonomous
+        && equation.t(growth).abs() > quantile
+    {
+        let message = format!(
+            "Growth of {noun} of {:.2} per cent a period comes neither from income nor from prices: \
+             autonomous growth that the law leaves out",
+            100.0 * growth.value
+        );
+        add(Severity::Notice, "autonomous_growth", message);
     }
     let enough = if annual {
         FEW_OBSERVATIONS.0
     } else {
         FEW_OBSERVATIONS.1
     };
-    if fit.n < TOO_FEW_OBSERVATIONS || fit.n < TOO_FEW_A_COEFFICIENT * fit.k {
+    if equation.rows < TOO_FEW_OBSERVATIONS || equation.rows < TOO_FEW_A_COEFFICIENT * equation.size
+    {
         let message = format!(
             "Demand for {noun} has {} observations for {} coefficients; at least {} are needed",
-            fit.n,
-            fit.k,
-            TOO_FEW_OBSERVATIONS.max(TOO_FEW_A_COEFFICIENT * fit.k)
+            equation.rows,
+            equation.size,
+            TOO_FEW_OBSERVATIONS.max(TOO_FEW_A_COEFFICIENT * equation.size)
         );
         add(Severity::Error, "few_observations", message);
-    } else if fit.n < enough {
+    } else if equation.rows < enough {
         let message = format!(
             "Demand for {noun} has {} observations; {enough} are better",
-            fit.n
+            equation.rows
         );
         add(Severity::Notice, "few_observations", message);
     }
     let demand = equation.demand;
-    let mut keys = vec![&demand.volume, &demand.activity];
-    keys.extend(&demand.relative_price);
+    let mut keys = vec![&demand.volume];
+    keys.extend(demand.regressors().into_iter().map(|(_, key)| key));
     for key in keys {
         let share = logs.guessed(key);
         if share > GUESSED.0 {

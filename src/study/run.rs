@@ -2,8 +2,9 @@
 
 use std::collections::BTreeMap;
 
-use super::document::{CrossCovariance, Document, Estimator};
-use super::equation::{CONST, Equation, INCOME, PRICE, differences, finite, small};
+use super::document::{Document, Estimator};
+use super::equation::{Both, Equation, Machine, Request, estimate, finite, small};
+use super::integration::orders_of_integration;
 use super::outcome::{
     Estimate, EstimatorResult, FormNumbers, FormResult, IntervalSettings, MeanGrowth, NearIdentity,
     Outcome, RelativePriceEffect, Sample, Unreliable,
@@ -12,13 +13,12 @@ use super::reliability::{Side, errors, judge_equation, judge_price_elasticities,
 use super::sample::{Logs, gather};
 use crate::constraint::{Affine, Economy, Form, Ratio};
 use crate::dist::{t_two_sided, t_upper};
-use crate::estimate::covariance;
+use crate::estimate::{NoStore, SimulationStore};
 use crate::finding::Finding;
-use crate::linalg::Matrix;
 use crate::series::{Series, SeriesKey};
 
 /// Version of the method: it changes whenever the same inputs may give other digits.
-pub const METHOD_VERSION: &str = "study/1";
+pub const METHOD_VERSION: &str = "study/2";
 
 const CAUTION: &str = "These figures are conditional on a model and on the data it was given. They \
     are not a forecast and not advice; official statistics and licensed advice prevail. The rate \
@@ -31,10 +31,25 @@ const CAUTION: &str = "These figures are conditional on a model and on the data 
 /// # Errors
 /// Findings that forbid a run, each with series, period or JSON pointer: `missing_input`,
 /// `wrong_frequency`, `wrong_unit`, `no_common_sample`, `gap_in_sample`, `not_positive`,
-/// `constant_series`, `collinear`, `too_few_observations`, `too_many_lags`.
+/// `constant_series`, `collinear`, `too_few_observations`, `too_many_lags`, `explosive_errors`,
+/// `underidentified`, `no_convergence`, `invalid_value`.
 pub fn run(
     document: &Document,
     inputs: &BTreeMap<SeriesKey, Series>,
+) -> Result<Outcome, Vec<Finding>> {
+    let threads = std::thread::available_parallelism().map_or(1, std::num::NonZero::get);
+    run_with(document, inputs, threads, &NoStore)
+}
+
+/// The same with threads for simulated critical values and a store that keeps them; neither changes a digit.
+///
+/// # Errors
+/// As [`run`].
+pub fn run_with(
+    document: &Document,
+    inputs: &BTreeMap<SeriesKey, Series>,
+    threads: usize,
+    store: &dyn SimulationStore,
 ) -> Result<Outcome, Vec<Finding>> {
     let logs = gather(document, inputs)?;
     let per_year = document.frequency.periods_per_year().map_or(1.0, f64::from);
@@ -43,10 +58,8 @@ pub fn run(
         document,
         logs: &logs,
         scale,
-        actual: mean_growth(
-            &logs,
-            document.actual.as_ref().unwrap_or(&document.activity),
-        ),
+        actual: logs.mean_growth(document.actual.as_ref().unwrap_or(&document.activity)),
+        machine: Machine { threads, store },
     };
     let (mut estimators, mut faults) = (Vec::new(), Vec::new());
     for estimator in &document.estimators {
@@ -58,7 +71,9 @@ pub fn run(
     if !faults.is_empty() {
         return Err(faults);
     }
-    let mean = |key: &SeriesKey| scale * mean_growth(&logs, key);
+    let simulates = |e: &Estimator| matches!(e, Estimator::Ardl | Estimator::Johansen);
+    let simulated = document.estimators.iter().any(simulates);
+    let mean = |key: &SeriesKey| scale * logs.mean_growth(key);
     let (imports, exports) = (&document.import_demand, &document.export_demand);
     Ok(Outcome {
         method_version: METHOD_VERSION.to_owned(),
@@ -88,16 +103,11 @@ pub fn run(
             level: document.interval.level,
             cross_covariance: document.interval.cross_covariance,
         },
+        simulation: simulated.then(|| document.simulation.unwrap_or_default()),
         estimators,
-        findings: logs.notices,
+        findings: [logs.notices.clone(), orders_of_integration(document, &logs)].concat(),
         caution: CAUTION.to_owned(),
     })
-}
-
-/// Mean log growth per period over the sample.
-fn mean_growth(logs: &Logs, key: &SeriesKey) -> f64 {
-    let changes = differences(logs.of(key));
-    changes.iter().sum::<f64>() / f64::from(small(changes.len()))
 }
 
 struct Study<'a> {
@@ -107,127 +117,90 @@ struct Study<'a> {
     scale: f64,
     /// Actual log growth per period.
     actual: f64,
+    machine: Machine<'a>,
 }
 
 impl Study<'_> {
     fn estimate(&self, estimator: Estimator) -> Result<EstimatorResult, Vec<Finding>> {
-        let fit = |side: Side| {
-            let demand = match side {
+        let request = |side: Side| Request {
+            document: self.document,
+            demand: match side {
                 Side::Imports => &self.document.import_demand,
                 Side::Exports => &self.document.export_demand,
-            };
-            Equation::fit(self.document, demand, side.pointer(), estimator, self.logs)
+            },
+            side,
+            estimator,
+            logs: self.logs,
+            machine: self.machine,
         };
-        let (imports, exports) = match (fit(Side::Imports), fit(Side::Exports)) {
-            (Ok(imports), Ok(exports)) => (imports, exports),
-            (imports, exports) => {
-                let faults = [imports.err(), exports.err()];
-                return Err(faults.into_iter().flatten().flatten().collect());
-            }
-        };
+        let across = self.document.interval.cross_covariance;
+        let both = estimate(&request(Side::Imports), &request(Side::Exports), across)?;
+        let (imports, exports) = (&both.imports, &both.exports);
         let annual = self.document.frequency == crate::time::Frequency::Annual;
-        let import_findings = judge_equation(&imports, Side::Imports, self.logs, annual);
-        let mut export_findings = judge_equation(&exports, Side::Exports, self.logs, annual);
-        let price = |equation: &Equation<'_>, side: Side| {
-            equation.has_price().then(|| Estimate {
-                value: side.price_sign() * equation.fit.coefficients[PRICE],
-                std_error: equation.std_error(PRICE),
-            })
+        let judged = |equation: &Equation<'_>| {
+            let own = equation.findings.clone();
+            [judge_equation(equation, self.logs, annual), own].concat()
         };
-        let import_price = price(&imports, Side::Imports);
-        let export_price = price(&exports, Side::Exports);
+        let import_findings = judged(imports);
+        let mut export_findings = judged(exports);
+        let plain = |equation: &Equation<'_>, of: &Affine, scale: f64| Estimate {
+            value: scale * of.value,
+            std_error: scale.abs() * equation.std_error(of),
+        };
+        let price = |equation: &Equation<'_>| {
+            let sign = equation.side.price_sign();
+            equation.price.as_ref().map(|p| plain(equation, p, sign))
+        };
+        let (import_price, export_price) = (price(imports), price(exports));
         if let (Some(m), Some(x)) = (import_price, export_price) {
             export_findings.extend(judge_price_elasticities(m.value, x.value));
         }
+        let autonomous = |equation: &Equation<'_>| {
+            let growth = equation.autonomous.as_ref();
+            growth.map(|a| plain(equation, a, self.scale))
+        };
         let estimates = Estimates {
-            joint: self.joint(&imports, &exports)?,
-            economy: self.economy(&imports, &exports, estimator),
+            economy: self.economy(imports, exports),
             import_errors: errors(&import_findings),
             export_errors: errors(&export_findings),
-            imports: &imports,
-            exports: &exports,
-            estimator,
-        };
-        let plain = |equation: &Equation<'_>, i: usize, scale: f64| Estimate {
-            value: scale * equation.fit.coefficients[i],
-            std_error: scale * equation.std_error(i),
-        };
-        let autonomous = |equation: &Equation<'_>| {
-            (estimator == Estimator::OlsDifferences).then(|| plain(equation, CONST, self.scale))
+            both: &both,
         };
         let forms = self.document.forms.iter().enumerate();
         Ok(EstimatorResult {
             estimator,
-            import_demand: imports.result(self.logs),
-            export_demand: exports.result(self.logs),
-            import_income_elasticity: plain(&imports, INCOME, 1.0),
-            export_income_elasticity: plain(&exports, INCOME, 1.0),
+            import_demand: imports.result.clone(),
+            export_demand: exports.result.clone(),
+            import_income_elasticity: plain(imports, &imports.income, 1.0),
+            export_income_elasticity: plain(exports, &exports.income, 1.0),
             import_price_elasticity: import_price,
             export_price_elasticity: export_price,
-            import_autonomous_growth: autonomous(&imports),
-            export_autonomous_growth: autonomous(&exports),
+            import_autonomous_growth: autonomous(imports),
+            export_autonomous_growth: autonomous(exports),
             forms: forms
                 .map(|(i, form)| self.form(i, *form, &estimates))
                 .collect(),
-            near_identity: self.near_identity(&imports),
+            near_identity: self.near_identity(imports),
             findings: [import_findings, export_findings].concat(),
         })
     }
 
-    /// Joint covariance of the coefficients of imports, then exports.
-    fn joint(
-        &self,
-        imports: &Equation<'_>,
-        exports: &Equation<'_>,
-    ) -> Result<Matrix, Vec<Finding>> {
-        let joint = covariance(&[&imports.fit, &exports.fit], imports.chosen)
-            .map_err(|e| vec![Finding::error("no_joint_covariance", e.to_string())])?;
-        let k = imports.fit.k;
-        Ok(match self.document.interval.cross_covariance {
-            CrossCovariance::Joint => joint,
-            CrossCovariance::Zero => Matrix::from_fn(joint.rows(), joint.columns(), |i, j| {
-                if (i < k) == (j < k) {
-                    joint.at(i, j)
-                } else {
-                    0.0
-                }
-            }),
-        })
-    }
-
-    fn economy(
-        &self,
-        imports: &Equation<'_>,
-        exports: &Equation<'_>,
-        estimator: Estimator,
-    ) -> Economy {
-        let (m, x, k) = (
-            &imports.fit.coefficients,
-            &exports.fit.coefficients,
-            imports.fit.k,
-        );
-        let mean = |key: &SeriesKey| mean_growth(self.logs, key);
-        let zero = Affine::default();
-        let free = |place: usize, value: f64| match estimator {
-            Estimator::OlsDifferences => Affine::coefficient(place, value),
-            Estimator::OlsLevels => Affine::default(),
-        };
+    fn economy(&self, imports: &Equation<'_>, exports: &Equation<'_>) -> Economy {
+        let k = imports.covariance.rows();
+        let mean = |key: &SeriesKey| self.logs.mean_growth(key);
+        let moved =
+            |of: &Option<Affine>| of.as_ref().map_or_else(Affine::default, |a| a.shifted(k));
         Economy {
             exports: mean(&exports.demand.volume),
             foreign_income: mean(&exports.demand.activity),
             terms_of_trade: self.document.terms_of_trade.as_ref().map(mean),
             import_relative_price: imports.demand.relative_price.as_ref().map(mean),
             export_relative_price: exports.demand.relative_price.as_ref().map(mean),
-            import_income_elasticity: Affine::coefficient(INCOME, m[INCOME]),
-            export_income_elasticity: Affine::coefficient(k + INCOME, x[INCOME]),
-            import_price_elasticity: m
-                .get(PRICE)
-                .map_or(zero.clone(), |v| Affine::coefficient(PRICE, *v)),
-            export_price_elasticity: x
-                .get(PRICE)
-                .map_or(zero, |v| -Affine::coefficient(k + PRICE, *v)),
-            import_autonomous: free(CONST, m[CONST]),
-            export_autonomous: free(k + CONST, x[CONST]),
+            import_income_elasticity: imports.income.clone(),
+            export_income_elasticity: exports.income.shifted(k),
+            import_price_elasticity: imports.price.clone().unwrap_or_default(),
+            export_price_elasticity: -moved(&exports.price),
+            import_autonomous: imports.autonomous.clone().unwrap_or_default(),
+            export_autonomous: moved(&exports.autonomous),
         }
     }
 
@@ -239,38 +212,55 @@ impl Study<'_> {
             Err(error) => return refused(form, error.to_string()),
         };
         let uses_exports = form.uses_export_demand();
+        let Both {
+            imports,
+            exports,
+            joint,
+        } = estimates.both;
         let df = if uses_exports {
-            estimates.imports.df().min(estimates.exports.df())
+            imports
+                .degrees_of_freedom()
+                .min(exports.degrees_of_freedom())
         } else {
-            estimates.imports.df()
+            imports.degrees_of_freedom()
         };
         let level = self.document.interval.level;
         let t = t_upper((1.0 - level) / 2.0, df);
+        // Multiplied by what the elasticities were divided by, for intervals free of that division.
+        let undivided = |ratio: &Ratio| {
+            let mut ratio = ratio.clone();
+            if let Some(divisor) = &imports.divisor {
+                ratio = ratio.times(divisor);
+            }
+            if let Some(divisor) = exports.divisor.as_ref().filter(|_| uses_exports) {
+                ratio = ratio.times(&divisor.shifted(imports.covariance.rows()));
+            }
+            ratio
+        };
         let region = |ratio: &Ratio| {
-            let region = ratio.interval(&estimates.joint, t, self.document.interval.method);
+            let region = undivided(ratio).interval(joint, t, self.document.interval.method);
             region.map(|v| self.scale * v)
         };
         let effect = form
             .relative_price_effect(&estimates.economy)
             .ok()
             .map(|ratio| {
-                let error = ratio.numerator.variance(&estimates.joint).sqrt();
+                let numerator = undivided(&ratio).numerator;
+                let error = numerator.variance(joint).sqrt();
                 RelativePriceEffect {
                     included: matches!(form, Form::WeakFormWithPrices | Form::WithRelativePrices),
                     effect: self.scale * ratio.value(),
                     interval: region(&ratio),
-                    p_zero: finite(t_two_sided(ratio.numerator.value / error, df)),
+                    p_zero: finite(t_two_sided(numerator.value / error, df)),
                 }
             });
         let rate = self.scale * ratio.value();
         let interval = region(&ratio);
-        let with_autonomous = match estimates.estimator {
-            Estimator::OlsDifferences => form.solve(&estimates.economy, true).ok(),
-            Estimator::OlsLevels => None,
-        };
+        let free = imports.autonomous.is_some() || exports.autonomous.is_some();
+        let with_autonomous = form.solve(&estimates.economy, true).ok().filter(|_| free);
         let numbers = FormNumbers {
             rate: Some(rate),
-            std_error: finite(self.scale * ratio.delta_variance(&estimates.joint).sqrt()),
+            std_error: finite(self.scale * ratio.delta_variance(joint).sqrt()),
             interval: Some(interval),
             rate_with_autonomous_growth: with_autonomous.map(|r| self.scale * r.value()),
             relative_price_effect: effect,
@@ -303,13 +293,13 @@ impl Study<'_> {
     }
 
     fn near_identity(&self, imports: &Equation<'_>) -> NearIdentity {
-        let mean = |key: &SeriesKey| mean_growth(self.logs, key);
+        let mean = |key: &SeriesKey| self.logs.mean_growth(key);
         let (m, x) = (
             mean(&imports.demand.volume),
             mean(&self.document.export_demand.volume),
         );
         let tt = self.document.terms_of_trade.as_ref().map(mean);
-        let pi = imports.fit.coefficients[INCOME];
+        let pi = imports.income.value;
         let arithmetic = finite(m / mean(&imports.demand.activity));
         let part = (pi > 0.0).then(|| self.scale * (x + tt.unwrap_or(0.0) - m) / pi);
         let measured = if tt.is_some() { "values" } else { "volumes" };
@@ -343,13 +333,10 @@ impl Study<'_> {
 
 /// What the forms of one estimator share.
 struct Estimates<'a> {
-    joint: Matrix,
     economy: Economy,
     import_errors: Vec<Finding>,
     export_errors: Vec<Finding>,
-    imports: &'a Equation<'a>,
-    exports: &'a Equation<'a>,
-    estimator: Estimator,
+    both: &'a Both<'a>,
 }
 
 fn refused(form: Form, reason: String) -> FormResult {

@@ -22,6 +22,13 @@ impl Logs {
         self.by_key.get(key).map_or(&[], Vec::as_slice)
     }
 
+    /// Mean log growth a period of one input over the sample.
+    pub(super) fn mean_growth(&self, key: &SeriesKey) -> f64 {
+        let changes: Vec<f64> = self.of(key).windows(2).map(|w| w[1] - w[0]).collect();
+        let count = u32::try_from(changes.len()).unwrap_or(u32::MAX);
+        changes.iter().sum::<f64>() / f64::from(count)
+    }
+
     /// Share of an input's observations that are estimated or imputed.
     pub(super) fn guessed(&self, key: &SeriesKey) -> f64 {
         self.guessed.get(key).copied().unwrap_or(0.0)
@@ -82,6 +89,7 @@ pub(super) fn gather(
     if !faults.is_empty() {
         return Err(faults);
     }
+    notices.extend(filtered(document, &spans));
     let periods = common_periods(document, &spans, &mut notices).map_err(|f| vec![*f])?;
     let mut by_key = BTreeMap::new();
     let mut guessed = BTreeMap::new();
@@ -109,6 +117,30 @@ pub(super) fn gather(
 
 fn usable(series: &Series, i: usize) -> bool {
     series.values[i].is_finite() && series.status[i] != Status::Forecast
+}
+
+/// A notice of seasonally adjusted series: the filter reaches over years.
+fn filtered(
+    document: &Document,
+    spans: &BTreeMap<&SeriesKey, (&Series, Period, Period)>,
+) -> Option<Finding> {
+    let adjusted = |(_, (series, ..)): &(&&SeriesKey, &(&Series, Period, Period))| {
+        !series.unit.adjustment.is_raw()
+    };
+    let keys: Vec<String> = spans
+        .iter()
+        .filter(adjusted)
+        .map(|(key, _)| key.to_string())
+        .collect();
+    let yearly = document.frequency.periods_per_year() == Some(1);
+    (!yearly && !keys.is_empty()).then(|| {
+        let message = format!(
+            "Seasonally adjusted: {}. The filter reaches over years, which moves lags, unit-root tests and tests of a \
+             level relation",
+            keys.join(", ")
+        );
+        Finding::notice("filtered_series", message)
+    })
 }
 
 /// The periods that every series covers within the document's bounds.
@@ -210,6 +242,7 @@ fn check_unit(role: &Role<'_>, series: &Series) -> Option<Finding> {
             .expected(expected)
     };
     match role.kind {
+        Kind::Any => None,
         Kind::RelativePrice => match &unit.quantity {
             Quantity::Ratio
             | Quantity::Index {

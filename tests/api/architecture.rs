@@ -6,7 +6,7 @@ use std::fs;
 use std::path::{Path, PathBuf};
 
 /// Rooms whose code does no I/O and reads no clock, log or environment.
-const PURE: [&str; 11] = [
+const PURE: [&str; 13] = [
     "linalg",
     "dist",
     "random",
@@ -18,6 +18,8 @@ const PURE: [&str; 11] = [
     "intake",
     "preparation",
     "study",
+    "document",
+    "estimation",
 ];
 
 /// What a pure room may not name.
@@ -43,12 +45,14 @@ fn allowed(room: &str) -> Option<Vec<&'static str>> {
     match room {
         "linalg" | "dist" | "random" | "time" => Some(vec![]),
         "finding" => Some(vec!["time"]),
+        "document" => Some(vec!["finding"]),
         "series" => Some(vec!["time", "finding", "linalg", "dist"]),
         "estimate" => Some(vec!["linalg", "dist", "random", "finding"]),
         "constraint" => and_series(&["random", "estimate"]),
         "intake" => Some(vec!["series", "finding", "time"]),
         "preparation" => and_series(&[]),
-        "study" => and_series(&["random", "estimate", "constraint"]),
+        "estimation" => and_series(&["random", "estimate", "document"]),
+        "study" => and_series(&["random", "estimate", "constraint", "document"]),
         "store" => Some(PURE.to_vec()),
         "service" => Some([&PURE[..], &["store", "clock"]].concat()),
         // Of `intake` only what describes kinds and layouts; the rest is for `service`.

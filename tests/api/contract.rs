@@ -153,6 +153,7 @@ async fn every_status_of_every_operation_is_met() {
     walk_documents(&open).await;
     walk_uploads(&open).await;
     walk_series(&open).await;
+    walk_estimates(&open).await;
     for app in [open, guarded, slow, lost] {
         for met in app.met.lock().unwrap().iter() {
             left.remove(met);
@@ -195,6 +196,30 @@ async fn slow() -> TestApp {
     }))
     .await;
     app
+}
+
+/// Estimates.
+async fn walk_estimates(app: &TestApp) {
+    let image = [("Accept", "image/png")];
+    let made = app
+        .post("/v1/estimates", sample::ESTIMATE)
+        .await
+        .expect(201);
+    let path = made.header("location").unwrap();
+    app.post("/v1/estimates", "{}").await.expect(422);
+    let body = Some(sample::ESTIMATE.into());
+    app.send(Method::POST, "/v1/estimates", &image, body)
+        .await
+        .expect(406);
+    app.get("/v1/estimates").await.expect(200);
+    app.get(path).await.expect(200);
+    app.send(Method::GET, path, &image, None).await.expect(406);
+    let sample = format!("{path}/sample.csv");
+    app.get(&sample).await.expect(200);
+    app.delete(path).await.expect(204);
+    app.delete(path).await.expect(404);
+    app.get(path).await.expect(404);
+    app.get(&sample).await.expect(404);
 }
 
 /// Currencies, preparations and studies.

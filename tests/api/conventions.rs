@@ -338,6 +338,12 @@ async fn lists_page_to_their_end_and_neither_repeat_nor_lose_an_entry() {
         let file = TRADE.replace("104.5", value) + more;
         app.upload(&query, file).await.expect(201);
     }
+    // From its date on an older release speaks again.
+    let landed = app.get("/v1/uploads?state=landed").await.expect(200);
+    assert_eq!(landed.at("/2/released"), "2022-01-01");
+    app.delete(&format!("/v1/uploads/{}", landed.at("/2/id")))
+        .await
+        .expect(200);
     let bad = "period,value\n2019-Q1,a\n2019-Q2,b\n2019-Q3,c\n2019-Q4,d\n2020-Q1,e\n";
     let refused = app.upload(TRADE_QUERY, bad).await.expect(422);
     let refused = refused.at("/upload/id");
@@ -345,14 +351,14 @@ async fn lists_page_to_their_end_and_neither_repeat_nor_lose_an_entry() {
         ("/v1/series", "area=XAA,XBB&words=XAA%20a", 5),
         ("/v1/series", "", 6),
         ("/v1/uploads", "", 7),
-        ("/v1/uploads", "state=landed&kind=trade", 5),
+        ("/v1/uploads", "state=landed&kind=trade", 4),
         (&format!("/v1/uploads/{refused}/rejects"), "", 5),
         ("/v1/preparations", "", 2),
         ("/v1/preparations/sample/runs", "", 5),
         ("/v1/studies", "", 5),
         ("/v1/studies/sample/runs", "", 5),
         ("/v1/studies/a/runs", "", 0),
-        ("/v1/series/Q.XAA.exports/vintages", "", 6),
+        ("/v1/series/Q.XAA.exports/vintages", "", 7),
     ] {
         let whole = app.pages(&format!("{path}?{query}")).await;
         assert_eq!(whole.len(), count, "{path}?{query}");

@@ -3,20 +3,24 @@
 //! Start reading at [`ArdlData`], then [`Ardl::fit`] and [`select_orders`]; [`Ardl::bounds`] tests for
 //! a level relation with critical values from [`super::BoundsNull`].
 
+mod bootstrap_bounds;
 mod bounds;
 mod model;
 mod multipliers;
+mod quick;
 mod selection;
 
 #[cfg(test)]
 mod tests;
 
+pub use bootstrap_bounds::{BootstrapBounds, BootstrapBoundsP, bootstrap_bounds};
 pub use bounds::{BoundsStatistics, LevelRelation};
 pub use model::{Ardl, LongRunCoefficient};
 pub use multipliers::Multipliers;
+pub use quick::QuickArdl;
 pub use selection::{Candidate, InformationCriterion, Selection, select_orders};
 
-use super::series_error::{check, differences};
+use super::series_error::check;
 use super::{Deterministic, Regressor, SeriesError};
 
 /// The five deterministic cases of Pesaran, Shin & Smith (2001).
@@ -107,35 +111,60 @@ impl ArdlData<'_> {
         orders: &ArdlOrders,
         skip: usize,
     ) -> Vec<Regressor> {
-        let rows = self.y.values.len() - skip;
-        let level = |series: &Regressor, lag: usize| {
-            let from = skip - lag;
-            let values = series.values[from..from + rows].to_vec();
-            Regressor::new(&format!("{}.L{lag}", series.name), values)
+        let terms = deterministic.columns(0).into_iter();
+        let mut names: Vec<String> = terms.map(|t| t.name).collect();
+        names.extend(self.fixed.iter().map(|f| f.name.clone()));
+        names.push(format!("{}.L1", self.y.name));
+        for (x, &q) in self.x.iter().zip(&orders.q) {
+            names.push(format!("{}.L{}", x.name, usize::from(q > 0)));
+        }
+        names.extend((1..orders.p).map(|lag| format!("d.{}.L{lag}", self.y.name)));
+        for (x, &q) in self.x.iter().zip(&orders.q) {
+            names.extend((0..q).map(|lag| format!("d.{}.L{lag}", x.name)));
+        }
+        let values = self.values(deterministic, orders, skip);
+        let columns = values.chunks_exact(self.y.values.len() - skip);
+        let named = names.into_iter().zip(columns);
+        named
+            .map(|(name, values)| Regressor {
+                name,
+                values: values.to_vec(),
+            })
+            .collect()
+    }
+
+    /// The values of these columns, one after the other.
+    fn values(&self, deterministic: Deterministic, orders: &ArdlOrders, skip: usize) -> Vec<f64> {
+        let n = self.y.values.len();
+        let rows = n - skip;
+        let mut all = Vec::new();
+        let level = |all: &mut Vec<f64>, series: &Regressor, lag: usize| {
+            all.extend_from_slice(&series.values[skip - lag..n - lag]);
         };
-        let change = |series: &Regressor, lag: usize| {
-            let from = skip - lag - 1;
-            let values = differences(&series.values[from..=from + rows]);
-            Regressor::new(&format!("d.{}.L{lag}", series.name), values)
+        let change = |all: &mut Vec<f64>, series: &Regressor, lag: usize| {
+            let values = &series.values[skip - lag - 1..n - lag];
+            all.extend(values.windows(2).map(|w| w[1] - w[0]));
         };
         // The trend counts from the first observation, whatever the lags.
-        let mut columns: Vec<Regressor> = deterministic
-            .columns(self.y.values.len())
-            .into_iter()
-            .map(|c| Regressor::new(&c.name, c.values[skip..].to_vec()))
-            .collect();
-        columns.extend(self.fixed.iter().map(|f| Regressor {
-            name: f.name.clone(),
-            values: f.values[skip..].to_vec(),
-        }));
-        columns.push(level(self.y, 1));
-        for (x, &q) in self.x.iter().zip(&orders.q) {
-            columns.push(level(x, usize::from(q > 0)));
+        for term in deterministic.columns(n) {
+            all.extend_from_slice(&term.values[skip..]);
         }
-        columns.extend((1..orders.p).map(|lag| change(self.y, lag)));
-        for (x, &q) in self.x.iter().zip(&orders.q) {
-            columns.extend((0..q).map(|lag| change(x, lag)));
+        for fixed in self.fixed {
+            all.extend_from_slice(&fixed.values[skip..]);
         }
-        columns
+        level(&mut all, self.y, 1);
+        for (x, &q) in self.x.iter().zip(&orders.q) {
+            level(&mut all, x, usize::from(q > 0));
+        }
+        for lag in 1..orders.p {
+            change(&mut all, self.y, lag);
+        }
+        for (x, &q) in self.x.iter().zip(&orders.q) {
+            for lag in 0..q {
+                change(&mut all, x, lag);
+            }
+        }
+        debug_assert_eq!(all.len() % rows, 0);
+        all
     }
 }

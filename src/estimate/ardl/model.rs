@@ -137,10 +137,7 @@ impl Ardl {
             })
             .collect();
         let map = levels_map(&orders, at, ecm.k);
-        let mut levels: Vec<f64> = (0..map.rows())
-            .map(|i| (0..ecm.k).map(|j| map.at(i, j) * ecm.coefficients[j]).sum())
-            .collect();
-        levels[0] += 1.0;
+        let levels = in_levels(&map, &ecm.coefficients);
         Self {
             levels_covariance: sandwich(&map, &v),
             levels,
@@ -173,9 +170,20 @@ fn sandwich(g: &Matrix, v: &Matrix) -> Matrix {
     })
 }
 
+/// Coefficients in levels of an equation whose error-correction form has these coefficients.
+pub(super) fn in_levels(map: &Matrix, coefficients: &[f64]) -> Vec<f64> {
+    let row = |i: usize| -> f64 {
+        let products = coefficients.iter().enumerate();
+        products.map(|(j, c)| map.at(i, j) * c).sum()
+    };
+    let mut levels: Vec<f64> = (0..map.rows()).map(row).collect();
+    levels[0] += 1.0;
+    levels
+}
+
 /// Rows: coefficients in levels; columns: coefficients of the error-correction form. The 1 that
-/// belongs to the first lag of y is added by the caller.
-fn levels_map(orders: &ArdlOrders, at: usize, k: usize) -> Matrix {
+/// belongs to the first lag of y is not in it.
+pub(super) fn levels_map(orders: &ArdlOrders, at: usize, k: usize) -> Matrix {
     let count = orders.p + orders.q.iter().map(|q| q + 1).sum::<usize>();
     let mut rows = vec![vec![0.0; k]; count];
     let (mut row, mut change) = (0, at + 1 + orders.q.len());

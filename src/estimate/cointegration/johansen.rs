@@ -62,14 +62,18 @@ pub struct Johansen {
     /// Lagged levels (n × p or p + 1) likewise.
     pub(super) r1: Matrix,
     /// `Δy_t` and lagged levels as they are, and the short-run terms with their names.
-    pub(super) raw: Raw,
+    pub raw: JohansenRows,
 }
 
+/// The rows of a reduced-rank regression.
 #[derive(Clone, Debug)]
-pub(super) struct Raw {
-    pub(super) changes: Vec<Vec<f64>>,
-    pub(super) levels: Vec<Vec<f64>>,
-    pub(super) short_run: Vec<Regressor>,
+pub struct JohansenRows {
+    /// `Δy_t`, one column a series.
+    pub changes: Vec<Vec<f64>>,
+    /// Lagged levels, one column a name of the system.
+    pub levels: Vec<Vec<f64>>,
+    /// Short-run terms.
+    pub short_run: Vec<Regressor>,
 }
 
 /// Johansen's reduced-rank regression of p series with k lags in levels:
@@ -205,7 +209,7 @@ pub fn johansen(
         tests,
         r0,
         r1,
-        raw: Raw {
+        raw: JohansenRows {
             changes,
             levels,
             short_run,

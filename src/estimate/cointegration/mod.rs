@@ -3,6 +3,7 @@
 mod engle_granger;
 mod hypotheses;
 mod johansen;
+mod rank_null;
 mod vecm;
 
 #[cfg(test)]
@@ -10,5 +11,6 @@ mod tests;
 
 pub use engle_granger::{EngleGranger, engle_granger};
 pub use hypotheses::LikelihoodRatio;
-pub use johansen::{Johansen, JohansenCase, RankTest, johansen};
-pub use vecm::Vecm;
+pub use johansen::{Johansen, JohansenCase, JohansenRows, RankTest, johansen};
+pub use rank_null::{RankNull, simulate_rank};
+pub use vecm::{RelationErrors, Vecm};

@@ -26,6 +26,22 @@ pub struct Vecm {
     pub residual_covariance: Matrix,
     /// Log-likelihood.
     pub log_likelihood: f64,
+    /// How errors enter the first relation.
+    pub relation: RelationErrors,
+}
+
+/// To first order the free coefficients of the first relation are `β̂ − β = A⁻¹ Σ_t x_t w_t` with
+/// `w_t = (α'Ω⁻¹α)⁻¹ α'Ω⁻¹ e_t`.
+#[derive(Clone, Debug)]
+pub struct RelationErrors {
+    /// x (n × free coefficients): lagged levels without what the short-run terms explain.
+    pub regressors: Matrix,
+    /// w, n values.
+    pub errors: Vec<f64>,
+    /// `A⁻¹`.
+    pub inverse_gram: Matrix,
+    /// Variance of w, the first element of `(α'Ω⁻¹α)⁻¹`.
+    pub variance: f64,
 }
 
 impl Johansen {
@@ -99,10 +115,18 @@ impl Johansen {
         let alpha_errors = Matrix::from_fn(p, rank, |i, j| {
             (omega.at(i, i) * equations[i].inverse_gram.at(j, j)).sqrt()
         });
-        let weight = inverse(&omega)
-            .map(|o| alpha.transposed().times(&o).times(&alpha))
-            .and_then(|w| inverse(&w))
-            .ok_or_else(no_normalisation)?;
+        let precise = inverse(&omega).ok_or_else(no_normalisation)?;
+        let loadings = alpha.transposed().times(&precise);
+        let weight = inverse(&loadings.times(&alpha)).ok_or_else(no_normalisation)?;
+        let combination = weight.times(&loadings);
+        let errors = (0..self.observations)
+            .map(|t| {
+                let parts = equations.iter().enumerate();
+                parts
+                    .map(|(i, e)| combination.at(0, i) * e.residuals[t])
+                    .sum()
+            })
+            .collect();
         let free = Matrix::from_fn(self.observations, rows - rank, |t, j| {
             self.r1.at(t, rank + j)
         });
@@ -123,6 +147,39 @@ impl Johansen {
             equations,
             residual_covariance: omega,
             log_likelihood: self.log_likelihood(rank),
+            relation: RelationErrors {
+                regressors: free,
+                errors,
+                inverse_gram: gram,
+                variance: weight.at(0, 0),
+            },
         })
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::super::{JohansenCase, johansen};
+    use crate::estimate::test_data::{close, danish};
+    use crate::linalg::decompose::column;
+
+    /// The errors' variance and gram give the standard errors of β, and at the maximum of the likelihood the errors
+    /// do not correlate with the lagged levels.
+    #[test]
+    fn errors_of_the_relation_are_those_of_its_coefficients() {
+        let series = ["lrm", "lry", "ibo", "ide"].map(danish);
+        for case in [JohansenCase::Constant, JohansenCase::RestrictedTrend] {
+            let model = johansen(&series, 2, case, &[]).unwrap().vecm(1).unwrap();
+            let relation = &model.relation;
+            for j in 0..relation.regressors.columns() {
+                let error = (relation.variance * relation.inverse_gram.at(j, j)).sqrt();
+                close("error", error, model.beta_errors.at(j + 1, 0), 1e-10);
+                let x = column(&relation.regressors, j);
+                let products: Vec<f64> =
+                    x.iter().zip(&relation.errors).map(|(x, w)| x * w).collect();
+                let size: f64 = products.iter().map(|p| p.abs()).sum();
+                assert!(products.iter().sum::<f64>().abs() < 1e-9 * size);
+            }
+        }
     }
 }

@@ -92,6 +92,20 @@ pub fn adf(y: &Regressor, deterministic: Deterministic, lags: Lags) -> Result<Ad
     })
 }
 
+/// The regression behind the test: `Δy` on deterministic terms, the lagged level and `lags` lagged
+/// differences, on all rows that the lags leave.
+///
+/// # Errors
+/// As [`adf`].
+pub fn dickey_fuller_regression(
+    y: &Regressor,
+    deterministic: Deterministic,
+    lags: usize,
+) -> Result<Ols, SeriesError> {
+    check(&[y])?;
+    regression(y, deterministic, lags, lags)
+}
+
 /// The number of lags, and the most that were tried where it was chosen.
 pub(super) fn choose(
     y: &Regressor,

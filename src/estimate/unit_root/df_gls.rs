@@ -15,6 +15,8 @@ pub struct DfGls {
     pub lags: usize,
     /// Rows of the regression.
     pub observations: usize,
+    /// The series after detrending, n values.
+    pub detrended: Vec<f64>,
 }
 
 /// Test of a unit root with more power near one than the Dickey–Fuller test.
@@ -86,5 +88,6 @@ pub fn df_gls(
         statistic,
         lags,
         observations,
+        detrended: detrended.values,
     })
 }

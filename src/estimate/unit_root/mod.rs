@@ -14,7 +14,7 @@ mod zivot_andrews;
 #[cfg(test)]
 mod tests;
 
-pub use adf::{Adf, LagCriterion, Lags, adf, schwert_lags};
+pub use adf::{Adf, LagCriterion, Lags, adf, dickey_fuller_regression, schwert_lags};
 pub use df_gls::{DfGls, df_gls};
 pub use kpss::{Kpss, KpssLags, PBound, kpss};
 pub use mackinnon::{CriticalValues, mackinnon_critical, mackinnon_p};

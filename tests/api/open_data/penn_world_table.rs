@@ -428,3 +428,123 @@ async fn a_page_prints_reasons_in_place_of_unreliable_rates_unless_asked() {
     );
     app.stop().await;
 }
+
+/// A study by every estimator, over HTTP: each gives both equations with its tests, the page holds them all, and the
+/// same digits come twice. Instruments are the other side's income, for the exercise alone.
+#[tokio::test]
+async fn every_estimator_is_taken_by_name() {
+    let app = prepared().await;
+    let mut document = study("USA");
+    let estimators = [
+        "ardl",
+        "ols_levels",
+        "ols_differences",
+        "autoregressive_errors",
+        "two_stage_levels",
+        "two_stage_differences",
+        "seemingly_unrelated",
+        "seemingly_unrelated_differences",
+        "dols",
+        "fmols",
+        "johansen",
+    ];
+    document["estimators"] = json!(estimators);
+    document["headline"] = json!({ "form": "strong_form", "estimator": "ardl" });
+    document["interval"] = json!({ "method": "fieller" });
+    document["import_demand"]["instruments"] = json!(["A.USA.foreign_income...USD"]);
+    document["import_demand"]["terms"] = json!(["trend"]);
+    document["export_demand"]["instruments"] = json!(["A.USA.gdp_real...USD"]);
+    document["ardl"] = json!({ "criterion": "aic", "max_lags": 2 });
+    document["dols"] = json!({ "leads": 1, "lags": 1 });
+    document["autoregressive_errors"] = json!({ "first_observation": "dropped" });
+    document["seemingly_unrelated"] = json!({ "iterate": false });
+    document["johansen"] = json!({ "lags": 2, "case": "restricted_trend" });
+    document["simulation"] = json!({ "draws": 200, "seed": 3 });
+    let path = "/v1/studies/everything";
+    let run = put_and_run(&app, path, &document).await;
+    let again = app.post(&format!("{path}/runs"), "").await.expect(201);
+    assert_eq!(result(&run), result(&again));
+    let found = run.at("/result/estimators");
+    let found = found.as_array().expect("a list");
+    for (found, name) in found.iter().zip(estimators) {
+        assert_eq!(found["estimator"], name);
+        let levels = !name.ends_with("differences");
+        for side in ["import_demand", "export_demand"] {
+            let tests = found[side]["tests"].as_array().expect("a list");
+            let about = |group: &str| tests.iter().filter(|t| t["group"] == group).count();
+            assert_eq!(about("cointegration") > 0, levels, "{name} {side}");
+            assert!(about("diagnostic") >= 3, "{name} {side}");
+            assert_eq!(
+                about("instruments") > 0,
+                name.starts_with("two_stage"),
+                "{name}"
+            );
+            let dynamic = ["ardl", "johansen"].contains(&name);
+            assert_eq!(
+                found[side]["adjustment"].is_object(),
+                dynamic,
+                "{name} {side}"
+            );
+            assert_eq!(
+                !found[side]["dynamics"].is_null(),
+                dynamic || name == "dols"
+            );
+        }
+        // The trend of import demand is autonomous growth, in differences the constant.
+        assert!(found["import_autonomous_growth"].is_object(), "{name}");
+        numbers_of(found, "strong_form");
+    }
+    let page = format!("{path}/runs/{}?format=text", run.at("/id"));
+    let page = app.get(&page).await.expect(200).text();
+    for part in [
+        "ARDL, long run",
+        "VECM, one relation",
+        "system, differences",
+        "two-stage, levels",
+        "case V",
+        "bounds F",
+        "Tests of the equations",
+    ] {
+        assert!(page.contains(part), "no '{part}' in\n{page}");
+    }
+    assert!(page.lines().all(|l| l.chars().count() <= 100), "{page}");
+
+    document["ardl"] = json!({ "criterion": "aic", "lags": 2 });
+    let refused = app.put(path, &document.to_string()).await.expect(422);
+    assert_eq!(refused.at("/errors/0/pointer"), "/ardl/lags");
+    an_equation_without_adjustment_gives_no_rate(&app).await;
+    app.stop().await;
+}
+
+/// Italy and Japan by ARDL(1,1,1): nothing draws trade back to a level relation, so that no rate is told.
+async fn an_equation_without_adjustment_gives_no_rate(app: &TestApp) {
+    for area in ["ITA", "JPN"] {
+        let mut document = study(area);
+        document["estimators"] = json!(["ardl"]);
+        document["headline"]["estimator"] = json!("ardl");
+        document["ardl"] = json!({ "import_orders": [1, 1, 1], "export_orders": [1, 1, 1] });
+        document["simulation"] = json!({ "draws": 1000 });
+        document
+            .as_object_mut()
+            .expect("an object")
+            .remove("covariance");
+        let run = put_and_run(app, &format!("/v1/studies/{area}"), &document).await;
+        let forms = run.at("/result/estimators/0/forms");
+        for form in forms.as_array().expect("a list") {
+            assert!(form["rate"].is_null(), "{area}: {form}");
+            let unreliable = &form["unreliable"];
+            if unreliable.is_null() {
+                assert!(form["refused"].is_string(), "{area}: {form}");
+                continue;
+            }
+            let reasons = unreliable["reasons"].as_array().expect("a list");
+            for code in ["no_cointegration", "adjustment_outside_range"] {
+                assert!(reasons.iter().any(|r| r["code"] == code), "{area}: {form}");
+            }
+        }
+        let page = format!("/v1/studies/{area}/runs/{}?format=text", run.at("/id"));
+        let page = app.get(&page).await.expect(200).text();
+        assert!(page.contains("Balance-of-payments limit   "), "{page}");
+        assert!(!page.contains("interval ["), "{page}");
+    }
+}

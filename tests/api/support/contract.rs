@@ -11,7 +11,7 @@ use super::app::Answer;
 
 /// The document as the program makes it.
 pub(crate) static DOCUMENT: LazyLock<Value> = LazyLock::new(|| {
-    serde_json::from_str(&realterms::http::openapi::document()).expect("the document is JSON")
+    serde_json::from_str(realterms::http::openapi::document()).expect("the document is JSON")
 });
 
 /// An operation and a status of it: path, method, status.

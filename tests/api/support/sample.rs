@@ -18,7 +18,12 @@ pub(crate) const STUDY: &str = r#"{"title": "XAA", "area": "XAA", "frequency": "
     "import_demand": {"volume": "A.XAA.imports_real", "activity": "A.XAA.gdp_real"},
     "export_demand": {"volume": "A.XAA.exports_real", "activity": "A.XBB.gdp_real...USD"}}"#;
 
-/// Stores currency, upload (its number is 1), preparation with a run, study with a run, all named `sample`.
+/// An estimate from the real series.
+pub(crate) const ESTIMATE: &str = r#"{"method": "ordinary_least_squares",
+    "dependent": "A.XAA.imports_real", "regressors": ["A.XAA.gdp_real"]}"#;
+
+/// Stores currency, upload (its number is 1), preparation with a run, study with a run, all named `sample`, and
+/// an estimate (its number is 1).
 /// Answers the path of the study's run.
 pub(crate) async fn fill(app: &TestApp) -> String {
     app.put(
@@ -59,6 +64,7 @@ pub(crate) async fn fill(app: &TestApp) -> String {
         let query = format!("kind={kind}&prices=constant&price_reference=2015&released=2021-03-31");
         app.upload(&query, file).await.expect(201);
     }
+    app.post("/v1/estimates", ESTIMATE).await.expect(201);
     app.put("/v1/studies/sample", STUDY).await.expect(201);
     let run = app.post("/v1/studies/sample/runs", "").await.expect(201);
     run.header("location").expect("it says where").to_owned()

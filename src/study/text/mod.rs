@@ -3,15 +3,22 @@
 //! Growth rates are printed as compound per cent a year; what should not be relied on is replaced by
 //! a letter that leads to the reasons.
 
-use super::document::{CrossCovariance, Estimator};
-use super::outcome::{Estimate, EstimatorResult, FormNumbers, FormResult, Outcome};
+mod equations;
+mod words;
+
+use words::{describe, describe_all, estimator_label, form_label, interval, letter, verdict};
+
+use super::document::CrossCovariance;
+use super::outcome::{EstimatorResult, FormNumbers, FormResult, Outcome};
 use super::run::compound;
-use crate::constraint::{Form, IntervalMethod, Region};
+use crate::constraint::{Form, IntervalMethod};
 use crate::finding::{Finding, Severity};
 
 const WIDTH: usize = 96;
 const LABEL: usize = 34;
 const CELL: usize = 32;
+/// Estimators that stand side by side.
+const ACROSS: usize = 2;
 
 /// Prints an outcome for a reader. `header_lines` come below the title; with `with_unreliable`,
 /// numbers that should not be relied on are printed, marked by their letter.
@@ -27,6 +34,7 @@ pub fn render(outcome: &Outcome, header_lines: &[String], with_unreliable: bool)
     page.headline();
     page.rates();
     page.elasticities();
+    page.tests();
     page.price_effects();
     page.near_identity();
     page.findings();
@@ -134,109 +142,34 @@ impl Page<'_> {
             ),
             "",
         );
-        self.text.push('\n');
-        self.estimator_heads();
-        self.form_rows(|page, form, headline| {
-            let star = if headline { "*" } else { "" };
-            page.form_cell(form, |numbers| {
-                let (rate, region) = (numbers.rate?, numbers.interval?);
-                Some(format!(
-                    "{:.2}{star} {}",
-                    compound(rate),
-                    interval(region.map(compound))
-                ))
-            })
-        });
         let free = |f: &FormResult| numbers(f).rate_with_autonomous_growth.is_some();
-        if outcome.estimators.iter().any(|e| e.forms.iter().any(free)) {
-            self.text.push('\n');
-            self.line("With autonomous growth (the constants of the equations in differences)");
-            self.form_rows(|page, form, _| {
+        for estimators in outcome.estimators.chunks(ACROSS) {
+            self.estimator_heads(estimators);
+            self.form_rows(estimators, |page, form, headline| {
+                let star = if headline { "*" } else { "" };
                 page.form_cell(form, |numbers| {
-                    Some(match numbers.rate_with_autonomous_growth {
-                        Some(rate) => format!("{:.2}", compound(rate)),
-                        None => "-".to_owned(),
-                    })
+                    let (rate, region) = (numbers.rate?, numbers.interval?);
+                    Some(format!(
+                        "{:.2}{star} {}",
+                        compound(rate),
+                        interval(region.map(compound))
+                    ))
                 })
             });
+            if estimators.iter().any(|e| e.forms.iter().any(free)) {
+                self.text.push('\n');
+                self.line("With autonomous growth (constants in differences, trends in levels)");
+                self.form_rows(estimators, |page, form, _| {
+                    page.form_cell(form, |numbers| {
+                        Some(match numbers.rate_with_autonomous_growth {
+                            Some(rate) => format!("{:.2}", compound(rate)),
+                            None => "-".to_owned(),
+                        })
+                    })
+                });
+            }
         }
         self.print_notes();
-    }
-
-    fn elasticities(&mut self) {
-        self.section("Elasticities and equations");
-        self.line("Standard errors in brackets.");
-        self.text.push('\n');
-        self.estimator_heads();
-        let plain = |e: &Estimate| format!("{:.2} ({:.2})", e.value, e.std_error);
-        let absent = || "-".to_owned();
-        type Cell<'c> = &'c dyn Fn(&EstimatorResult) -> String;
-        let rate = |e: &Option<Estimate>| e.as_ref().map_or_else(absent, plain);
-        let equation = |r: &super::outcome::EquationResult| {
-            let two = |v: Option<f64>| v.map_or_else(absent, |v| format!("{v:.2}"));
-            format!(
-                "{}, {}, {}",
-                two(r.r_squared),
-                two(r.durbin_watson),
-                r.observations
-            )
-        };
-        let rows: [(&str, Cell<'_>); 8] = [
-            ("imports: income elasticity", &|r| {
-                plain(&r.import_income_elasticity)
-            }),
-            ("imports: price elasticity", &|r| {
-                rate(&r.import_price_elasticity)
-            }),
-            ("imports: autonomous growth, log %", &|r| {
-                rate(&r.import_autonomous_growth)
-            }),
-            ("imports: R2, Durbin-Watson, n", &|r| {
-                equation(&r.import_demand)
-            }),
-            ("exports: income elasticity", &|r| {
-                plain(&r.export_income_elasticity)
-            }),
-            ("exports: price elasticity", &|r| {
-                rate(&r.export_price_elasticity)
-            }),
-            ("exports: autonomous growth, log %", &|r| {
-                rate(&r.export_autonomous_growth)
-            }),
-            ("exports: R2, Durbin-Watson, n", &|r| {
-                equation(&r.export_demand)
-            }),
-        ];
-        for (label, cell) in rows {
-            let cells: Vec<String> = self.outcome.estimators.iter().map(cell).collect();
-            self.row(label, &cells);
-        }
-        let growth = &self.outcome.growth;
-        let mut means = vec![
-            ("exports", growth.exports),
-            ("imports", growth.imports),
-            ("home activity", growth.home_activity),
-            ("foreign income", growth.foreign_income),
-        ];
-        let prices = [
-            ("terms of trade", growth.terms_of_trade),
-            ("home over import price", growth.import_relative_price),
-            (
-                "export over competitors' price",
-                growth.export_relative_price,
-            ),
-        ];
-        means.extend(
-            prices
-                .iter()
-                .filter_map(|(label, g)| g.map(|g| (*label, g))),
-        );
-        let means: Vec<String> = means
-            .iter()
-            .map(|(label, g)| format!("{label} {:.2}", compound(*g)))
-            .collect();
-        self.text.push('\n');
-        self.paragraph(&format!("Average growth: {}.", means.join(", ")), "");
     }
 
     fn price_effects(&mut self) {
@@ -251,25 +184,12 @@ impl Page<'_> {
              weak and strong forms leave it out, the forms with prices include it.",
             "",
         );
-        self.text.push('\n');
-        self.estimator_heads();
-        self.form_rows(|page, form, _| {
-            page.form_cell(form, |numbers| {
-                let Some(effect) = &numbers.relative_price_effect else {
-                    return Some("-".to_owned());
-                };
-                let p = match effect.p_zero {
-                    Some(p) if p < 0.005 => " p <0.01".to_owned(),
-                    Some(p) => format!(" p {p:.2}"),
-                    None => String::new(),
-                };
-                Some(format!(
-                    "{:+.2} {}{p}",
-                    effect.effect,
-                    interval(effect.interval)
-                ))
-            })
-        });
+        for estimators in self.outcome.estimators.chunks(ACROSS) {
+            self.estimator_heads(estimators);
+            self.form_rows(estimators, |page, form, _| {
+                page.form_cell(form, effect_cell)
+            });
+        }
     }
 
     fn near_identity(&mut self) {
@@ -328,7 +248,11 @@ impl Page<'_> {
     }
 
     /// One row a form, one cell an estimator.
-    fn form_rows(&mut self, cell: impl Fn(&mut Self, &FormResult, bool) -> String) {
+    fn form_rows(
+        &mut self,
+        estimators: &[EstimatorResult],
+        cell: impl Fn(&mut Self, &FormResult, bool) -> String,
+    ) {
         let outcome = self.outcome;
         let forms: Vec<Form> = outcome
             .estimators
@@ -339,7 +263,7 @@ impl Page<'_> {
                 outcome.headline.form == form && outcome.headline.estimator == e.estimator
             };
             let mut cells = Vec::new();
-            for result in &outcome.estimators {
+            for result in estimators {
                 cells.push(cell(self, &result.forms[i], headline(result)));
             }
             self.row(form_label(form), &cells);
@@ -391,10 +315,9 @@ impl Page<'_> {
         }
     }
 
-    fn estimator_heads(&mut self) {
-        let heads: Vec<String> = self
-            .outcome
-            .estimators
+    fn estimator_heads(&mut self, estimators: &[EstimatorResult]) {
+        self.text.push('\n');
+        let heads: Vec<String> = estimators
             .iter()
             .map(|e| estimator_label(e.estimator).to_owned())
             .collect();
@@ -445,14 +368,6 @@ impl Page<'_> {
     }
 }
 
-fn describe_all(findings: &[Finding]) -> Vec<String> {
-    findings.iter().map(describe).collect()
-}
-
-fn describe(finding: &Finding) -> String {
-    format!("{} [{}]", finding.message, finding.code)
-}
-
 /// A form's numbers, reliable or not.
 fn numbers(form: &FormResult) -> &FormNumbers {
     form.unreliable
@@ -460,65 +375,19 @@ fn numbers(form: &FormResult) -> &FormNumbers {
         .map_or(&form.numbers, |u| &u.numbers)
 }
 
-fn form_label(form: Form) -> &'static str {
-    match form {
-        Form::WeakForm => "weak form",
-        Form::WeakFormWithPrices => "weak form with prices",
-        Form::StrongForm => "strong form",
-        Form::WithRelativePrices => "strong form with relative prices",
-    }
-}
-
-fn estimator_label(estimator: Estimator) -> &'static str {
-    match estimator {
-        Estimator::OlsLevels => "least squares, levels",
-        Estimator::OlsDifferences => "least squares, differences",
-    }
-}
-
-/// A confidence set in brackets.
-fn interval(region: Region) -> String {
-    match region {
-        Region::Interval { low, high } => format!("[{}, {}]", end(low), end(high)),
-        Region::Complement { low, high } => format!("<{} or >{}", end(low), end(high)),
-        Region::WholeLine => "any rate".to_owned(),
-    }
-}
-
-fn end(value: f64) -> String {
-    if value.abs() < 1000.0 {
-        format!("{value:.2}")
-    } else if value > 0.0 {
-        "over 1000".to_owned()
-    } else {
-        "below -1000".to_owned()
-    }
-}
-
-/// a to z, then aa, ab, …
-fn letter(i: usize) -> String {
-    let own = char::from(b'a' + u8::try_from(i % 26).unwrap_or(0));
-    let before = if i < 26 {
-        String::new()
-    } else {
-        letter(i / 26 - 1)
+/// What relative prices add, with the p-value.
+fn effect_cell(numbers: &FormNumbers) -> Option<String> {
+    let Some(effect) = &numbers.relative_price_effect else {
+        return Some("-".to_owned());
     };
-    format!("{before}{own}")
-}
-
-/// What actual growth beside the interval says.
-fn verdict(actual: f64, region: Region) -> &'static str {
-    match region {
-        Region::Interval { low, .. } if actual < low => {
-            "The economy grew more slowly than its trade would have paid for: the balance of payments was \
-             not what held it back."
-        }
-        Region::Interval { high, .. } if actual > high => {
-            "The economy grew faster than its exports paid for: the difference was financed from abroad or \
-             by relative prices."
-        }
-        Region::Interval { .. } | Region::Complement { .. } | Region::WholeLine => {
-            "Actual growth lies within the interval: the economy grew about as fast as its trade paid for."
-        }
-    }
+    let p = match effect.p_zero {
+        Some(p) if p < 0.005 => " p <0.01".to_owned(),
+        Some(p) => format!(" p {p:.2}"),
+        None => String::new(),
+    };
+    Some(format!(
+        "{:+.2} {}{p}",
+        effect.effect,
+        interval(effect.interval)
+    ))
 }
