@@ -45,6 +45,9 @@ impl DatabaseCommand {
             }
             Self::Dump { file } => {
                 let holder = "realterms database dump";
+                if settings.database_url.is_none() {
+                    settings.cluster(holder)?.check_existing()?;
+                }
                 let tools = settings.tools(holder)?;
                 let options = settings.database(holder, true)?;
                 let database = Database::open_without_migrating(&options).await?;

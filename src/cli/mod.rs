@@ -11,6 +11,7 @@ use crate::store::cluster;
 use crate::telemetry;
 use clap::error::{ContextKind, ContextValue};
 use clap::{CommandFactory, Parser, Subcommand};
+use std::io::Write as _;
 use std::process::ExitCode;
 
 /// Raw trade, price and income files in; the growth rate that the balance of payments allows out.
@@ -66,6 +67,7 @@ pub fn main() -> ExitCode {
     }
     match run(cli) {
         Ok(()) => ExitCode::SUCCESS,
+        Err(error) if unread(&error) => ExitCode::SUCCESS,
         Err(error) => {
             complain(&error);
             ExitCode::FAILURE
@@ -117,16 +119,19 @@ fn run(cli: Cli) -> anyhow::Result<()> {
     })
 }
 
-#[expect(
-    clippy::print_stderr,
-    reason = "the last word of a command that failed"
-)]
+/// The last word of a command that failed.
 fn complain(error: &anyhow::Error) {
-    eprintln!("realterms: {error:#}");
+    // Nobody listens any more: not even that can be said.
+    let _ = writeln!(std::io::stderr(), "realterms: {error:#}");
 }
 
-/// Prints a line of a command's answer.
-#[expect(clippy::print_stdout, reason = "what the command is asked for")]
+/// Prints a line of a command's answer. Whoever reads may have stopped reading (`| head`), which is no error.
 fn say(line: impl std::fmt::Display) {
-    println!("{line}");
+    let _ = writeln!(std::io::stdout(), "{line}");
+}
+
+/// Whether a command failed for nothing but that nobody reads its answer any more.
+fn unread(error: &anyhow::Error) -> bool {
+    let error = error.downcast_ref::<std::io::Error>();
+    error.is_some_and(|e| e.kind() == std::io::ErrorKind::BrokenPipe)
 }

@@ -63,18 +63,18 @@ impl Application {
     /// Binds the address and prepares the server on an open database.
     ///
     /// # Errors
-    /// The address is taken; or it is not a loopback address and no token exists.
+    /// The address is taken; or it is not a loopback address and no token is valid.
     pub async fn build(options: Options, database: Database) -> anyhow::Result<Self> {
-        let open = {
+        let existing = {
             let mut connection = database.connection().await?;
-            !tokens::any(&mut connection)
+            tokens::existing(&mut connection)
                 .await
                 .map_err(|fault| anyhow::anyhow!("the tokens cannot be read: {fault:?}"))?
         };
         let loopback = options.listen.ip().is_loopback();
-        if open && !loopback {
+        if !existing.valid && !loopback {
             anyhow::bail!(
-                "{} can be reached from other machines and no token exists; make one first: realterms \
+                "{} can be reached from other machines and no token is valid; make one first: realterms \
                  token create --name NAME --role administer",
                 options.listen
             );
@@ -86,8 +86,13 @@ impl Application {
             )
         })?;
         let address = listener.local_addr()?;
-        if open {
-            tracing::warn!(address = %address, "no token exists: everybody on this machine may do everything");
+        if !existing.ever {
+            tracing::warn!(address = %address, "no token was ever made: everybody on this machine may do everything");
+        } else if !existing.valid {
+            tracing::warn!(
+                address = %address,
+                "every token was revoked and nobody is let in: make one with realterms token create"
+            );
         }
         let shared = Arc::new(Shared {
             database,

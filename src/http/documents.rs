@@ -71,7 +71,7 @@ fn put_successes() -> Vec<Success> {
 
 /// The routes that both kinds of documents share.
 macro_rules! document_routes {
-    ($kind:expr, $base:literal, $plural:literal, $singular:literal) => {
+    ($kind:expr, $base:literal, $plural:literal, $singular:literal, put: $put_problems:expr) => {
         vec![
             Route {
                 method: Method::Get,
@@ -102,7 +102,7 @@ macro_rules! document_routes {
                 headers: PUT_HEADERS,
                 body: &[("application/json", object)],
                 successes: put_successes,
-                problems: &[412, 422],
+                problems: $put_problems,
                 handler: |call| {
                     Box::pin(async move {
                         let mut call = call;
@@ -201,13 +201,15 @@ pub(super) fn routes() -> Vec<Route> {
         DocumentKind::Preparation,
         "/v1/preparations",
         "preparations",
-        "preparation"
+        "preparation",
+        put: &[409, 412, 422]
     );
     routes.extend(document_routes!(
         DocumentKind::Study,
         "/v1/studies",
         "studies",
-        "study"
+        "study",
+        put: &[412, 422]
     ));
     routes.extend([
         Route {

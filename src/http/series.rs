@@ -63,8 +63,16 @@ fn read_parameters() -> Vec<Parameter> {
 fn observation_parameters() -> Vec<Parameter> {
     let mut parameters = read_parameters();
     parameters.extend([
-        optional("from", Form::Text, "first period wanted"),
-        optional("to", Form::Text, "last period wanted"),
+        optional(
+            "from",
+            Form::Text,
+            "first period wanted, or a longer one that begins with it",
+        ),
+        optional(
+            "to",
+            Form::Text,
+            "last period wanted, or a longer one that ends with it",
+        ),
         optional(
             "growth",
             Form::OneOf(series::growth_names()),
@@ -80,7 +88,7 @@ fn lineage_parameters() -> Vec<Parameter> {
     parameters.push(optional(
         "period",
         Form::Text,
-        "one period, down to its line",
+        "one period of the series; what it rests on is told whole",
     ));
     parameters
 }
@@ -156,7 +164,7 @@ pub(super) fn routes() -> Vec<Route> {
             method: Method::Get,
             path: "/v1/series/{key}/vintages",
             name: "list_vintages",
-            summary: "The vintages with what each changed, oldest release first",
+            summary: "The vintages with what each changed, by the release that speaks, oldest first",
             role: Some(Role::Read),
             parameters: paging,
             headers: &[],
@@ -175,7 +183,7 @@ pub(super) fn routes() -> Vec<Route> {
             method: Method::Get,
             path: "/v1/series/{key}/lineage",
             name: "get_lineage",
-            summary: "Where observations come from: upload and line, or run, steps and inputs",
+            summary: "Where observations come from: through runs, steps and their inputs down to upload and line",
             role: Some(Role::Read),
             parameters: lineage_parameters,
             headers: &[],

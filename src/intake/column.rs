@@ -1,9 +1,11 @@
 //! The columns that a long table may have, and what a cell of each may hold.
 
+use super::kind::Kind;
 use super::nearest::nearest;
 use super::number;
 use super::settings::Context;
 use crate::finding::Finding;
+use crate::series::algebra::Span;
 use crate::series::{CurrencyCode, is_iso_4217, iso_4217};
 use crate::time::Period;
 
@@ -46,8 +48,8 @@ pub(super) enum Cell {
     Currency,
     /// One of these words.
     OneOf(&'static [&'static str]),
-    /// A period, in any notation.
-    Period,
+    /// A period in any notation, or a span of them.
+    Span,
     /// A year.
     Year,
     /// A number above zero.
@@ -180,14 +182,14 @@ impl Column {
             ),
             Self::PriceReference => (
                 "price_reference",
-                "Period in whose prices constant or chained amounts stand",
-                Cell::Period,
+                "Period in whose prices constant or chained amounts stand, or first and last of several",
+                Cell::Span,
                 "2015",
             ),
             Self::Reference => (
                 "reference",
-                "Reference period of the index",
-                Cell::Period,
+                "Reference period of the index, or first and last of several: 1982/1984",
+                Cell::Span,
                 "2015",
             ),
             Self::ReferenceValue => (
@@ -273,13 +275,14 @@ impl Column {
         context: Option<&Context>,
     ) -> Result<(), Box<Finding>> {
         let spec = self.spec();
+        let unfit = |code: &str, expected: &str| {
+            Finding::error(code, format!("'{text}' cannot stand for {}", spec.name))
+                .at_column(spec.name)
+                .found(text)
+                .expected(expected)
+        };
         let wrong = |code: &str, expected: &str| {
-            Box::new(
-                Finding::error(code, format!("'{text}' cannot stand for {}", spec.name))
-                    .at_column(spec.name)
-                    .found(text)
-                    .expected(expected),
-            )
+            Box::new(unfit(code, expected).remedy(format!("write {expected}")))
         };
         match spec.cell {
             Cell::Code => {
@@ -295,8 +298,13 @@ impl Column {
                 if measures.contains(&text) {
                     return Ok(());
                 }
+                let unknown = unfit("unknown_measure", &measures.join(", "));
+                if let Some(kind) = Kind::of_measure(text) {
+                    let remedy = format!("{text} is a measure of kind={kind}; send it as that");
+                    return Err(Box::new(unknown.remedy(remedy)));
+                }
                 Err(suggest(
-                    *wrong("unknown_measure", &measures.join(", ")),
+                    unknown,
                     &nearest(text, measures.iter().copied(), 3),
                 ))
             }
@@ -306,15 +314,20 @@ impl Column {
                     return Ok(());
                 }
                 Err(suggest(
-                    *wrong("unknown_word", &words.join(", ")),
+                    unfit("unknown_word", &words.join(", ")),
                     &nearest(text, words.iter().copied(), 1),
                 ))
             }
-            Cell::Period => {
-                let period = text.parse::<Period>();
-                let good = period.is_ok_and(|p| YEARS.contains(&year(p)));
-                good.then_some(())
-                    .ok_or_else(|| wrong("wrong_period", "a period such as 2015 or 2015-Q1"))
+            Cell::Span => {
+                let span = text.parse::<Span>();
+                let good = span.is_ok_and(|s| {
+                    YEARS.contains(&year(s.first())) && YEARS.contains(&year(s.last()))
+                });
+                good.then_some(()).ok_or_else(|| {
+                    let expected =
+                        "a period such as 2015 or 2015-Q1, or first and last such as 1982/1984";
+                    wrong("wrong_period", expected)
+                })
             }
             Cell::Year => {
                 let good = text.len() == 4 && text.parse().is_ok_and(|y| YEARS.contains(&y));
@@ -348,6 +361,7 @@ fn year(period: Period) -> i32 {
 /// Adds the words that were probably meant.
 pub(super) fn suggest(finding: Finding, nearest: &[&str]) -> Box<Finding> {
     Box::new(match nearest {
+        [] if finding.remedy.is_none() => finding.remedy("take one of those expected"),
         [] => finding,
         words => finding.remedy(format!("did you mean {}?", words.join(" or "))),
     })

@@ -8,10 +8,11 @@ use super::measure::Form;
 use super::number;
 use super::settings::Context;
 use crate::finding::{Finding, counted};
+use crate::series::algebra::Span;
 use crate::series::{
     Adjustment, CurrencyCode, IndexKind, Prices, Quantity, RateTiming, RateType, Timing, Unit,
 };
-use crate::time::{Frequency, Period};
+use crate::time::Frequency;
 
 /// Descriptive cells of a row with constants filled in, by column; empty where not given.
 pub(super) struct Texts(pub [String; Column::COUNT]);
@@ -69,7 +70,10 @@ pub(super) fn describe(
             return Err(Box::new(
                 Finding::error("empty_cell", format!("{name} is required and empty"))
                     .at_column(name)
-                    .expected(column.spec().description),
+                    .expected(column.spec().description)
+                    .remedy(format!(
+                        "fill the cell, or state it for the whole file: {name}=…"
+                    )),
             ));
         }
     }
@@ -180,13 +184,14 @@ fn not_applicable(column: Column, why: &str) -> Box<Finding> {
             "not_applicable",
             format!("{} does not fit: {why}", column.name()),
         )
-        .at_column(column.name()),
+        .at_column(column.name())
+        .remedy("empty the cell or drop the parameter, or correct what it does not fit"),
     )
 }
 
-/// A period or year in the one notation that units keep.
+/// A period or span in the one notation that units keep.
 fn reference(text: &str) -> Option<String> {
-    text.parse::<Period>().ok().map(|p| p.to_string())
+    text.parse::<Span>().ok().map(|s| s.to_string())
 }
 
 fn prices(form: Form, measure: &str, texts: &Texts) -> Result<Prices, Box<Finding>> {
@@ -286,7 +291,10 @@ fn rate(
             Finding::error("same_currency", format!("{own} is the own money of {area}"))
                 .at_column(Column::Currency.name())
                 .found(foreign.to_string())
-                .expected("another currency than the area's own"),
+                .expected("another currency than the area's own")
+                .remedy(
+                    "name the currency that is priced; own_currency is the one it is priced in",
+                ),
         ));
     }
     let (numerator, denominator) = match texts.get(Column::Quotation) {

@@ -103,31 +103,32 @@ pub struct Reject {
 }
 
 impl Reject {
-    /// A key given twice with different values, as [`crate::series::Fragment::settle`] finds it.
+    /// One of the rows that give a key different values, as [`crate::series::Fragment::settle`] finds it.
     #[must_use]
     pub fn duplicate(key: &SeriesKey, duplicate: &Duplicate) -> Self {
         let shown = |value: f64| match value.is_nan() {
             true => "missing".to_owned(),
             false => value.to_string(),
         };
-        let first = shown(duplicate.first_value);
-        let mut second = shown(duplicate.value);
-        if same(duplicate.first_value, duplicate.value) {
-            second += " with another status";
+        let (line, other) = (duplicate.line, duplicate.other_line);
+        let value = shown(duplicate.value);
+        let mut contrary = shown(duplicate.other_value);
+        if same(duplicate.value, duplicate.other_value) {
+            contrary += " with another status";
         }
-        let (line, first_line) = (duplicate.line, duplicate.first_line);
+        let (first, second) = (line.min(other), line.max(other));
         let finding = Finding::error(
             "duplicate_key",
             format!(
-                "lines {first_line} and {line} give one period of one series twice, differently"
+                "lines {first} and {second} give one period of one series twice, differently; neither counts"
             ),
         )
         .at_line(u64::from(line))
         .at_series(key)
         .at_period(duplicate.period)
-        .found(format!("{second} on line {line}"))
-        .expected(format!("{first}, as on line {first_line}"))
-        .remedy("remove one of the two rows, or tell the series apart by another column");
+        .found(format!("{value} on line {line}"))
+        .expected(format!("what line {other} says: {contrary}"))
+        .remedy("remove the wrong row, or tell the series apart by another column");
         Self {
             finding,
             row: String::new(),

@@ -132,8 +132,10 @@ impl Gather {
     fn open(&mut self, slot: u32, period: Period) -> Result<u32, Box<Finding>> {
         let described = &self.described[slot as usize];
         let places = described.places.each_ref().map(String::as_str);
-        let key = SeriesKey::new(period.frequency(), places)
-            .map_err(|e| Box::new(Finding::error("not_a_key", e.to_string())))?;
+        let key = SeriesKey::new(period.frequency(), places).map_err(|e| {
+            let finding = Finding::error("not_a_key", e.to_string());
+            Box::new(finding.remedy("shorten or correct the codes of the row"))
+        })?;
         let same_key = self.by_key.entry(key.clone()).or_default();
         let known = same_key
             .iter()

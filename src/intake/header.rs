@@ -79,7 +79,10 @@ impl Layout {
                 "the header is too wide",
             )
             .found(names.len().to_string())
-            .expected(format!("at most {} columns", limits.max_columns))));
+            .expected(format!("at most {} columns", limits.max_columns))
+            .remedy(
+                "give one observation a row: area, measure, period and value as columns",
+            )));
         }
         let mut findings = Vec::new();
         let mut columns = Vec::new();

@@ -217,6 +217,12 @@ impl Kind {
         self.columns.iter().map(|(c, _)| c.name()).collect()
     }
 
+    /// Name of the kind that has this measure.
+    pub(super) fn of_measure(name: &str) -> Option<&'static str> {
+        let has = |k: &&Self| k.measures.iter().any(|m| m.name == name);
+        KINDS.iter().find(has).map(|k| k.name)
+    }
+
     pub(super) fn measure_names(&self) -> Vec<&'static str> {
         self.measures.iter().map(|m| m.name).collect()
     }
@@ -234,7 +240,7 @@ impl Kind {
                     Cell::Measure => self.measure_names(),
                     Cell::Code
                     | Cell::Currency
-                    | Cell::Period
+                    | Cell::Span
                     | Cell::Year
                     | Cell::Positive
                     | Cell::PowerOfTen

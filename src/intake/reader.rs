@@ -186,14 +186,16 @@ impl Reader {
         let Some(mut rows) = self.rows else {
             return Err(Fatal::one(
                 Finding::error("empty_body", "the file is empty")
-                    .expected("a header line and rows below it"),
+                    .expected("a header line and rows below it")
+                    .remedy("send the file as the body of the request"),
             ));
         };
         if rows.read == 0 {
             return Err(Fatal::one(
                 Finding::error("no_rows", "the file has a header and no row below it")
                     .at_line(self.lines)
-                    .expected("at least one row"),
+                    .expected("at least one row")
+                    .remedy("send the rows with the header, in one file"),
             ));
         }
         let understood = Understood {

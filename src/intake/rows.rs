@@ -13,7 +13,7 @@ use super::number::{self, NumberFault};
 use super::report::{UnderstoodColumn, UnderstoodPeriods};
 use super::settings::{Context, Limits, Settings};
 use super::split::{Record, Scan, content};
-use crate::finding::Finding;
+use crate::finding::{Finding, counted};
 use crate::series::{CurrencyCode, Status};
 use crate::time::{Date, Frequency, Period};
 
@@ -151,8 +151,8 @@ impl Rows {
                     "cell_count",
                     "the row has another number of cells than the header",
                 )
-                .found(format!("{found} cells"))
-                .expected(format!("{expected} cells"))
+                .found(counted(found, "cell"))
+                .expected(counted(expected, "cell"))
                 .remedy("quote cells that hold the delimiter; fill up rows with empty cells"),
             ));
         }
@@ -317,7 +317,7 @@ impl Rows {
                 ));
             }
             let value = number::parse(&cell, multiplier, &mut self.scratch)
-                .map_err(|fault| number_finding(&cell, fault))?;
+                .map_err(|fault| number_finding(&cell, multiplier, fault))?;
             if !bound.allows(value) {
                 return Err(bound_finding(&cell, bound));
             }
@@ -340,7 +340,8 @@ impl Rows {
                 )
                 .at_column("period")
                 .found(text)
-                .expected(expected),
+                .expected(expected)
+                .remedy(format!("write {expected}")),
             )
         };
         let period = match frequency {
@@ -411,24 +412,42 @@ fn status(text: &str) -> Result<Option<Status>, Box<Finding>> {
             )
             .at_column("status")
             .found(text)
-            .expected("A, B, D, E, F, I, P, U; of missing values O, M, L, Q; or an empty cell"),
+            .expected("A, B, D, E, F, I, P, U; of missing values O, M, L, Q; or an empty cell")
+            .remedy("write one of these letters, or leave the cell empty"),
         )
     })
 }
 
-fn number_finding(text: &str, fault: NumberFault) -> Box<Finding> {
+fn number_finding(text: &str, multiplier: i32, fault: NumberFault) -> Box<Finding> {
     let finding = match fault {
-        NumberFault::Syntax => Finding::error("not_a_number", format!("'{text}' is not a number"))
-            .expected("a number with a decimal point, such as 1234.5 or 1.2345e3"),
-        NumberFault::Range => Finding::error("out_of_range", format!("{text} is too large"))
-            .expected("a number below 1.8e308 in size"),
+        NumberFault::Range if multiplier == 0 => {
+            Finding::error("out_of_range", format!("{text} is too large"))
+                .expected("a number below 1.8e308 in size")
+                .remedy("correct the value, or leave the cell empty where it is missing")
+        }
+        NumberFault::Range => {
+            let message = format!("{text} times 10^{multiplier} is too large");
+            Finding::error("out_of_range", message)
+                .expected("a number below 1.8e308 in size after the unit multiplier")
+                .remedy(format!(
+                    "correct the value, or the unit_multiplier of {multiplier}"
+                ))
+        }
+        NumberFault::Syntax => {
+            let thousands = [',', ' ', '\'', '\u{a0}', '\u{202f}'];
+            Finding::error("not_a_number", format!("'{text}' is not a number"))
+                .expected("a number with a decimal point, such as 1234.5 or 1.2345e3")
+                .remedy(if text.contains(thousands) {
+                    "write a point before decimals and nothing between thousands"
+                } else if text.contains(char::is_numeric) {
+                    "write the number with the digits 0 to 9, a hyphen for minus and a point before \
+                     decimals"
+                } else {
+                    "leave the cell empty where the value is missing"
+                })
+        }
     };
-    let finding = finding.at_column("value").found(text);
-    Box::new(if text.contains([',', ' ', '\'', '\u{a0}', '\u{202f}']) {
-        finding.remedy("write a point before decimals and nothing between thousands")
-    } else {
-        finding.remedy("leave the cell empty where the value is missing")
-    })
+    Box::new(finding.at_column("value").found(text))
 }
 
 fn bound_finding(text: &str, bound: Bound) -> Box<Finding> {

@@ -76,7 +76,10 @@ pub fn level_ratio(base: &State, statement: &Statement) -> Option<Finding> {
     Some(
         Finding::error(
             "level_ratio",
-            format!("the level is {ratio:.4} times what is stored{times}: is the unit multiplier right?"),
+            format!(
+                "the level is {} times what is stored{times}: is the unit multiplier right?",
+                shown(ratio)
+            ),
         )
         .at_period(period)
         .found(format!("{value}"))
@@ -86,6 +89,16 @@ pub fn level_ratio(base: &State, statement: &Statement) -> Option<Finding> {
              the level is right",
         ),
     )
+}
+
+/// Four digits of a ratio, as a power of ten where there would be zeros before them.
+fn shown(ratio: f64) -> String {
+    let rounded: f64 = format!("{ratio:.3e}").parse().unwrap_or(ratio);
+    if rounded.abs() < 1e-4 {
+        format!("{rounded:e}")
+    } else {
+        rounded.to_string()
+    }
 }
 
 fn usable(value: f64) -> bool {
@@ -124,6 +137,19 @@ mod tests {
             status: vec![Status::Normal; values.len()],
             origins: vec![Origin::Upload { id: 1, line: 2 }; values.len()],
             scope: Scope::Merge,
+        }
+    }
+
+    #[test]
+    fn a_ratio_is_shown_with_the_digits_that_tell() {
+        for (ratio, expected) in [
+            (1e-6, "1e-6"),
+            (1.0234e-6, "1.023e-6"),
+            (0.001_002_34, "0.001002"),
+            (1000.43, "1000"),
+            (-1.5e6, "-1500000"),
+        ] {
+            assert_eq!(shown(ratio), expected);
         }
     }
 

@@ -115,12 +115,17 @@ pub async fn get(database: &Database, code: &str) -> Result<CurrencyView, Fault>
 /// Takes a declaration back.
 ///
 /// # Errors
-/// [`Fault::NotFound`]; [`Fault::Conflict`] while series use it and ISO 4217 does not list it.
+/// [`Fault::NotFound`]; [`Fault::Conflict`] while series use it: of a currency that ISO 4217 lists, those of the
+/// areas whose own money it is declared to be.
 pub async fn delete(database: &Database, code: &str) -> Result<(), Fault> {
     let mut transaction = database.begin().await?;
     store::currency::lock(&mut transaction).await?;
     let listed = CurrencyCode::parse(code).is_ok_and(is_iso_4217);
-    if !listed && store::currency::in_use(&mut transaction, code).await? {
+    let used = match listed {
+        true => store::currency::own_money_in_use(&mut transaction, code).await?,
+        false => store::currency::in_use(&mut transaction, code).await?,
+    };
+    if used {
         return Err(Fault::Conflict {
             code: "currency_in_use",
             detail: format!("series are stored in {code}; the declaration explains them and stays"),

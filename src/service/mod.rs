@@ -43,5 +43,5 @@ async fn blocking<T: Send + 'static>(
 /// [`Fault::Store`].
 pub async fn ready(database: &Database) -> Result<(), Fault> {
     let mut connection = database.connection().await?;
-    tokens::any(&mut connection).await.map(|_| ())
+    tokens::existing(&mut connection).await.map(|_| ())
 }

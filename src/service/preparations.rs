@@ -6,7 +6,6 @@ use serde::{Deserialize, Serialize};
 use utoipa::ToSchema;
 
 use super::documents::{self, DocumentKind, timestamp};
-use super::lineage::OriginView;
 use super::retry::retried;
 use super::series::{Moment, pin};
 use super::views::Pin;
@@ -80,9 +79,69 @@ fn parse(body: &str) -> Result<Document, Fault> {
     Document::parse(body).map_err(|errors| documents::refused("bad_preparation", errors))
 }
 
-/// Checks the text of a preparation. Where its inputs are stored already, units are checked too.
+/// Checks the text of a preparation. Where its inputs are stored already, units are checked too; an output may
+/// not be a series that uploads feed.
 pub(super) async fn check(database: &Database, body: &str) -> Result<(), Fault> {
-    check_plan(database, parse(body)?).await.map(|_| ())
+    let document = parse(body)?;
+    let mut connection = database.connection().await?;
+    let keys: Vec<&SeriesKey> = document.outputs().map(|(key, _)| key).collect();
+    let found = store::series::find(&mut connection, &keys).await?;
+    let (keys, ids): (Vec<_>, Vec<_>) = found.into_iter().map(|(i, id)| (keys[i], id)).unzip();
+    refuse_fed(&mut connection, &keys, &ids).await?;
+    drop(connection);
+    check_plan(database, document).await.map(|_| ())
+}
+
+/// A series that uploads feed is no output.
+async fn refuse_fed(
+    connection: &mut Connection,
+    keys: &[&SeriesKey],
+    ids: &[i64],
+) -> Result<(), Fault> {
+    let fed = store::fragment::fed_by_uploads(connection, ids).await?;
+    let Some(i) = ids.iter().position(|id| fed.contains(id)) else {
+        return Ok(());
+    };
+    Err(Fault::Conflict {
+        code: "series_of_uploads",
+        detail: format!(
+            "{} is fed by uploads and cannot be an output; name the output otherwise, for example \
+             by a source of your own",
+            keys[i]
+        ),
+    })
+}
+
+/// A series that the current document of another preparation makes is no output: either run would undo the
+/// other's.
+async fn refuse_owned(
+    connection: &mut Connection,
+    name: &str,
+    keys: &[&SeriesKey],
+    ids: &[i64],
+) -> Result<(), Fault> {
+    let owners = store::vintage::owners(connection, ids).await?;
+    let mut documents: BTreeMap<String, Option<Document>> = BTreeMap::new();
+    for (id, owner) in owners.into_iter().filter(|(_, owner)| owner != name) {
+        if !documents.contains_key(&owner) {
+            let row = store::document::newest(connection, KIND.as_str(), &owner).await?;
+            documents.insert(owner.clone(), row.and_then(|row| parse(&row.body).ok()));
+        }
+        let document = documents.get(&owner).and_then(Option::as_ref);
+        let key = ids.iter().position(|i| *i == id).map(|i| keys[i]);
+        if let Some((document, key)) = document.zip(key)
+            && document.makes(key)
+        {
+            return Err(Fault::Conflict {
+                code: "series_of_preparation",
+                detail: format!(
+                    "{key} is an output of the preparation '{owner}', and one series has one preparation; \
+                     name the output otherwise, or take it out of '{owner}'"
+                ),
+            });
+        }
+    }
+    Ok(())
 }
 
 /// What a preparation would do with the series stored now.
@@ -140,7 +199,7 @@ async fn read_inputs(
 ///
 /// # Errors
 /// [`Fault::NotFound`]; [`Fault::Invalid`] where an input is missing or a step has no result;
-/// [`Fault::Conflict`] where an output is fed by uploads; [`Fault::Store`].
+/// [`Fault::Conflict`] where an output is fed by uploads or by another preparation; [`Fault::Store`].
 pub async fn run(
     database: &Database,
     name: &str,
@@ -179,7 +238,7 @@ pub async fn run(
         .await?;
         let written = write(
             &mut transaction,
-            id,
+            (name, id),
             released,
             moment.is_now(),
             &outputs,
@@ -205,7 +264,7 @@ pub async fn run(
 /// present replaces what is there now, even where that came of a newer release than its own inputs.
 async fn write(
     connection: &mut Connection,
-    run: i64,
+    (name, run): (&str, i64),
     mut released: Date,
     now: bool,
     outputs: &[Output],
@@ -217,17 +276,8 @@ async fn write(
     let units = outputs.iter().map(|o| &o.series.unit);
     let wanted: Vec<(i64, &Unit)> = ids.iter().copied().zip(units).collect();
     let segments = store::series::ensure_segments(connection, &wanted).await?;
-    let fed = store::fragment::fed_by_uploads(connection, &ids).await?;
-    if let Some(i) = ids.iter().position(|id| fed.contains(id)) {
-        return Err(Fault::Conflict {
-            code: "series_of_uploads",
-            detail: format!(
-                "{} is fed by uploads and cannot be an output; name the output otherwise, for example \
-                 by a source of your own",
-                outputs[i].key
-            ),
-        });
-    }
+    refuse_fed(connection, &keys, &ids).await?;
+    refuse_owned(connection, name, &keys, &ids).await?;
     let siblings = store::series::segments_of_series(connection, &ids).await?;
     let all: Vec<i64> = siblings.iter().map(|(_, segment)| *segment).collect();
     let day_after = Date::from_days(released.days() + 1).filter(|_| !now);
@@ -341,13 +391,21 @@ fn run_view(row: RunRow) -> Result<PreparationRun, Fault> {
     })
 }
 
-/// Origin of an output's observations: its steps, and the stored vintages that they rest on, through
-/// other outputs of the same run too.
-pub(super) async fn origin(
+/// What wrote an output: its steps, and the stored vintages that they rest on, through other outputs of the
+/// same run too.
+pub(super) struct Making {
+    pub(super) preparation: String,
+    pub(super) version: i32,
+    pub(super) method_version: String,
+    pub(super) steps: Vec<String>,
+    pub(super) inputs: Vec<Pin>,
+}
+
+pub(super) async fn making(
     database: &Database,
     run: i64,
     key: &SeriesKey,
-) -> Result<OriginView, Fault> {
+) -> Result<Making, Fault> {
     let mut connection = database.connection().await?;
     let row = store::document::run_by_id(&mut connection, run)
         .await?
@@ -365,8 +423,7 @@ pub(super) async fn origin(
             open.extend(output.inputs.iter().map(String::as_str));
         }
     }
-    Ok(OriginView::Run {
-        run: run.id,
+    Ok(Making {
         steps: by_key
             .get(text.as_str())
             .map_or_else(Vec::new, |o| o.steps.clone()),

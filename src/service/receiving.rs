@@ -106,7 +106,8 @@ fn release_date(stated: Option<Date>) -> Result<Date, Fault> {
             let finding = Finding::error("released_in_future", detail.as_str())
                 .at_parameter("released")
                 .found(date.to_string())
-                .expected(format!("a date until today, {today}"));
+                .expected(format!("a date until today, {today}"))
+                .remedy("state the date on which the source released the file");
             Err(Fault::BadRequest {
                 detail,
                 errors: vec![finding],
@@ -262,22 +263,25 @@ async fn store_and_land(
     parts: &mut ReportParts,
 ) -> Result<(&'static str, Option<landing::Landing>), Fault> {
     parts.forget_merge();
-    let series = store::series::ensure(connection, &source.keys()).await?;
+    let keys = source.keys();
+    let series = store::series::ensure(connection, &keys).await?;
     store::series::lock(connection, &series).await?;
     refuse_derived(connection, source, &series).await?;
     for batch in source.batches() {
         let pieces = source.fetch(connection, batch.clone()).await?;
-        let settled: Option<Vec<_>> =
-            blocking(move || pieces.into_iter().map(Fragment::settle).collect()).await?;
+        let settled: Vec<_> =
+            blocking(move || pieces.iter().map(|p| Fragment::settle(p)).collect()).await?;
         let mut fragments = Vec::with_capacity(batch.len());
-        for (fragment, duplicates) in
-            settled.ok_or_else(|| Fault::Internal("a series of an upload has no row".to_owned()))?
-        {
-            parts.add_duplicates(&fragment.key, &duplicates);
-            fragments.push(fragment);
+        let mut ids = Vec::with_capacity(batch.len());
+        for (i, (fragment, duplicates)) in batch.zip(settled) {
+            parts.add_duplicates(keys[i], &duplicates);
+            if let Some(fragment) = fragment {
+                fragments.push(fragment);
+                ids.push(series[i]);
+            }
         }
         let units = fragments.iter().map(|f| &f.unit);
-        let wanted: Vec<(i64, &Unit)> = series[batch].iter().copied().zip(units).collect();
+        let wanted: Vec<(i64, &Unit)> = ids.into_iter().zip(units).collect();
         let segments = store::series::ensure_segments(connection, &wanted).await?;
         let statements: Vec<(i64, Statement)> = segments
             .iter()

@@ -9,7 +9,7 @@ use super::documents::{bad_cursor, cursor, timestamp};
 use super::preview::series;
 use super::views::{ObservationView, ObservationsView, Page, Pin, SeriesView, VintageView};
 use crate::finding::Finding;
-use crate::series::algebra::{Over, growth};
+use crate::series::algebra::{Over, Span, growth};
 use crate::series::{GrowthKind, Series, SeriesKey, Status};
 use crate::store::search::{ListedSeries, Search};
 use crate::store::vintage::{AsOf, ListedVintage, ReadVintage};
@@ -271,21 +271,23 @@ pub async fn observations(
     to: Option<&str>,
     growth_name: Option<&str>,
 ) -> Result<ObservationsView, Fault> {
-    let bound = |name: &str, text: Option<&str>| match text {
-        None => Ok(None),
-        Some(text) => Period::parse_as(text, key.frequency())
-            .map(Some)
-            .map_err(|e| Fault::BadRequest {
-                detail: e.to_string(),
-                errors: vec![
-                    Finding::error("bad_parameter", e.to_string())
-                        .at_parameter(name)
-                        .found(text)
-                        .expected(e.expected),
-                ],
-            }),
-    };
-    let (from, to) = (bound("from", from)?, bound("to", to)?);
+    let first = from.map(|text| bound("from", text, key.frequency()));
+    let last = to.map(|text| bound("to", text, key.frequency()));
+    let from = first.transpose()?.map(|(first, _)| first);
+    let to = last.transpose()?.map(|(_, last)| last);
+    if let (Some(from), Some(to)) = (from, to)
+        && from > to
+    {
+        let finding = Finding::error("bad_parameter", "'from' lies after 'to'")
+            .at_parameter("from")
+            .found(from.to_string())
+            .expected(format!("a period until {to}"))
+            .remedy("exchange the two");
+        return Err(Fault::BadRequest {
+            detail: finding.message.clone(),
+            errors: vec![finding],
+        });
+    }
     let vintage = vintage(database, key, moment).await?;
     let (segment, released, recorded, revision) = (
         vintage.segment,
@@ -322,6 +324,27 @@ pub async fn observations(
     })
 }
 
+/// The first and last period of a series' frequency that a bound names: one, or all in a longer period.
+fn bound(name: &str, text: &str, frequency: Frequency) -> Result<(Period, Period), Fault> {
+    let longer = || {
+        let period: Period = text.parse().ok()?;
+        Span::new(period, period)?.at(frequency)
+    };
+    Period::parse_as(text, frequency)
+        .map(|period| (period, period))
+        .or_else(|e| longer().ok_or(e))
+        .map_err(|e| {
+            let finding = Finding::error("bad_parameter", e.to_string())
+                .at_parameter(name)
+                .found(text)
+                .expected(format!("{}, or a longer period", e.expected));
+            Fault::BadRequest {
+                detail: e.to_string(),
+                errors: vec![finding],
+            }
+        })
+}
+
 /// What identifies the vintage that a client would read, without its observations: segment, release
 /// date, revision.
 ///
@@ -337,7 +360,7 @@ pub async fn version(
     Ok(store::vintage::version(&mut connection, key, as_of).await?)
 }
 
-/// Vintages of a series, oldest release first.
+/// Vintages of a series by the release that speaks, oldest first.
 ///
 /// # Errors
 /// [`Fault::NotFound`]; [`Fault::BadRequest`] for a wrong cursor; [`Fault::Store`].
@@ -356,9 +379,9 @@ pub async fn vintages(
         return Err(no_series(key));
     }
     // An older release may come between two pages: the cursor names a vintage, not how many came before.
-    rows.retain(|r| after.is_none_or(|after| (r.visible_from, r.revision, r.segment) > after));
+    rows.retain(|r| after.is_none_or(|after| (r.released, r.revision, r.segment) > after));
     let page = Page::cut(rows, limit, |r| {
-        format!("{}_{}_{}", r.visible_from, r.revision, r.segment)
+        format!("{}_{}_{}", r.released, r.revision, r.segment)
     });
     let view = |r: ListedVintage| {
         let ends = ends(key.frequency(), r.start_period, r.observation_count);
@@ -386,12 +409,12 @@ pub async fn vintages(
     })
 }
 
-/// What orders the list of vintages: the date from which one is visible, its revision and its segment.
+/// What orders the list of vintages: the release that speaks, its revision and its segment.
 fn place(cursor: &str) -> Option<(NaiveDate, i64, i32)> {
-    let (visible_from, rest) = cursor.split_once('_')?;
+    let (released, rest) = cursor.split_once('_')?;
     let (revision, segment) = rest.split_once('_')?;
     Some((
-        visible_from.parse().ok()?,
+        released.parse().ok()?,
         revision.parse().ok()?,
         segment.parse().ok()?,
     ))

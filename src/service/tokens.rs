@@ -63,7 +63,7 @@ const BELIEVED: Duration = Duration::from_secs(1);
 pub struct Gate {
     may_be_open: bool,
     tokens: Mutex<HashMap<[u8; 32], (Instant, Principal)>>,
-    any: Mutex<Option<(Instant, bool)>>,
+    ever: Mutex<Option<(Instant, bool)>>,
 }
 
 /// Answer to a caller.
@@ -78,14 +78,14 @@ pub enum Admission {
 }
 
 impl Gate {
-    /// A gate that lets everybody in while no token exists, if it may be open. One that other machines
-    /// reach may not: revoking its last token would open it to the network.
+    /// A gate that lets everybody in while no token was ever made, if it may be open. One that other machines
+    /// reach may not. A revoked token counts: revoking the last one closes the service, it opens nothing.
     #[must_use]
     pub fn new(may_be_open: bool) -> Self {
         Self {
             may_be_open,
             tokens: Mutex::default(),
-            any: Mutex::default(),
+            ever: Mutex::default(),
         }
     }
 
@@ -99,7 +99,7 @@ impl Gate {
         bearer: Option<&str>,
     ) -> Result<Admission, Fault> {
         let Some(token) = bearer else {
-            return Ok(if !self.may_be_open || self.any_token(database).await? {
+            return Ok(if !self.may_be_open || self.ever_a_token(database).await? {
                 Admission::TokenMissing
             } else {
                 Admission::Admitted(Principal {
@@ -130,17 +130,17 @@ impl Gate {
         Ok(Admission::Admitted(principal))
     }
 
-    async fn any_token(&self, database: &Database) -> Result<bool, Fault> {
-        let known = *lock(&self.any);
-        if let Some((at, any)) = known
-            && at.elapsed() < BELIEVED
+    async fn ever_a_token(&self, database: &Database) -> Result<bool, Fault> {
+        let known = *lock(&self.ever);
+        if let Some((at, ever)) = known
+            && (ever || at.elapsed() < BELIEVED)
         {
-            return Ok(any);
+            return Ok(ever);
         }
         let mut connection = database.connection().await?;
-        let any = store::token::any(&mut connection).await?;
-        *lock(&self.any) = Some((Instant::now(), any));
-        Ok(any)
+        let ever = store::token::existing(&mut connection).await?.ever;
+        *lock(&self.ever) = Some((Instant::now(), ever));
+        Ok(ever)
     }
 }
 
@@ -225,10 +225,10 @@ pub async fn revoke(database: &Database, name: &str) -> Result<(), Fault> {
     }
 }
 
-/// Whether any valid token exists.
+/// Whether tokens exist.
 ///
 /// # Errors
 /// [`Fault::Store`].
-pub async fn any(connection: &mut Connection) -> Result<bool, Fault> {
-    Ok(store::token::any(connection).await?)
+pub async fn existing(connection: &mut Connection) -> Result<store::token::Existing, Fault> {
+    Ok(store::token::existing(connection).await?)
 }

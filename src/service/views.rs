@@ -237,7 +237,7 @@ pub struct VintageView {
     pub segment: i32,
     /// Unit in words.
     pub unit_text: String,
-    /// Release date.
+    /// Date of the release that speaks; an older one speaks again where a later one was withdrawn.
     #[schema(format = Date)]
     pub released: String,
     /// When it was recorded here.

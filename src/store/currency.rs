@@ -99,3 +99,22 @@ pub async fn in_use(connection: &mut PgConnection, code: &str) -> Result<bool, E
     .await?;
     Ok(row.used)
 }
+
+/// Whether a series of an area is stored in this currency, declared as the area's own money.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn own_money_in_use(connection: &mut PgConnection, code: &str) -> Result<bool, Error> {
+    let row = sqlx::query!(
+        r#"SELECT EXISTS (
+               SELECT FROM currency c JOIN series s ON s.area = ANY(c.areas)
+               JOIN segment g ON g.series_id = s.id
+               WHERE c.code = $1
+                   AND $1 IN (g.unit->>'currency', g.unit->>'numerator', g.unit->>'denominator')
+           ) AS "used!""#,
+        code
+    )
+    .fetch_one(connection)
+    .await?;
+    Ok(row.used)
+}

@@ -23,6 +23,66 @@ pub struct SegmentRow {
 /// Series looked up in one statement.
 const BATCH: usize = 10_000;
 
+/// The places of keys, a column each.
+fn columns<'a>(keys: impl Iterator<Item = &'a SeriesKey>) -> [Vec<String>; 8] {
+    let mut columns: [Vec<String>; 8] = Default::default();
+    for key in keys {
+        columns[0].push(key.frequency().code().to_owned());
+        for (column, place) in columns[1..].iter_mut().zip(key.places()) {
+            column.push(place.clone());
+        }
+    }
+    columns
+}
+
+/// Series of these places, each with its number in the question, from 1.
+async fn look_up(
+    connection: &mut PgConnection,
+    columns: &[Vec<String>; 8],
+) -> Result<Vec<(usize, i64)>, Error> {
+    let [
+        frequency,
+        area,
+        measure,
+        partner,
+        product,
+        currency,
+        source,
+        adjustment,
+    ] = columns;
+    let rows = sqlx::query!(
+        r#"SELECT q.i AS "i!", s.id FROM unnest($1::text[], $2::text[], $3::text[], $4::text[], $5::text[],
+             $6::text[], $7::text[], $8::text[]) WITH ORDINALITY AS q(a, b, c, d, e, f, g, h, i)
+           JOIN series s ON (s.area, s.measure, s.frequency, s.partner, s.product, s.currency,
+             s.source, s.adjustment) = (q.b, q.c, q.a, q.d, q.e, q.f, q.g, q.h)
+           ORDER BY q.i"#,
+        frequency,
+        area,
+        measure,
+        partner,
+        product,
+        currency,
+        source,
+        adjustment
+    )
+    .fetch_all(connection)
+    .await?;
+    let number = |i| usize::try_from(i).map_err(|e| Error::corrupt("the number of a series", e));
+    rows.iter().map(|r| Ok((number(r.i)?, r.id))).collect()
+}
+
+/// Those of these series that exist, each with its place in the question.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn find(
+    connection: &mut PgConnection,
+    keys: &[&SeriesKey],
+) -> Result<Vec<(usize, i64)>, Error> {
+    let found = look_up(connection, &columns(keys.iter().copied())).await?;
+    Ok(found.into_iter().map(|(i, id)| (i - 1, id)).collect())
+}
+
 /// Finds or creates these series. Answers in the order of the question.
 ///
 /// # Errors
@@ -34,13 +94,7 @@ pub async fn ensure(connection: &mut PgConnection, keys: &[&SeriesKey]) -> Resul
     order.sort_unstable_by_key(|i| keys[*i]);
     let mut ids = vec![0; keys.len()];
     for batch in order.chunks(BATCH) {
-        let mut columns: [Vec<String>; 8] = Default::default();
-        for i in batch {
-            columns[0].push(keys[*i].frequency().code().to_owned());
-            for (column, place) in columns[1..].iter_mut().zip(keys[*i].places()) {
-                column.push(place.clone());
-            }
-        }
+        let columns = columns(batch.iter().map(|i| keys[*i]));
         let [
             frequency,
             area,
@@ -62,27 +116,11 @@ pub async fn ensure(connection: &mut PgConnection, keys: &[&SeriesKey]) -> Resul
         )
         .execute(&mut *connection)
         .await?;
-        let found = sqlx::query_scalar!(
-            r#"SELECT s.id FROM unnest($1::text[], $2::text[], $3::text[], $4::text[], $5::text[],
-                 $6::text[], $7::text[], $8::text[]) WITH ORDINALITY AS q(a, b, c, d, e, f, g, h, i)
-               JOIN series s ON (s.area, s.measure, s.frequency, s.partner, s.product, s.currency,
-                 s.source, s.adjustment) = (q.b, q.c, q.a, q.d, q.e, q.f, q.g, q.h)
-               ORDER BY q.i"#,
-            frequency,
-            area,
-            measure,
-            partner,
-            product,
-            currency,
-            source,
-            adjustment
-        )
-        .fetch_all(&mut *connection)
-        .await?;
+        let found = look_up(connection, &columns).await?;
         if found.len() != batch.len() {
             return Err(Error::corrupt("a series", "not found after it was made"));
         }
-        for (i, id) in batch.iter().zip(found) {
+        for (i, (_, id)) in batch.iter().zip(found) {
             ids[*i] = id;
         }
     }

@@ -86,13 +86,26 @@ pub async fn find(
     Ok(row.map(|r| (r.name, r.role)))
 }
 
-/// Whether any valid token exists.
+/// Which tokens there are.
+#[derive(Clone, Copy, Debug)]
+pub struct Existing {
+    /// Whether one was ever made, revoked ones included.
+    pub ever: bool,
+    /// Whether one is valid.
+    pub valid: bool,
+}
+
+/// Whether tokens exist.
 ///
 /// # Errors
 /// [`Error::Database`].
-pub async fn any(connection: &mut PgConnection) -> Result<bool, Error> {
-    let row = sqlx::query!(r#"SELECT EXISTS (SELECT FROM token WHERE revoked IS NULL) AS "any!""#)
-        .fetch_one(connection)
-        .await?;
-    Ok(row.any)
+pub async fn existing(connection: &mut PgConnection) -> Result<Existing, Error> {
+    let row = sqlx::query_as!(
+        Existing,
+        r#"SELECT EXISTS (SELECT FROM token) AS "ever!",
+             EXISTS (SELECT FROM token WHERE revoked IS NULL) AS "valid!""#
+    )
+    .fetch_one(connection)
+    .await?;
+    Ok(row)
 }

@@ -354,10 +354,8 @@ pub struct ListedVintage {
     pub segment: i32,
     /// Unit of the segment.
     pub unit: Json<Unit>,
-    /// Date of the release that speaks.
+    /// Date of the release that speaks, by which lists are ordered.
     pub released: NaiveDate,
-    /// Date from which it is visible, by which lists are ordered.
-    pub visible_from: NaiveDate,
     /// When it was recorded.
     pub recorded: DateTime<Utc>,
     /// Revision.
@@ -380,7 +378,8 @@ pub struct ListedVintage {
     pub emptied_count: i32,
 }
 
-/// All vintages of a series, oldest release first.
+/// All vintages of a series by the release that speaks, oldest first, then by revision and segment. What one
+/// revision says once for several dates stands once, as of the first.
 ///
 /// # Errors
 /// [`Error::Database`].
@@ -391,12 +390,12 @@ pub async fn list(
     let rows = of_series!(
         query_as!(
             ListedVintage,
-            r#"SELECT g.number AS segment, g.unit AS "unit: Json<Unit>", v.said AS released,
-                 v.released AS visible_from, c.recorded, v.revision, c.action, c.upload_id, c.run_id,
-                 v.start_period, v.observation_count, v.new_count, v.revised_count, v.emptied_count
+            r#"SELECT DISTINCT ON (v.said, v.revision, g.number) g.number AS segment, g.unit AS "unit: Json<Unit>", v.said AS released, c.recorded,
+                 v.revision, c.action, c.upload_id, c.run_id, v.start_period, v.observation_count,
+                 v.new_count, v.revised_count, v.emptied_count
                FROM series s JOIN segment g ON g.series_id = s.id
                JOIN vintage v ON v.segment_id = g.id JOIN change c ON c.revision = v.revision"#,
-            "ORDER BY v.released, v.revision, g.number"
+            "ORDER BY v.said, v.revision, g.number, v.released"
         ),
         key
     )
@@ -437,4 +436,59 @@ pub async fn fed_by_runs(connection: &mut PgConnection, series: &[i64]) -> Resul
     .fetch_all(connection)
     .await?;
     Ok(rows)
+}
+
+/// Names of the preparations whose runs wrote these series last, where a run did.
+///
+/// # Errors
+/// [`Error::Database`].
+pub async fn owners(
+    connection: &mut PgConnection,
+    series: &[i64],
+) -> Result<Vec<(i64, String)>, Error> {
+    let rows = sqlx::query!(
+        r#"SELECT o.series_id AS "series_id!", r.name
+           FROM (SELECT DISTINCT ON (g.series_id) g.series_id, v.revision
+                 FROM segment g JOIN vintage v ON v.segment_id = g.id
+                 WHERE g.series_id = ANY($1) ORDER BY g.series_id, v.revision DESC) o
+           JOIN change c ON c.revision = o.revision JOIN run r ON r.id = c.run_id"#,
+        series
+    )
+    .fetch_all(connection)
+    .await?;
+    Ok(rows.into_iter().map(|r| (r.series_id, r.name)).collect())
+}
+
+/// First period and packed provenance of what a revision wrote in a segment for a release.
+///
+/// # Errors
+/// [`Error`].
+pub async fn provenance_of(
+    connection: &mut PgConnection,
+    key: &SeriesKey,
+    (segment, said, revision): (i32, Date, i64),
+) -> Result<Option<(Period, Vec<u8>)>, Error> {
+    let row = of_series!(
+        query!(
+            "SELECT v.start_period, v.provenance FROM series s
+             JOIN segment g ON g.series_id = s.id AND g.number = $9
+             JOIN vintage v ON v.segment_id = g.id AND v.said = $10 AND v.revision = $11",
+            "ORDER BY v.released LIMIT 1"
+        ),
+        key,
+        segment,
+        day(said),
+        revision
+    )
+    .fetch_optional(connection)
+    .await?;
+    row.map(|r| {
+        let start = first_period(
+            &format!("vintage of {key}"),
+            key.frequency(),
+            r.start_period,
+        )?;
+        Ok((start, r.provenance))
+    })
+    .transpose()
 }

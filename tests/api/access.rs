@@ -141,6 +141,28 @@ async fn a_service_that_others_reach_never_works_without_a_token() {
     // No token is left, and still nobody comes in.
     let answer = app.get("/v1/kinds").await.expect(401);
     assert_eq!(answer.at("/code"), "token_missing");
+    // Nor does a start with nothing but revoked tokens.
+    let refused = Application::build(settings.serving(), app.db.open().await)
+        .await
+        .err();
+    let refused = refused.expect("it does not start").to_string();
+    assert!(refused.contains("no token is valid"), "{refused}");
+    app.stop().await;
+}
+
+#[tokio::test]
+async fn revoking_the_last_token_opens_nothing_at_the_next_start() {
+    let db = TestDb::create();
+    db.token("only", Role::Administer).await;
+    let database = db.open().await;
+    tokens::revoke(&database, "only").await.unwrap();
+    database.close().await;
+    let mut app = TestApp::start_on(db, |_| {}).await;
+    let answer = app.get("/v1/kinds").await.expect(401);
+    assert_eq!(answer.at("/code"), "token_missing");
+    let secret = app.token("another", Role::Read).await;
+    app.use_token(Some(&secret));
+    app.get("/v1/kinds").await.expect(200);
     app.stop().await;
 }
 

@@ -8,6 +8,7 @@ use realterms::store::cluster::SUPERUSER;
 use sqlx::postgres::{PgConnectOptions, PgSslMode};
 use sqlx::{Connection, PgConnection};
 use std::fs::{self, File};
+use std::os::unix::fs::MetadataExt;
 use std::path::Path;
 use std::process::Command;
 use std::time::Duration;
@@ -336,4 +337,27 @@ fn a_temp_folder_too_long_for_a_socket_is_refused_with_the_limit() {
         0,
         "nothing is left in it"
     );
+}
+
+/// Under root others pass through the data folder; they read nothing in it.
+#[test]
+fn nobody_else_reads_what_is_in_the_data_folder() {
+    for user in &users() {
+        let place = Place::new(user);
+        // A lock of an earlier release was open to all.
+        fs::create_dir(place.data()).unwrap();
+        fs::write(place.data().join("lock"), "").unwrap();
+        place.own(&place.data());
+        place.own(&place.data().join("lock"));
+        let held = place.start();
+        let mut seen = 0;
+        for entry in fs::read_dir(place.data()).unwrap() {
+            let entry = entry.unwrap();
+            let mode = entry.metadata().unwrap().mode();
+            assert_eq!(mode & 0o077, 0, "{}", entry.path().display());
+            seen += 1;
+        }
+        assert!(seen >= 4, "lock, keeper.lock, postgres, server.log: {seen}");
+        assert!(held.stop().success());
+    }
 }

@@ -178,3 +178,38 @@ async fn connect(sockets: &Path) -> PgConnection {
         .options([("search_path", "realterms")]);
     PgConnection::connect_with(&options).await.unwrap()
 }
+
+#[test]
+fn a_folder_that_is_not_there_is_told_and_not_made() {
+    let place = Place::new(&users()[0]);
+    let file = place.root.join("all.dump");
+    for arguments in [
+        &["database", "where"][..],
+        &["database", "stop"],
+        &["database", "dump", file.to_str().unwrap()],
+    ] {
+        let (ran, _, error) = place.run(arguments);
+        assert!(!ran, "{arguments:?}");
+        let data = place.data().display().to_string();
+        for part in ["there is no data folder at", &data, "REALTERMS_DATA_FOLDER"] {
+            assert!(error.contains(part), "{part} in {error}");
+        }
+        assert!(!place.data().exists(), "{arguments:?}");
+    }
+    // Nor is a folder of something else one of ours.
+    std::fs::create_dir(place.data()).unwrap();
+    let (ran, _, error) = place.run(&["database", "where"]);
+    assert!(!ran && error.contains("there is no data folder"), "{error}");
+    assert_eq!(std::fs::read_dir(place.data()).unwrap().count(), 0);
+}
+
+#[test]
+fn a_reader_that_leaves_early_is_no_fault() {
+    let place = Place::new(&users()[0]);
+    let (reader, writer) = std::io::pipe().unwrap();
+    drop(reader);
+    let mut command = place.program(&["openapi"]);
+    let output = command.stdout(writer).output().unwrap();
+    assert!(output.status.success(), "{output:?}");
+    assert_eq!(String::from_utf8(output.stderr).unwrap(), "");
+}

@@ -284,6 +284,9 @@ async fn walk_runs(app: &TestApp) {
     let document = r#"{"outputs": {"Q.XAA.exports": [{"take": "Q.XAA.imports"}]}}"#;
     app.put("/v1/preparations/taken", document)
         .await
+        .expect(409);
+    app.put("/v1/preparations/taken", sample::PREPARATION)
+        .await
         .expect(201);
     app.post("/v1/preparations/taken/runs", "")
         .await

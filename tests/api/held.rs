@@ -252,6 +252,19 @@ async fn a_money_is_unknown_until_declared_and_stays_while_it_is_used() {
     app.delete("/v1/currencies/XAY").await.expect(204);
     app.delete("/v1/currencies/XAY").await.expect(404);
     app.get("/v1/currencies/XAX").await.expect(200);
+
+    // A listed currency needs no declaration, but that of an area's own money explains the area's keys.
+    for (code, area) in [("USD", "XBB"), ("EUR", "XCC")] {
+        let body = format!(r#"{{"name": "Money", "areas": ["{area}"]}}"#);
+        let path = format!("/v1/currencies/{code}");
+        app.put(&path, &body).await.expect(201);
+    }
+    let file =
+        "area,measure,currency,period,value\nXBB,exports,USD,2019,5\nXBB,exports,EUR,2019,4\n";
+    app.upload(query, file).await.expect(201);
+    let refused = app.delete("/v1/currencies/USD").await.expect(409);
+    assert_eq!(refused.at("/code"), "currency_in_use");
+    app.delete("/v1/currencies/EUR").await.expect(204);
     app.stop().await;
 }
 

@@ -288,3 +288,32 @@ async fn the_client_chooses_the_representation() {
     assert_eq!(template.lines().count(), 1);
     app.stop().await;
 }
+
+#[tokio::test]
+async fn bounds_may_be_longer_than_the_periods_of_the_series() {
+    let app = TestApp::start().await;
+    sample::fill(&app).await;
+    let key = "Q.XAA.exports";
+    for (bounds, first, last) in [
+        ("from=2020", "2020-Q1", "2020-Q4"),
+        ("to=2019", "2019-Q1", "2019-Q4"),
+        ("from=2019-S2&to=2019", "2019-Q3", "2019-Q4"),
+        ("from=2019-Q4&to=2020-S1", "2019-Q4", "2020-Q2"),
+        ("from=2020-01-01&to=2020-03-31", "2020-Q1", "2020-Q1"),
+    ] {
+        let values = app.values(key, bounds).await;
+        let ends = [&values[0].0, &values[values.len() - 1].0];
+        assert_eq!(ends, [first, last], "{bounds}");
+    }
+    let path = format!("/v1/series/{key}/observations");
+    for wrong in [
+        "from=2020-01",
+        "to=2020-02-01",
+        "from=2020&to=2019",
+        "from=2020-Q2&to=2020-Q1",
+    ] {
+        let refused = app.get(&format!("{path}?{wrong}")).await.expect(400);
+        assert_eq!(refused.error()["code"], "bad_parameter", "{wrong}");
+    }
+    app.stop().await;
+}

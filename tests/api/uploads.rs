@@ -247,21 +247,23 @@ async fn rejects_refuse_the_file_or_are_skipped() {
         .expect(422);
     assert_eq!(refused.at("/code"), "upload_refused");
     assert_eq!(refused.at("/errors").as_array().unwrap().len(), 100);
-    assert_eq!(refused.at("/errors/0/code"), "not_a_number");
-    assert_eq!(refused.at("/errors/0/line"), 52);
-    assert_eq!(refused.at("/errors/0/column"), "value");
-    assert_eq!(refused.at("/errors/0/found"), "n/a");
+    assert_eq!(refused.at("/errors/0/code"), "duplicate_key");
+    assert_eq!(refused.at("/errors/0/line"), 2);
+    assert_eq!(refused.at("/errors/1/code"), "not_a_number");
+    assert_eq!(refused.at("/errors/1/line"), 52);
+    assert_eq!(refused.at("/errors/1/column"), "value");
+    assert_eq!(refused.at("/errors/1/found"), "n/a");
     let upload = refused.at("/upload");
     assert_eq!(upload["state"], "refused");
     assert_eq!(
         upload["report"]["understood"]["rejects_by_code"],
-        serde_json::json!({"duplicate_key": 1, "not_a_number": 150})
+        serde_json::json!({"duplicate_key": 2, "not_a_number": 150})
     );
-    assert_eq!(upload["report"]["understood"]["rows_accepted"], 51);
+    assert_eq!(upload["report"]["understood"]["rows_accepted"], 50);
     assert_eq!(upload["report"]["observations"]["new"], 0);
     // Kept: the upload, one part and the rejects. No series, no segment, no vintage, no change.
     let mut after = before.clone();
-    (after[5], after[6], after[7]) = (before[5] + 1, before[6] + 1, before[7] + 151);
+    (after[5], after[6], after[7]) = (before[5] + 1, before[6] + 1, before[7] + 152);
     assert_eq!(rows(&database).await, after);
     let path = format!("/v1/uploads/{}", upload["id"]);
     let mut kept = app.get(&path).await.expect(200).json();
@@ -269,11 +271,11 @@ async fn rejects_refuse_the_file_or_are_skipped() {
     kept["recorded"] = upload["recorded"].clone();
     assert_eq!(kept, upload);
     let rejects = app.pages(&format!("{path}/rejects?limit=60")).await;
-    assert_eq!(rejects.len(), 151);
-    assert_eq!(rejects[149]["line"], 201);
-    assert_eq!(rejects[150]["code"], "duplicate_key");
-    assert_eq!(rejects[150]["line"], 202);
-    assert_eq!(rejects[0]["row"], "XAA,exports,XAD,1851,n/a");
+    assert_eq!(rejects.len(), 152);
+    assert_eq!(rejects[150]["line"], 201);
+    assert_eq!(rejects[151]["code"], "duplicate_key");
+    assert_eq!(rejects[151]["line"], 202);
+    assert_eq!(rejects[1]["row"], "XAA,exports,XAD,1851,n/a");
     let raw = app.get(&format!("{path}/raw")).await.expect(200);
     assert_eq!(raw.text(), file);
     let listed = app.pages("/v1/uploads?state=refused").await;
@@ -291,14 +293,24 @@ async fn rejects_refuse_the_file_or_are_skipped() {
         .upload("kind=trade&on_reject=skip", file)
         .await
         .expect(201);
-    assert_eq!(skipped.at("/report/observations/new"), 50);
-    assert_eq!(skipped.at("/report/understood/rows_rejected"), 151);
+    assert_eq!(skipped.at("/report/observations/new"), 49);
+    assert_eq!(skipped.at("/report/understood/rows_rejected"), 152);
     let values = app.values("A.XAA.exports", "").await;
-    assert_eq!(values.len(), 50);
-    // Of the contradicting rows the first is kept.
-    assert_eq!(values[0], ("1801".to_owned(), Some(10.5)));
+    assert_eq!(values.len(), 49);
+    // Of the contradicting rows none is kept.
+    assert_eq!(values[0], ("1802".to_owned(), Some(10.5)));
     let path = format!("/v1/uploads/{}/rejects", skipped.at("/id"));
-    assert_eq!(app.pages(&path).await.len(), 151);
+    assert_eq!(app.pages(&path).await.len(), 152);
+    // A series of nothing else does not come to be.
+    let file =
+        "area,measure,currency,period,value\nXAB,exports,XBD,2001,1\nXAB,exports,XBD,2001,2\n";
+    let skipped = app.upload("kind=trade&on_reject=skip", file).await;
+    let skipped = skipped.expect(201);
+    assert_eq!(skipped.at("/report/understood/rows_accepted"), 0);
+    assert_eq!(skipped.at("/report/series_created/count"), 0);
+    let message = skipped.at("/report/rejects/1/message").to_string();
+    assert!(message.contains("neither counts"), "{message}");
+    app.get("/v1/series/A.XAB.exports").await.expect(404);
     app.stop().await;
 }
 

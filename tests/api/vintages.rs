@@ -451,3 +451,37 @@ async fn withdrawing_gives_the_say_back_to_the_release_that_spoke_last() {
     );
     app.stop().await;
 }
+
+#[tokio::test]
+async fn vintages_are_listed_once_by_the_release_that_speaks() {
+    let app = start().await;
+    send(&app, "2020-01-31", &[("2019", "1")]).await;
+    let february = send(&app, "2020-02-29", &[("2019", "2")]).await;
+    let march = send(&app, "2020-03-31", &[("2019", "3")]).await;
+    let april = send(&app, "2020-04-30", &[("2019", "4")]).await;
+    // Now an older release speaks at the dates of later ones, at several by one revision.
+    withdraw(&app, &march).await;
+    withdraw(&app, &april).await;
+    withdraw(&app, &february).await;
+    let path = format!("/v1/series/{KEY}/vintages");
+    let whole = app.get(&path).await.expect(200).json();
+    let place = |v: &Value| {
+        let released = v["released"].as_str().unwrap().to_owned();
+        let number = |name: &str| v[name].as_i64().unwrap();
+        (released, number("revision"), number("segment"))
+    };
+    let places: Vec<_> = whole.as_array().unwrap().iter().map(place).collect();
+    let mut sorted = places.clone();
+    sorted.sort();
+    sorted.dedup();
+    assert_eq!(places, sorted);
+    assert!(
+        places.contains(&("2020-01-31".to_owned(), 7, 1)),
+        "{places:?}"
+    );
+    assert_eq!(
+        app.pages(&format!("{path}?limit=1")).await,
+        *whole.as_array().unwrap()
+    );
+    app.stop().await;
+}

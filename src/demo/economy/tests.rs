@@ -263,8 +263,9 @@ fn stored(economy: &Economy) -> BTreeMap<InputRef, Series> {
             intake.findings
         );
         for piece in intake.pieces {
-            let (fragment, duplicates) = Fragment::settle(vec![piece]).unwrap();
+            let (fragment, duplicates) = Fragment::settle(&[piece]);
             assert!(duplicates.is_empty());
+            let fragment = fragment.unwrap();
             let series = Series::new(fragment.unit, fragment.start, fragment.values);
             segments.entry(fragment.key).or_default().push(series);
         }

@@ -7,8 +7,34 @@ fn trade_row(row: &str) -> Result<Piece, String> {
                   unit_multiplier,period,value,status";
     let mut intake = read("trade", &[], &format!("{header}\n{row}\n")).unwrap();
     match intake.rejects.pop() {
-        Some(reject) => Err(reject.finding.code),
+        Some(reject) => {
+            assert!(reject.finding.remedy.is_some(), "{reject:?}");
+            Err(reject.finding.code)
+        }
         None => Ok(intake.pieces.remove(0)),
+    }
+}
+
+#[test]
+fn are_rejected_with_a_remedy_that_fits() {
+    for (measure, multiplier, value, remedy) in [
+        ("exports", "", "\u{2212}5", "a hyphen for minus"),
+        ("exports", "", "0x10", "the digits 0 to 9"),
+        ("exports", "", "\u{661}\u{662}", "the digits 0 to 9"),
+        ("exports", "", "1 000", "nothing between thousands"),
+        ("exports", "", "n/a", "leave the cell empty"),
+        ("exports", "12", "1e300", "the unit_multiplier of 12"),
+        ("exports", "", "1e309", "correct the value"),
+        ("export_price", "", "1", "kind=price_index"),
+        ("export", "", "1", "did you mean exports"),
+        ("zzzzzzzzz", "", "1", "one of those expected"),
+    ] {
+        let text = format!(
+            "area,measure,currency,unit_multiplier,period,value\nXAA,{measure},XAD,{multiplier},2019,{value}\n"
+        );
+        let intake = read("trade", &[], &text).unwrap();
+        let found = only_reject(&intake).remedy.as_deref().unwrap();
+        assert!(found.contains(remedy), "{measure} {value}: {found}");
     }
 }
 

@@ -54,6 +54,7 @@ fn wrong_ones_are_told_before_the_body() {
         assert_eq!(finding.code, code);
         assert_eq!(finding.place.parameter.as_deref(), Some(parameter));
         assert_eq!(finding.place.column, None);
+        assert!(finding.remedy.is_some(), "{finding:?}");
     }
     let twice = [("area", "XAA"), ("area", "XAB")].map(|(n, t)| (n.to_owned(), t.to_owned()));
     assert_eq!(

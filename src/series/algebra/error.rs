@@ -219,7 +219,7 @@ impl From<AlgebraError> for Finding {
                 expected,
             } => finding
                 .found(found)
-                .remedy(format!("Set {name} to {expected}."))
+                .remedy(format!("Set '{name}' to {expected}."))
                 .expected(expected),
             AlgebraError::NoCompletePeriod { to, held, .. } => finding
                 .found(held)

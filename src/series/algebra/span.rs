@@ -30,6 +30,18 @@ impl Span {
         (first.frequency() == last.frequency() && first <= last).then_some(Self { first, last })
     }
 
+    /// The first period.
+    #[must_use]
+    pub fn first(self) -> Period {
+        self.first
+    }
+
+    /// The last period.
+    #[must_use]
+    pub fn last(self) -> Period {
+        self.last
+    }
+
     /// First and last period of a frequency that begin inside the span; `None` where the frequency
     /// is lower than the span's own (a year is not inside a quarter).
     #[must_use]

@@ -40,6 +40,12 @@ pub enum ClusterError {
         /// Process number and command of the holder.
         holder: String,
     },
+    /// Nothing of ours is there.
+    #[error(
+        "there is no data folder at {0}; name another with --data-folder (REALTERMS_DATA_FOLDER), or make one \
+         with `realterms serve`"
+    )]
+    NoFolder(PathBuf),
     /// The user that the server runs as cannot enter a folder.
     #[error(
         "{path} cannot be reached by the user `{user}`, as whom the server runs when started by root: {ancestor} \

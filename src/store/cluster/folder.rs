@@ -6,7 +6,7 @@ use nix::unistd::{User, geteuid};
 use serde::{Deserialize, Serialize};
 use std::fs::{self, DirBuilder, File, OpenOptions, TryLockError};
 use std::io::{self, Seek, Write};
-use std::os::unix::fs::{DirBuilderExt, MetadataExt, chown};
+use std::os::unix::fs::{DirBuilderExt, MetadataExt, OpenOptionsExt, PermissionsExt, chown};
 use std::path::{Path, PathBuf};
 use std::process::Command;
 use std::thread::sleep;
@@ -23,6 +23,14 @@ const GLANCE: Duration = Duration::from_secs(1);
 /// The cluster's own folder in a data folder.
 pub(super) fn cluster_in(data: &Path) -> PathBuf {
     data.join("postgres")
+}
+
+/// Refuses a folder in which no cluster was ever made or begun, most likely a slip of the pen.
+pub(super) fn check_existing(data: &Path) -> Result<(), ClusterError> {
+    if cluster_in(data).exists() || data.join("lock").exists() {
+        return Ok(());
+    }
+    Err(ClusterError::NoFolder(data.to_owned()))
 }
 
 /// A data folder, made if missing; its path is canonical.
@@ -132,14 +140,20 @@ impl DataFolder {
 
     fn open_lock(&self, name: &str) -> Result<File, ClusterError> {
         let path = self.0.join(name);
-        OpenOptions::new()
-            .create(true)
-            .truncate(false)
-            .read(true)
-            .write(true)
-            .open(&path)
+        open_private(OpenOptions::new().read(true).write(true), &path)
             .doing(|| format!("open {}", path.display()))
     }
+}
+
+/// Opens a file of the data folder, making it where it is missing; nobody but its owner reads it.
+pub(super) fn open_private(options: &mut OpenOptions, path: &Path) -> io::Result<File> {
+    const PRIVATE: u32 = 0o600;
+    let file = options.create(true).mode(PRIVATE).open(path)?;
+    // One that an earlier release made is open to all.
+    if file.metadata()?.mode() & 0o077 != 0 {
+        file.set_permissions(fs::Permissions::from_mode(PRIVATE))?;
+    }
+    Ok(file)
 }
 
 /// The user that the server runs as when root starts it: a server refuses to run as root.

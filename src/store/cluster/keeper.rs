@@ -247,7 +247,7 @@ impl Order {
     fn spawn(&self, mut command: Command) -> Result<Child, ClusterError> {
         let path = self.folder.log();
         let open = || -> io::Result<(File, File)> {
-            let log = File::options().create(true).append(true).open(&path)?;
+            let log = folder::open_private(File::options().append(true), &path)?;
             Ok((log.try_clone()?, log))
         };
         let (out, err) = open().doing(|| format!("open {}", path.display()))?;

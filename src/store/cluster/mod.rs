@@ -214,11 +214,12 @@ impl Drop for Cluster {
     }
 }
 
-/// What is known of a data folder; makes the folder if missing, starts nothing.
+/// What is known of a data folder; starts nothing.
 ///
 /// # Errors
-/// Programs missing, or a folder that cannot be read.
+/// No such folder, programs missing, or a folder that cannot be read.
 pub fn whereabouts(options: &ClusterOptions) -> Result<Whereabouts, ClusterError> {
+    options.check_existing()?;
     let folder = DataFolder::open(&options.folder)?;
     let binaries = options.find_binaries()?;
     let address = running(&server_of(&folder)?);
@@ -238,8 +239,9 @@ pub fn whereabouts(options: &ClusterOptions) -> Result<Whereabouts, ClusterError
 /// nobody holds any more is ended directly. Blocks until it has ended.
 ///
 /// # Errors
-/// A holder of another user, or one that does not end within 90 s.
+/// No such folder, a holder of another user, or one that does not end within 90 s.
 pub fn stop(options: &ClusterOptions) -> Result<Stopped, ClusterError> {
+    options.check_existing()?;
     let folder = DataFolder::open(&options.folder)?;
     let mut asked = None;
     let patience = Instant::now() + Duration::from_secs(90);
@@ -276,6 +278,14 @@ pub fn stop(options: &ClusterOptions) -> Result<Stopped, ClusterError> {
 }
 
 impl ClusterOptions {
+    /// Refuses a folder that holds nothing of ours, for commands that make nothing.
+    ///
+    /// # Errors
+    /// [`ClusterError::NoFolder`].
+    pub fn check_existing(&self) -> Result<(), ClusterError> {
+        folder::check_existing(&self.folder)
+    }
+
     /// Finds the server's programs: those that made the cluster, where there is one.
     ///
     /// # Errors

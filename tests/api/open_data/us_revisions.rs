@@ -210,6 +210,7 @@ async fn a_year_leads_down_to_the_lines_of_the_raw_file() {
     assert_eq!(inputs.as_array().map(Vec::len), Some(1), "{inputs}");
     let key = inputs[0]["series"].as_str().unwrap();
     assert_eq!(key, "M.USA.imports.....S");
+    assert_eq!(inputs[0]["spans"][0]["origin"], "upload", "{inputs}");
 
     let mut sum = 0.0;
     let mut raw: Option<Vec<String>> = None;

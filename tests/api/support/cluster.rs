@@ -86,6 +86,13 @@ impl Place {
         self.root.join("data")
     }
 
+    /// Gives what a test made to the user who runs the program.
+    pub(crate) fn own(&self, path: &Path) {
+        if let Some(user) = &self.user.0 {
+            chown(path, Some(user.uid.as_raw()), Some(user.gid.as_raw())).expect("we are root");
+        }
+    }
+
     /// The program with these arguments, on the data folder; nothing else is set but that disks are spared.
     pub(crate) fn program(&self, arguments: &[&str]) -> Command {
         let mut command = Command::new(self.root.join("realterms"));
