@@ -5,7 +5,8 @@ use std::collections::BTreeMap;
 use super::request::{Request, Source, Variable, too_many};
 use crate::estimate::Regressor;
 use crate::finding::Finding;
-use crate::series::{Series, SeriesKey, Status};
+use crate::series::algebra::Over;
+use crate::series::{Quantity, Series, SeriesKey, Status};
 use crate::time::Period;
 
 /// The variables of a request over their common sample, without gaps.
@@ -82,6 +83,7 @@ pub(super) fn gather(
             Err(finding) => faults.push(*finding),
         }
         notices.extend(guessed(one.variable, inputs, &periods));
+        notices.extend(overlapping(one.variable, inputs));
     }
     if !faults.is_empty() {
         return Err(faults);
@@ -227,6 +229,32 @@ fn column(observed: &Observed<'_>, periods: &[Period]) -> Result<Vec<f64>, Box<F
         });
     }
     Ok(values)
+}
+
+/// Growth over the year moves slowly: neighbouring values share all but two of their periods.
+fn overlapping(variable: &Variable, inputs: &BTreeMap<SeriesKey, Series>) -> Option<Finding> {
+    let series = inputs.get(variable.key()?)?;
+    let year = i64::from(series.frequency().periods_per_year()?);
+    let over_year = matches!(
+        series.unit.quantity,
+        Quantity::Growth {
+            over: Over::Year,
+            ..
+        }
+    );
+    (over_year && year > 1).then(|| {
+        let message = format!(
+            "{} is growth over the year, so that errors are correlated over {} periods",
+            variable.name,
+            year - 1
+        );
+        let remedy = format!(
+            "Estimate on growth from period to period, or with Newey-West errors of at least {} lags",
+            year - 1
+        );
+        let finding = Finding::notice("overlapping_growth", message).remedy(remedy);
+        variable.place(finding)
+    })
 }
 
 /// A notice where many observations of a stored series are estimated or imputed.

@@ -58,7 +58,7 @@ pub struct Document {
     /// autoregressive errors; absent: classical in differences, Newey–West in levels.
     #[serde(default, skip_serializing_if = "Option::is_none")]
     pub covariance: Option<Covariance>,
-    /// Lags of the Bartlett kernel, in Newey–West covariances and in the long-run variances of `dols` and
+    /// Lags of the Bartlett kernel, in Newey–West covariances (told beside classical ones too) and in the long-run variances of `dols` and
     /// `fmols`; absent: ⌊4 (n/100)^(2/9)⌋.
     #[serde(default, skip_serializing_if = "Option::is_none")]
     pub lags: Option<u32>,
@@ -429,19 +429,57 @@ impl Document {
             );
             fault("/interval/level", message);
         }
-        let kernel = |e: &Estimator| matches!(e, Estimator::Dols | Estimator::Fmols);
-        if self.covariance == Some(Covariance::Classical)
-            && self.lags.is_some()
-            && !self.estimators.iter().any(kernel)
-        {
-            fault(
-                "/lags",
-                "Lags apply to newey_west, not to classical".to_owned(),
-            );
-        }
+        findings.extend(self.check_areas());
+        findings.extend(self.check_sides());
         findings.extend(check_options(self));
         findings.extend(check_terms(self));
         findings.extend(self.check_instruments());
+        findings
+    }
+
+    /// What is at home must be of the area that is studied.
+    fn check_areas(&self) -> Vec<Finding> {
+        let home = [
+            ("/activity", Some(&self.activity)),
+            ("/actual", self.actual.as_ref()),
+            ("/import_demand/volume", Some(&self.import_demand.volume)),
+            (
+                "/import_demand/activity",
+                Some(&self.import_demand.activity),
+            ),
+            ("/export_demand/volume", Some(&self.export_demand.volume)),
+        ];
+        let foreign = |key: &&SeriesKey| key.places()[0] != self.area;
+        home.into_iter()
+            .filter_map(|(pointer, key)| Some((pointer, key.filter(foreign)?)))
+            .map(|(pointer, key)| {
+                let message = format!("{key} is of another area than the one studied");
+                Finding::error("invalid_value", message)
+                    .at_pointer(pointer)
+                    .found(key.places()[0].clone())
+                    .expected(self.area.clone())
+            })
+            .collect()
+    }
+
+    /// A series explains no other that is itself.
+    fn check_sides(&self) -> Vec<Finding> {
+        let mut findings = Vec::new();
+        for (pointer, demand) in [
+            ("/import_demand", &self.import_demand),
+            ("/export_demand", &self.export_demand),
+        ] {
+            for (field, key) in demand.regressors() {
+                if *key == demand.volume {
+                    let message = format!("{key} stands on both sides of the equation");
+                    findings.push(
+                        Finding::error("invalid_value", message)
+                            .at_pointer(format!("{pointer}/{field}"))
+                            .remedy("Name the series that explains the volume"),
+                    );
+                }
+            }
+        }
         findings
     }
 

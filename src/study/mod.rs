@@ -32,9 +32,9 @@ pub use options::{
 };
 pub use outcome::{
     AdjustmentResult, CoefficientResult, CovarianceUsed, DynamicsResult, EquationResult,
-    EquationTest, Estimate, EstimatorResult, FormNumbers, FormResult, IntervalSettings,
-    LongRunResult, MeanGrowth, NearIdentity, Outcome, RelativePriceEffect, Sample, TestGroup,
-    Unreliable,
+    EquationTest, Estimate, EstimatorResult, FormNumbers, FormResult, GrowthRates,
+    IntervalSettings, LongRunResult, MeanGrowth, NearIdentity, Outcome, RelativePriceEffect,
+    Sample, TestGroup, Unreliable,
 };
 pub use run::{METHOD_VERSION, run, run_with};
 pub use terms::{At, Term};

@@ -96,6 +96,18 @@ pub struct IntervalSettings {
     pub level: f64,
     /// Covariance across equations.
     pub cross_covariance: CrossCovariance,
+    /// What is taken of the mean growth rates.
+    #[serde(default)]
+    pub growth_rates: GrowthRates,
+}
+
+/// How intervals take mean growth rates.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize, Deserialize, ToSchema)]
+#[serde(rename_all = "snake_case")]
+pub enum GrowthRates {
+    /// As known: the intervals speak of the coefficients' uncertainty alone.
+    #[default]
+    HeldFixed,
 }
 
 /// What one estimator gave.

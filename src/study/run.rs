@@ -6,10 +6,12 @@ use super::document::{Document, Estimator};
 use super::equation::{Both, Equation, Request, estimate, finite, small};
 use super::integration::orders_of_integration;
 use super::outcome::{
-    Estimate, EstimatorResult, FormNumbers, FormResult, IntervalSettings, MeanGrowth, NearIdentity,
-    Outcome, RelativePriceEffect, Sample, Unreliable,
+    Estimate, EstimatorResult, FormNumbers, FormResult, GrowthRates, IntervalSettings, MeanGrowth,
+    NearIdentity, Outcome, RelativePriceEffect, Sample, Unreliable,
 };
-use super::reliability::{Side, errors, judge_equation, judge_price_elasticities, judge_rate};
+use super::reliability::{
+    Side, errors, judge_coverage, judge_equation, judge_price_elasticities, judge_rate,
+};
 use super::sample::{Logs, gather};
 use crate::constraint::{Affine, Economy, Form, Ratio};
 use crate::dist::{t_two_sided, t_upper};
@@ -100,6 +102,7 @@ pub fn run_with(
             method: document.interval.method,
             level: document.interval.level,
             cross_covariance: document.interval.cross_covariance,
+            growth_rates: GrowthRates::HeldFixed,
         },
         simulation: simulated.then(|| document.simulation.unwrap_or_default()),
         estimators,
@@ -162,6 +165,7 @@ impl Study<'_> {
             import_errors: errors(&import_findings),
             export_errors: errors(&export_findings),
             both: &both,
+            estimator,
         };
         let forms = self.document.forms.iter().enumerate();
         Ok(EstimatorResult {
@@ -264,8 +268,10 @@ impl Study<'_> {
             relative_price_effect: effect,
         };
         let actual = compound(self.scale * self.actual);
+        let method = self.document.interval.method;
         let findings: Vec<Finding> = judge_rate(compound(rate), interval.map(compound), actual)
             .into_iter()
+            .chain(judge_coverage(estimates.estimator, uses_exports, method))
             .map(|f| f.at_pointer(format!("/forms/{index}")))
             .collect();
         let mut reasons = estimates.import_errors.clone();
@@ -335,6 +341,7 @@ struct Estimates<'a> {
     import_errors: Vec<Finding>,
     export_errors: Vec<Finding>,
     both: &'a Both<'a>,
+    estimator: Estimator,
 }
 
 fn refused(form: Form, reason: String) -> FormResult {

@@ -246,9 +246,16 @@ fn check_unit(role: &Role<'_>, series: &Series) -> Option<Finding> {
         Kind::RelativePrice => match &unit.quantity {
             Quantity::Ratio
             | Quantity::Index {
-                kind: IndexKind::Price | IndexKind::UnitValue | IndexKind::ExchangeRate,
+                kind: IndexKind::ExchangeRate,
                 ..
             } => None,
+            Quantity::Index {
+                kind: IndexKind::Price | IndexKind::UnitValue,
+                ..
+            } => Some(
+                wrong("one price over another, or a real exchange rate")
+                    .remedy("Divide it by the other price in a preparation"),
+            ),
             Quantity::Index { .. }
             | Quantity::Money { .. }
             | Quantity::Rate { .. }

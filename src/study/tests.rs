@@ -533,7 +533,11 @@ fn faults_of_a_document_have_pointers_and_all_come_at_once() {
             json!({"sample": {"from": "2000", "to": "1990"}}),
         ),
         ("/interval/level", json!({"interval": {"level": 1.0}})),
-        ("/lags", json!({"lags": 2, "covariance": "classical"})),
+        ("/activity", json!({"area": "XBB"})),
+        (
+            "/import_demand/activity",
+            json!({"import_demand": {"volume": "A.XAA.imports_real", "activity": "A.XAA.imports_real"}}),
+        ),
         ("/import_demand", json!({"import_demand": 3})),
     ] {
         let mut value = document();

@@ -322,6 +322,58 @@ async fn distributed_lags() {
     let best = &of(&found["tables"], "orders")["rows"][0];
     assert_eq!((&best[0], &best[1]), (&json!(5.0), &json!("0, 3, 5")));
     close("AIC of the grid", &best[2], -254.034_535_778_2, 1e-8);
+
+    // The bootstrap has one critical value a test, and comes out between the simulated bounds or near them.
+    let options =
+        json!({"p": 3, "q": [1, 3, 2], "bounds": "bootstrap", "draws": 499, "horizon": 0});
+    let request = money("autoregressive_distributed_lag", options);
+    let found = estimate(&app, &request).await;
+    let f = of(&found["tests"], "Bounds F");
+    close(
+        "F",
+        &f["statistic"],
+        wanted["bounds"]["case3"]["F_by_hand"].as_f64().unwrap(),
+        1e-8,
+    );
+    let five = &f["critical_values"][1];
+    assert_eq!(
+        (&five["level"], &five["bound"]),
+        (&json!(0.05), &Value::Null)
+    );
+    let five = five["value"].as_f64().unwrap();
+    assert!((2.0..6.5).contains(&five), "{five}");
+    let rejects = f["statistic"].as_f64().unwrap() > five;
+    assert_eq!(f["p_value"].as_f64().unwrap() < 0.05, rejects);
+    assert_eq!(estimate(&app, &request).await["tests"], found["tests"]);
+    app.stop().await;
+}
+
+/// Growth over the year of monthly data carries its finding.
+#[tokio::test]
+async fn overlapping_growth_is_told() {
+    let app = TestApp::start().await;
+    let rows: String = (0..60)
+        .map(|t| {
+            let value = 100.0 * (0.01 * f64::from(t) + 0.1 * f64::from(t * t % 7)).exp();
+            format!("{}-{:02},{value}\n", 2010 + t / 12, t % 12 + 1)
+        })
+        .collect();
+    let query = "kind=trade&area=XAA&measure=exports&currency=USD&own_currency=USD";
+    app.upload(query, format!("period,value\n{rows}"))
+        .await
+        .expect(201);
+    let growth = r#"{"outputs": {"M.XAA.growth": [{"take": "M.XAA.exports"},
+        {"growth": {"kind": "log", "over": "year"}}]}}"#;
+    app.put("/v1/preparations/growth", growth).await.expect(201);
+    app.post("/v1/preparations/growth/runs", "")
+        .await
+        .expect(201);
+    let request = json!({
+        "method": "ordinary_least_squares",
+        "dependent": {"series": "M.XAA.growth"},
+        "regressors": [{"series": "M.XAA.growth", "lag": 1}]
+    });
+    carries(&estimate(&app, &request).await, "overlapping_growth");
     app.stop().await;
 }
 

@@ -3,14 +3,14 @@
 use super::Procedure;
 use super::unit_roots::{LEVELS, changes, check_draws, read_simulation};
 use crate::estimate::{
-    Ardl, ArdlData, ArdlOrders, BoundsCase, BoundsDesign, InformationCriterion, LevelRelation,
-    NullDistribution, SeriesError, select_orders,
+    Ardl, ArdlData, ArdlOrders, Blocks, BoundsCase, BoundsDesign, InformationCriterion,
+    LevelRelation, NullDistribution, SeriesError, bootstrap_bounds, select_orders,
 };
 use crate::estimation::fault::option;
 use crate::estimation::judge;
 use crate::estimation::options::Options;
 use crate::estimation::report::{
-    Cell, CriticalValue, EstimateTable, EstimateTest, finite, statistic,
+    Cell, CriticalValue, EstimateStatistic, EstimateTable, EstimateTest, finite, statistic,
 };
 use crate::estimation::request::too_many;
 use crate::estimation::rows::Rows;
@@ -22,9 +22,20 @@ pub(super) struct DistributedLags {
     case: BoundsCase,
     orders: Orders,
     simulation: (usize, u64),
-    published_design: bool,
+    bounds: Bounds,
     horizon: usize,
     diagnostic_lags: Option<usize>,
+}
+
+/// Where the critical values of the bounds tests come from.
+#[derive(Clone, Copy, PartialEq, Eq)]
+enum Bounds {
+    /// Random walks at the exact size and orders.
+    Simulated,
+    /// The same without lagged differences.
+    Published,
+    /// This sample, with each null imposed.
+    Bootstrap,
 }
 
 enum Orders {
@@ -84,13 +95,30 @@ impl DistributedLags {
         };
         let simulation = read_simulation(options, 10_000);
         let published_design = options.flag("published_design", false);
+        let bounds = options.choice(
+            "bounds",
+            &[
+                ("simulated", Bounds::Simulated),
+                ("bootstrap", Bounds::Bootstrap),
+            ],
+        );
+        if bounds == Some(Bounds::Bootstrap) {
+            options.useless(
+                &["published_design"],
+                "the null distributions are bootstrapped",
+            );
+        }
         let horizon = options.count("horizon", 10, 0, 200);
         let diagnostic_lags = options.maybe_count("diagnostic_lags", 1, 100);
         Some(Self {
             case: case?,
             orders: orders?,
             simulation: simulation?,
-            published_design: published_design?,
+            bounds: if published_design? {
+                Bounds::Published
+            } else {
+                bounds?
+            },
             horizon: horizon?,
             diagnostic_lags: diagnostic_lags?,
         })
@@ -138,7 +166,11 @@ impl Procedure for DistributedLags {
             words,
         ));
         self.long_run(task, &found, &mut draft);
-        self.bounds(task, &found, &mut draft)?;
+        if self.bounds == Bounds::Bootstrap && self.simulation.0 > 0 {
+            self.bootstrap(task, &data, &found, &mut draft)?;
+        } else {
+            self.bounds(task, &found, &mut draft)?;
+        }
         self.multipliers(task, &found, &names, &mut draft);
         let fit = &found.ecm;
         draft.statistics.extend([
@@ -285,7 +317,7 @@ impl DistributedLags {
                 observations: bounds.observations,
                 regressors: found.orders.q.len(),
                 case: self.case,
-                orders: (!self.published_design).then(|| found.orders.clone()),
+                orders: (self.bounds == Bounds::Simulated).then(|| found.orders.clone()),
             };
             let null = design
                 .simulate(task.simulation(draws, seed), task.store())
@@ -293,7 +325,7 @@ impl DistributedLags {
             draft.said.push(format!(
                 "Bounds from {draws} draws under the null at {} rows, seed {seed}, {}.",
                 bounds.observations,
-                if self.published_design {
+                if self.bounds == Bounds::Published {
                     "without lagged differences, as in the published tables"
                 } else {
                     "with the lagged differences of this equation"
@@ -330,20 +362,7 @@ impl DistributedLags {
                 null.t[1].lower_tail(bounds.t),
             );
             t.sentence = between("That nothing draws the dependent variable back", low, high);
-            let relation = bounds.judge(&null, 0.05);
-            draft
-                .statistics
-                .push(crate::estimation::report::EstimateStatistic {
-                    name: "level_relation".to_owned(),
-                    value: None,
-                    note: relation_words(relation).to_owned(),
-                });
-            if relation != LevelRelation::Cointegrated {
-                draft.findings.push(judge::no_cointegration(format!(
-                    "Bounds tests: {}",
-                    relation_words(relation)
-                )));
-            }
+            tell_relation(bounds.judge(&null, 0.05), draft);
         } else {
             let message = "No draws were asked for: the bounds tests have no critical values";
             draft
@@ -355,6 +374,65 @@ impl DistributedLags {
                 .push_str("; no table of t was published for this case");
         }
         draft.tests.extend([f, t, f_x]);
+        Ok(())
+    }
+
+    /// The bounds tests against bootstrap distributions of their own.
+    fn bootstrap(
+        &self,
+        task: &Task<'_>,
+        data: &ArdlData<'_>,
+        found: &Ardl,
+        draft: &mut Draft,
+    ) -> Outcome<()> {
+        let (draws, seed) = self.simulation;
+        check_draws(draws, found.ecm.n * (found.orders.q.len() + 1))?;
+        let lags = found.orders.longest().saturating_sub(1).max(1);
+        let null = bootstrap_bounds(
+            data,
+            &found.orders,
+            self.case,
+            lags,
+            Blocks::Moving(1),
+            task.simulation(draws, seed),
+        )
+        .map_err(|e| task.refuse(e))?;
+        draft.said.push(format!(
+            "Bounds tests by bootstrap (McNown, Sam and Goh 2018): {draws} replicates, {} of them left out, seed \
+             {seed}; dates drawn singly for the centred residuals of the equation with each null imposed and of \
+             the regressors' own equations in differences with {lags} lags.",
+            null.failed
+        ));
+        let law = "bootstrap";
+        let p = null.p_values();
+        let mut test =
+            |name: &str, x: f64, p: f64, null: &NullDistribution, lower: bool, words: &str| {
+                let mut test = EstimateTest::new(name, x, law);
+                test.p_value = finite(p);
+                for level in LEVELS {
+                    let tail = if lower { level } else { 1.0 - level };
+                    test.critical_values.push(CriticalValue {
+                        level,
+                        bound: None,
+                        value: finite(null.quantile(tail)),
+                        std_error: finite(null.quantile_error(tail)),
+                    });
+                }
+                let verdict = if p < 0.05 { "is" } else { "is not" };
+                test.sentence =
+                    format!("{words} {verdict} rejected at the 5 % level (p = {p:.4}).");
+                draft.tests.push(test);
+            };
+        let s = &null.statistics;
+        test("Bounds F", s.f, p.f, &null.f, false, "No level relation");
+        let words = "That nothing draws the dependent variable back";
+        test("Bounds t", s.t, p.t, &null.t, true, words);
+        if let (Some(x), Some(p), Some(null)) = (s.f_regressors, p.f_regressors, &null.f_regressors)
+        {
+            let words = "That the regressors have no part in a level relation";
+            test("F of the lagged regressor levels", x, p, null, false, words);
+        }
+        tell_relation(null.judge(0.05), draft);
         Ok(())
     }
 
@@ -389,6 +467,21 @@ impl DistributedLags {
             }
         }
         draft.tables.push(table);
+    }
+}
+
+/// Says what the bounds tests come to together.
+fn tell_relation(relation: LevelRelation, draft: &mut Draft) {
+    let words = relation_words(relation);
+    draft.statistics.push(EstimateStatistic {
+        name: "level_relation".to_owned(),
+        value: None,
+        note: words.to_owned(),
+    });
+    if relation != LevelRelation::Cointegrated {
+        draft
+            .findings
+            .push(judge::no_cointegration(format!("Bounds tests: {words}")));
     }
 }
 

@@ -133,12 +133,19 @@ impl Page<'_> {
             CrossCovariance::Joint => "with",
             CrossCovariance::Zero => "without",
         };
+        let bounded = match outcome.interval.method {
+            IntervalMethod::Fieller => "",
+            IntervalMethod::Delta => {
+                " They are always bounded, and no such interval can cover where the income elasticity of \
+                 imports may be near zero (Gleser and Hwang 1987; Dufour 1997)."
+            }
+        };
         let level = self.level();
         self.section("Growth at which exports pay for imports");
         self.paragraph(
             &format!(
                 "Compound per cent a year; {level} {method} intervals {across} covariance across the two \
-                 equations; * marks the headline."
+                 equations, mean growth rates held fixed; * marks the headline.{bounded}"
             ),
             "",
         );
