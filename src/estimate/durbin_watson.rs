@@ -40,13 +40,24 @@ pub struct DurbinWatsonBounds {
 /// algorithm of Pan 1968).
 ///
 /// # Errors
-/// [`EstimateError::Setting`] with a lagged dependent variable, which biases d towards 2.
+/// [`EstimateError::Setting`] with a lagged dependent variable, which biases d towards 2;
+/// [`EstimateError::TooFewObservations`] below 6 degrees of freedom, where the sum over the characteristic
+/// function does not settle; [`EstimateError::NotFinite`] where the residuals are beyond the range of numbers.
 pub fn durbin_watson(fit: &Ols, lagged_dependent: bool) -> Result<DurbinWatson, EstimateError> {
     if lagged_dependent {
         return Err(EstimateError::Setting {
             setting: "the equation of a Durbin–Watson test",
             allowed: "without lagged dependent variables; use the Breusch–Godfrey test",
         });
+    }
+    if fit.df < 6 {
+        return Err(EstimateError::TooFewObservations {
+            observations: fit.n,
+            coefficients: fit.k,
+        });
+    }
+    if !fit.durbin_watson.is_finite() {
+        return Err(EstimateError::NotFinite);
     }
     let weights = eigenvalues(fit);
     let d = fit.durbin_watson;

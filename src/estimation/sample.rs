@@ -85,6 +85,13 @@ pub(super) fn gather(
         notices.extend(guessed(one.variable, inputs, &periods));
         notices.extend(overlapping(one.variable, inputs));
     }
+    faults.extend(request.equations.iter().filter_map(|equation| {
+        let values = &columns.get(equation.dependent)?.values;
+        constant(values).then(|| {
+            request.variables[equation.dependent]
+                .place(does_not_vary(&columns[equation.dependent].name))
+        })
+    }));
     if !faults.is_empty() {
         return Err(faults);
     }
@@ -177,10 +184,21 @@ fn common(
         .filter_map(period)
         .collect();
     if periods.len() < 2 {
-        let message = format!(
+        let series = format!(
             "The series have no two periods in common: {} begins at {from}, {} ends at {to}",
             late.name, early.name
         );
+        let asked = |p: Option<Period>| p.map_or_else(|| "any".to_owned(), |p| p.to_string());
+        let message = if from < to {
+            format!(
+                "The series are all there from {from} to {to}, and the sample asked for, {} to {}, leaves no two \
+                 periods of that",
+                asked(request.from),
+                asked(request.to)
+            )
+        } else {
+            series
+        };
         let finding = Finding::error("no_common_sample", message).at_pointer("/sample");
         return Err(Box::new(finding));
     }
@@ -229,6 +247,19 @@ fn column(observed: &Observed<'_>, periods: &[Period]) -> Result<Vec<f64>, Box<F
         });
     }
     Ok(values)
+}
+
+fn does_not_vary(name: &str) -> Finding {
+    let message = format!("{name} does not vary over the sample; there is nothing to explain");
+    Finding::error("constant_series", message)
+        .remedy("Lengthen the sample, or take another variable")
+}
+
+/// Whether values differ by no more than rounding.
+fn constant(values: &[f64]) -> bool {
+    let largest = values.iter().fold(0.0_f64, |m, v| m.max(v.abs()));
+    let first = values.first().copied().unwrap_or(0.0);
+    values.iter().all(|v| (v - first).abs() <= 1e-12 * largest)
 }
 
 /// Growth over the year moves slowly: neighbouring values share all but two of their periods.

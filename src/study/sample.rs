@@ -175,9 +175,20 @@ fn common_periods(
         .filter_map(|ordinal| Period::from_ordinal(document.frequency, ordinal))
         .collect();
     if periods.len() < 2 {
-        let message = format!(
+        let series = format!(
             "The series have no two periods in common: {late} begins at {from}, {early} ends at {to}"
         );
+        let asked = |p: Option<Period>| p.map_or_else(|| "any".to_owned(), |p| p.to_string());
+        let message = if from < to {
+            format!(
+                "The series are all there from {from} to {to}, and the sample asked for, {} to {}, leaves no two \
+                 periods of that",
+                asked(document.sample.from),
+                asked(document.sample.to)
+            )
+        } else {
+            series
+        };
         return Err(Box::new(
             Finding::error("no_common_sample", message).at_pointer("/sample"),
         ));

@@ -54,6 +54,7 @@ two_stage_least_squares | {"options": {"endogenous": ["x"], "instruments": [$wav
 augmented_dickey_fuller | {} | unknown_field | /regressors | dependent
 augmented_dickey_fuller | {"regressors": null, "options": {"lags": 25}} | too_few_observations | /dependent | at least
 augmented_dickey_fuller | {"regressors": null, "options": {"lags": 2, "max_lags": 4}} | invalid_value | /options/max_lags | lags are given
+ordinary_least_squares | {"dependent": $flat} | constant_series | /dependent | flat
 kpss | {"regressors": null, "dependent": $flat} | constant_series | /dependent | flat
 kpss | {"regressors": null, "options": {"deterministic": "none"}} | invalid_value | /options/deterministic | constant, trend
 zivot_andrews | {"regressors": null, "options": {"trim": 0.4}} | invalid_value | /options/trim | 0 to 1/3
@@ -65,6 +66,8 @@ johansen | {"options": {"lags": 20}} | too_few_observations | /dependent | at le
 johansen | {"options": {"draws": 0}} | invalid_option | /options/draws | rank
 johansen | {"options": {"rank": 1, "draws": 0, "excluded": ["q"]}} | invalid_option | /options/excluded | y, x
 autoregressive_distributed_lag | {"options": {"p": 1}} | invalid_value | /options/q | together
+autoregressive_distributed_lag | {"options": {"max_q": 50, "draws": 50}} | invalid_value | /options/max_q | 24
+ordinary_least_squares | {"options": {"restrictions": [{"terms": {"x": 1}}], "hypotheses": [{"terms": {"x": 1}}]}} | invalid_value | /options/hypotheses | not both
 autoregressive_distributed_lag | {"options": {"p": 1, "q": [1, 1]}} | invalid_option | /options/q | one a regressor
 autoregressive_distributed_lag | {"options": {"p": 12, "q": 12}} | too_few_observations | /dependent | at least
 dynamic_ols | {"terms": ["seasonal"]} | unknown_field | /terms | regressors

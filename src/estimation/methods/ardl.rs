@@ -63,36 +63,8 @@ impl DistributedLags {
         let case = options.choice("case", &CASES);
         let p = options.maybe_count("p", 1, 24);
         let q = options.counts("q");
-        let (p, q) = (p?, q?);
-        let orders = match (p, q) {
-            (Some(p), Some(q)) => {
-                options.useless(
-                    &["selection", "max_p", "max_q"],
-                    "the orders p and q are given",
-                );
-                Some(Orders::Fixed(ArdlOrders { p, q }))
-            }
-            (None, None) => {
-                let criteria = [
-                    ("aic", InformationCriterion::Aic),
-                    ("bic", InformationCriterion::Bic),
-                ];
-                let by = options.choice("selection", &criteria);
-                let max_p = options.maybe_count("max_p", 1, 24);
-                let max_q = options.counts("max_q");
-                Some(Orders::Chosen {
-                    by: by?,
-                    max_p: max_p?,
-                    max_q: max_q?,
-                })
-            }
-            (given, _) => {
-                let name = if given.is_some() { "q" } else { "p" };
-                let message = "The orders p and q come together";
-                options.refuse(name, message, "both, or neither to have them chosen");
-                None
-            }
-        };
+        let max_p = options.maybe_count("max_p", 1, 24);
+        let max_q = options.counts("max_q");
         let simulation = read_simulation(options, 10_000);
         let published_design = options.flag("published_design", false);
         let bounds = options.choice(
@@ -110,6 +82,34 @@ impl DistributedLags {
         }
         let horizon = options.count("horizon", 10, 0, 200);
         let diagnostic_lags = options.maybe_count("diagnostic_lags", 1, 100);
+        let (p, q) = (p?, q?);
+        let orders = match (p, q) {
+            (Some(p), Some(q)) => {
+                options.useless(
+                    &["selection", "max_p", "max_q"],
+                    "the orders p and q are given",
+                );
+                Some(Orders::Fixed(ArdlOrders { p, q }))
+            }
+            (None, None) => {
+                let criteria = [
+                    ("aic", InformationCriterion::Aic),
+                    ("bic", InformationCriterion::Bic),
+                ];
+                let by = options.choice("selection", &criteria);
+                Some(Orders::Chosen {
+                    by: by?,
+                    max_p: max_p?,
+                    max_q: max_q?,
+                })
+            }
+            (given, _) => {
+                let name = if given.is_some() { "q" } else { "p" };
+                let message = "The orders p and q come together";
+                options.refuse(name, message, "both, or neither to have them chosen");
+                None
+            }
+        };
         Some(Self {
             case: case?,
             orders: orders?,

@@ -38,11 +38,21 @@ impl LeastSquares {
             options.refuse("covariance", message, "classical");
             return None;
         }
+        let hypotheses = hypotheses?;
+        if !restrictions.is_empty() && !hypotheses.is_empty() {
+            let message = "Hypotheses are tested on the equation without restrictions";
+            options.refuse(
+                "hypotheses",
+                message,
+                "restrictions or hypotheses, not both",
+            );
+            return None;
+        }
         Some(Self {
             covariance: covariance?,
             weights: weights?,
             restrictions,
-            hypotheses: hypotheses?,
+            hypotheses,
             diagnostic_lags: diagnostic_lags?,
         })
     }
@@ -124,9 +134,10 @@ impl LeastSquares {
     fn under_restrictions(&self, task: &Task<'_>, fit: &Ols, draft: &mut Draft) -> Outcome<()> {
         let found = restricted(fit, &self.restrictions).map_err(|e| task.refuse(e))?;
         let list: Vec<String> = self.restrictions.iter().map(in_words).collect();
-        draft
-            .said
-            .push(format!("Under the restrictions {}.", list.join("; ")));
+        draft.said.push(format!(
+            "Under the restrictions {}. Diagnostics are of the equation without them.",
+            list.join("; ")
+        ));
         let df = Some(found.df);
         let errors = standard_errors(&found.covariance);
         let coefficients = task.coefficients(&fit.names(), &found.coefficients, &errors, df);
