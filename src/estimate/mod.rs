@@ -63,8 +63,8 @@ pub use bounds_null::{BoundsDesign, BoundsNull, simulate_unit_root};
 pub use breaks::{UnknownBreak, chow, unknown_break};
 pub use cointegrating_regression::{Dols, DolsCovariance, Fmols, dols, fmols};
 pub use cointegration::{
-    EngleGranger, Johansen, JohansenCase, JohansenRows, LikelihoodRatio, RankNull, RankTest,
-    RelationErrors, Vecm, engle_granger, johansen, simulate_rank,
+    EngleGranger, Johansen, JohansenCase, JohansenRows, LikelihoodRatio, RankDesign, RankNull,
+    RankTest, RelationErrors, Vecm, engle_granger, johansen, simulate_rank,
 };
 pub use covariance::{CovarianceKind, Hc, covariance};
 pub use criteria::{Criteria, criteria};

@@ -238,8 +238,9 @@ async fn cointegration() {
     let found = estimate(&app, &request).await;
     assert_eq!(of(&found["statistics"], "rank")["value"], 0.0);
     let critical = found["tables"][0]["rows"][0][3].as_f64().unwrap();
-    // Johansen & Juselius 1990 print 53.12 for large samples.
-    assert!((critical - 53.12).abs() < 3.5, "{critical}");
+    // Johansen & Juselius 1990 print 53.12 for large samples; 53 rows less lagged differences of four series
+    // ask for more.
+    assert!((55.0..66.0).contains(&critical), "{critical}");
     carries(&found, "no_cointegration");
     app.stop().await;
 }

@@ -12,5 +12,5 @@ mod tests;
 pub use engle_granger::{EngleGranger, engle_granger};
 pub use hypotheses::LikelihoodRatio;
 pub use johansen::{Johansen, JohansenCase, JohansenRows, RankTest, johansen};
-pub use rank_null::{RankNull, simulate_rank};
+pub use rank_null::{RankDesign, RankNull, simulate_rank};
 pub use vecm::{RelationErrors, Vecm};

@@ -5,8 +5,8 @@ use std::collections::BTreeMap;
 use super::Procedure;
 use super::unit_roots::{check_draws, read_simulation};
 use crate::estimate::{
-    Johansen, JohansenCase, LikelihoodRatio, RankNull, Regressor, SeriesError, Vecm, johansen,
-    simulate_rank,
+    Johansen, JohansenCase, LikelihoodRatio, RankDesign, RankNull, Regressor, SeriesError, Vecm,
+    johansen, simulate_rank,
 };
 use crate::estimation::fault::option;
 use crate::estimation::judge;
@@ -192,8 +192,10 @@ impl ReducedRank {
         check_draws(draws, system.observations * system.series)?;
         if draws > 0 {
             draft.said.push(format!(
-                "Null distributions of the rank tests from {draws} draws at {} rows, seed {seed}.",
-                system.observations
+                "Null distributions of the rank tests from {draws} draws at {} rows with {} lagged differences, seed \
+                 {seed}; of the corrected statistics at 400 rows.",
+                system.observations,
+                system.lags - 1
             ));
         }
         let columns = [
@@ -212,21 +214,20 @@ impl ReducedRank {
         let mut corrected = EstimateTable::new("rank_tests_small_sample", title, &columns);
         let mut chosen = None;
         for test in &system.tests {
-            let null = (draws > 0)
-                .then(|| {
-                    simulate_rank(
-                        system.series - test.rank,
-                        self.case,
-                        system.observations,
-                        task.simulation(draws, seed),
-                        task.store(),
-                    )
-                })
-                .transpose()
-                .map_err(|e| task.refuse(e))?;
+            let simulated = |design: RankDesign| {
+                (draws > 0)
+                    .then(|| simulate_rank(design, task.simulation(draws, seed), task.store()))
+                    .transpose()
+                    .map_err(|e| task.refuse(e))
+            };
+            let null = simulated(system.design(test.rank))?;
+            // What is corrected for the sample's size is compared with large samples.
+            let large = simulated(system.design(test.rank).large())?;
             let of = |f: &dyn Fn(&RankNull) -> f64| null.as_ref().map(f);
             let p_trace = of(&|n| n.trace.upper_tail(test.trace));
-            let p_small = of(&|n| n.trace.upper_tail(test.trace_small_sample));
+            let p_small = large
+                .as_ref()
+                .map(|n| n.trace.upper_tail(test.trace_small_sample));
             let p_judged = if self.small_sample { p_small } else { p_trace };
             let p_max = of(&|n| n.max_eigenvalue.upper_tail(test.max_eigenvalue));
             table.rows.push(vec![
@@ -244,27 +245,30 @@ impl ReducedRank {
                 test.trace_small_sample.into(),
                 p_small.into(),
                 test.max_eigenvalue_small_sample.into(),
-                of(&|n| {
-                    n.max_eigenvalue
-                        .upper_tail(test.max_eigenvalue_small_sample)
-                })
-                .into(),
+                large
+                    .as_ref()
+                    .map(|n| {
+                        n.max_eigenvalue
+                            .upper_tail(test.max_eigenvalue_small_sample)
+                    })
+                    .into(),
             ]);
             let Some(p) = p_judged else { continue };
             if chosen.is_none() && p >= 0.05 {
                 chosen = Some(test.rank);
             }
-            let (value, how) = if self.small_sample {
+            let (value, how, law) = if self.small_sample {
                 (
                     test.trace_small_sample,
                     ", n − pk for n (Reinsel and Ahn 1992)",
+                    "simulated in large samples",
                 )
             } else {
-                (test.trace, "")
+                (test.trace, "", "simulated at the exact size")
             };
             let name = format!("Trace, rank at most {}{how}", test.rank);
             draft.tests.push(
-                EstimateTest::new(&name, value, "simulated at the exact size")
+                EstimateTest::new(&name, value, law)
                     .judged(&format!("A rank of at most {}", test.rank), p),
             );
         }

@@ -129,9 +129,7 @@ fn rank_tests(
             continue;
         };
         let null_of_rank = simulate_rank(
-            system.series - rank,
-            system.case,
-            system.observations,
+            system.design(rank),
             request.simulation(),
             request.machine.store,
         )
@@ -145,7 +143,7 @@ fn rank_tests(
             name: format!("trace, rank {rank}"),
             statistic: finite(found.trace),
             distribution: format!(
-                "simulated at {} rows, {} draws",
+                "simulated at {} rows with these lags, {} draws",
                 system.observations, distribution.draws
             ),
             p: finite(distribution.upper_tail(found.trace)),
