@@ -24,6 +24,7 @@ mod durbin_watson;
 mod hansen_1992;
 mod instrumental;
 mod kernel;
+mod limits;
 mod long_run;
 mod ols;
 mod outcome;
@@ -79,6 +80,7 @@ pub use hansen_1992::{
 };
 pub use instrumental::{InstrumentedEquation, Overidentification, TwoStage, two_stage};
 pub use kernel::{BandwidthRule, Kernel, bandwidth, rule_of_thumb_lags};
+pub use limits::{HALF_LIFE, Shortage, shortage};
 pub use long_run::{LongRunCovariance, automatic_lags, long_run_covariance, long_run_variance};
 pub use ols::{Ols, Regressor};
 pub use outcome::{Distribution, TestResult};

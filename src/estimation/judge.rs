@@ -6,17 +6,12 @@ use super::report::{EstimateTest, small};
 use super::request::Id;
 use super::task::Task;
 use crate::estimate::{
-    Deterministic, LagCriterion, Lags, Ols, Regressor, adf, arch, breusch_godfrey, breusch_pagan,
-    breusch_pagan_studentised, durbin_watson, jarque_bera, ljung_box, reset, white,
+    Deterministic, HALF_LIFE, LagCriterion, Lags, Ols, Regressor, Shortage, adf, arch,
+    breusch_godfrey, breusch_pagan, breusch_pagan_studentised, durbin_watson, jarque_bera,
+    ljung_box, reset, shortage, white,
 };
 use crate::finding::Finding;
 
-/// Observations: notice below (annual, more frequent), unreliable below, and per coefficient.
-const FEW_OBSERVATIONS: (usize, usize) = (30, 60);
-const TOO_FEW_OBSERVATIONS: usize = 20;
-const TOO_FEW_A_COEFFICIENT: usize = 5;
-/// Half-lives of a deviation in years: notice above, unreliable above.
-const HALF_LIFE: (f64, f64) = (5.0, 10.0);
 /// Above this many observations the exact distribution of Durbin and Watson's d takes too long.
 const MOST_EXACT: usize = 400;
 /// Above this many, ranks of roots are not looked for beside the method itself.
@@ -24,21 +19,17 @@ const MOST_PRETESTED: usize = 2000;
 
 /// Whether there are enough observations for the coefficients of an equation.
 pub(super) fn observations(task: &Task<'_>, n: usize, k: usize) -> Option<Finding> {
-    let enough = if task.annual() {
-        FEW_OBSERVATIONS.0
-    } else {
-        FEW_OBSERVATIONS.1
+    let finding = match shortage(n, k, task.annual())? {
+        Shortage::Needed(least) => Finding::error(
+            "few_observations",
+            format!("{n} observations for {k} coefficients; at least {least} are needed"),
+        ),
+        Shortage::Better(enough) => Finding::notice(
+            "few_observations",
+            format!("{n} observations; {enough} are better"),
+        ),
     };
-    let least = TOO_FEW_OBSERVATIONS.max(TOO_FEW_A_COEFFICIENT * k);
-    if n < least {
-        let message = format!("{n} observations for {k} coefficients; at least {least} are needed");
-        Some(Finding::error("few_observations", message).at_pointer("/sample"))
-    } else if n < enough {
-        let message = format!("{n} observations; {enough} are better");
-        Some(Finding::notice("few_observations", message).at_pointer("/sample"))
-    } else {
-        None
-    }
+    Some(finding.at_pointer("/sample"))
 }
 
 /// The diagnostics of a fit, autocorrelation up to `lags`; those that do not exist for it are left out.

@@ -7,6 +7,7 @@ use super::equation::Equation;
 use super::sample::Logs;
 use crate::constraint::{IntervalMethod, Region};
 use crate::dist::t_upper;
+use crate::estimate::{Shortage, shortage};
 use crate::finding::{Finding, Severity};
 
 /// Two-sided significance of the tests here, whatever the level of the intervals.
@@ -16,10 +17,6 @@ const USUAL_INCOME_ELASTICITY: (f64, f64) = (0.5, 3.5);
 const LARGEST_INCOME_ELASTICITY: f64 = 5.0;
 /// A sum of price elasticities beyond this is worth a notice.
 const USUAL_PRICE_ELASTICITIES: f64 = 3.0;
-/// Observations: notice below (annual, more frequent), unreliable below, and per coefficient.
-const FEW_OBSERVATIONS: (usize, usize) = (30, 60);
-const TOO_FEW_OBSERVATIONS: usize = 20;
-const TOO_FEW_A_COEFFICIENT: usize = 5;
 /// Above this no error is left to judge by: what is estimated is an identity.
 const PERFECT_FIT: f64 = 1.0 - 1e-9;
 /// Shares of estimated and imputed observations: notice above, unreliable above.
@@ -136,26 +133,19 @@ pub(super) fn judge_equation(equation: &Equation<'_>, logs: &Logs, annual: bool)
         );
         add(Severity::Error, "perfect_fit", message);
     }
-    let enough = if annual {
-        FEW_OBSERVATIONS.0
-    } else {
-        FEW_OBSERVATIONS.1
-    };
-    if equation.rows < TOO_FEW_OBSERVATIONS || equation.rows < TOO_FEW_A_COEFFICIENT * equation.size
-    {
-        let message = format!(
-            "Demand for {noun} has {} observations for {} coefficients; at least {} are needed",
-            equation.rows,
-            equation.size,
-            TOO_FEW_OBSERVATIONS.max(TOO_FEW_A_COEFFICIENT * equation.size)
-        );
-        add(Severity::Error, "few_observations", message);
-    } else if equation.rows < enough {
-        let message = format!(
-            "Demand for {noun} has {} observations; {enough} are better",
-            equation.rows
-        );
-        add(Severity::Notice, "few_observations", message);
+    let (rows, size) = (equation.rows, equation.size);
+    match shortage(rows, size, annual) {
+        Some(Shortage::Needed(least)) => {
+            let message = format!(
+                "Demand for {noun} has {rows} observations for {size} coefficients; at least {least} are needed"
+            );
+            add(Severity::Error, "few_observations", message);
+        }
+        Some(Shortage::Better(enough)) => {
+            let message = format!("Demand for {noun} has {rows} observations; {enough} are better");
+            add(Severity::Notice, "few_observations", message);
+        }
+        None => {}
     }
     let demand = equation.demand;
     let mut keys = vec![&demand.volume];

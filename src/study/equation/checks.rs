@@ -4,8 +4,8 @@ use super::super::options::usual_lags;
 use super::super::outcome::{EquationTest, TestGroup};
 use super::{Request, finite};
 use crate::estimate::{
-    Deterministic, Distribution, LagCriterion, Lags, Ols, Regressor, TestResult, adf, arch,
-    breusch_godfrey, breusch_pagan, breusch_pagan_studentised, jarque_bera, ljung_box,
+    Deterministic, Distribution, HALF_LIFE, LagCriterion, Lags, Ols, Regressor, TestResult, adf,
+    arch, breusch_godfrey, breusch_pagan, breusch_pagan_studentised, jarque_bera, ljung_box,
     mackinnon_critical, mackinnon_p, reset, white,
 };
 use crate::finding::Finding;
@@ -186,10 +186,6 @@ pub(super) fn income_endogenous(request: &Request<'_>) -> Option<Finding> {
     })
 }
 
-/// Half-life above: notice, unreliable; years.
-const LONG_HALF_LIFE: f64 = 5.0;
-const LONGEST_HALF_LIFE: f64 = 10.0;
-
 /// A speed of adjustment outside its range, or a slow one.
 pub(super) fn judge_adjustment(
     request: &Request<'_>,
@@ -207,12 +203,13 @@ pub(super) fn judge_adjustment(
         );
         Finding::error("adjustment_outside_range", message)
     } else {
-        let years = half_life_years.filter(|years| *years > LONG_HALF_LIFE)?;
+        let years = half_life_years.filter(|years| *years > HALF_LIFE.0)?;
         let message = format!(
             "Half of a deviation of {noun} from the level relation lasts {years:.1} years, more than \
-             {LONG_HALF_LIFE}"
+             {}",
+            HALF_LIFE.0
         );
-        if years > LONGEST_HALF_LIFE {
+        if years > HALF_LIFE.1 {
             Finding::error("adjustment_outside_range", message)
         } else {
             Finding::notice("adjustment_outside_range", message)
